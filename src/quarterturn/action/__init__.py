@@ -1,0 +1,1 @@
+"""Statements -> Action -> EuclideanAction: the canonical expression, the turn, the findings."""

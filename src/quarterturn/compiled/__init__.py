@@ -1,0 +1,1 @@
+"""LatticeAction -> pure JAX functions of (path, couplings)."""

@@ -1,0 +1,1 @@
+"""Values with errors: the Gamma method, derived quantities, correlators, fits."""

@@ -1,0 +1,1 @@
+"""Levels and the lattice's own answer: the road that does not sample."""

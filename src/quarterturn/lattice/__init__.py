@@ -1,0 +1,1 @@
+"""EuclideanAction -> LatticeAction: geometry, boundaries, discretisation."""

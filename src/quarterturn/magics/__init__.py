@@ -1,0 +1,1 @@
+"""IPython only: words to calls."""

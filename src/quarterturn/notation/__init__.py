@@ -1,0 +1,1 @@
+"""text -> Statements: grammar, syntax tree, printer, complaints."""

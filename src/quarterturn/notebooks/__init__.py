@@ -1,0 +1,1 @@
+"""Demonstrations, run by the command line."""

@@ -1,0 +1,1 @@
+"""What is needed to get a number again: schema, canonical form, verification."""

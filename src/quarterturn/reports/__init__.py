@@ -1,0 +1,1 @@
+"""Tables, plots and MIME bundles; knows results, not how they were made."""

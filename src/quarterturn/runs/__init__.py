@@ -1,0 +1,1 @@
+"""The calls a person makes."""

@@ -1,0 +1,1 @@
+"""Markov chains: moves, integrators, tuning, the driver loop."""

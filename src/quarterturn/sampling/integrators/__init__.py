@@ -1,0 +1,1 @@
+"""Symplectic integrators, one a file."""

@@ -1,0 +1,1 @@
+"""Markov moves, one a file; each leaves exp(-S) invariant."""
