@@ -1,0 +1,426 @@
+"""The canonical expression: a sum of monomials with exact rational coefficients.
+
+Every formula of an action is kept in one normal form, so that equal meanings are equal objects: a sum of terms, a
+term being a rational number times integer powers of atoms. Atoms are paths and their time derivatives, couplings,
+constants, and functions or powers that can't be expanded, whose arguments are again in normal form. The imaginary
+unit is the atom `I` and is reduced by I^2 = -1. Nothing here evaluates text.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable, Iterator, Mapping
+from dataclasses import dataclass
+from fractions import Fraction
+from functools import cached_property
+from typing import Any
+
+from quarterturn.errors import ActionError
+
+TERM_LIMIT = 2000  # a product that expands to more terms is refused: no cell may hang the kernel
+ODD_FUNCTIONS = frozenset({"sin", "tan", "sinh", "tanh"})
+EVEN_FUNCTIONS = frozenset({"cos", "cosh", "abs"})
+AT_ZERO = {"sin": 0, "tan": 0, "sinh": 0, "tanh": 0, "cos": 1, "cosh": 1, "exp": 1, "abs": 0}
+
+
+@dataclass(frozen=True, slots=True)
+class Symbol:
+    """A named quantity that does not depend on the path.
+
+    `kind`: coupling, constant (pi, I), bracket (an expectation value in a measurement's formula),
+    geometry (vol, beta, a), observable (energy).
+    """
+
+    kind: str
+    name: str
+
+    @property
+    def key(self) -> tuple[Any, ...]:
+        return (0, self.kind, self.name)
+
+
+@dataclass(frozen=True, slots=True)
+class PathAtom:
+    """A path at a time, or its time derivative: q, q', r[2]'. `component` is 0 for a scalar, else 1, 2, …"""
+
+    name: str
+    component: int = 0
+    order: int = 0
+
+    @property
+    def key(self) -> tuple[Any, ...]:
+        return (3, self.name, self.component, self.order)
+
+    @property
+    def value(self) -> PathAtom:
+        """The path itself, without derivatives."""
+        return PathAtom(self.name, self.component, 0)
+
+
+@dataclass(frozen=True, slots=True)
+class Function:
+    """f(x): an elementary function, or `mean` (the lattice average) and `charge` inside a measurement."""
+
+    name: str
+    argument: Expression
+
+    @property
+    def key(self) -> tuple[Any, ...]:
+        return (1, self.name, self.argument.key)
+
+
+@dataclass(frozen=True, slots=True)
+class Power:
+    """base ^ exponent that does not expand: (1 + q^2)^(-1), sqrt(r[1]^2 + r[2]^2), x^n with a coupling n.
+
+    An integer power of the whole is kept in the monomial: 1/(1+q^2)^2 is Power(1+q^2, -1) squared.
+    """
+
+    base: Expression
+    exponent: Expression
+
+    @property
+    def key(self) -> tuple[Any, ...]:
+        return (2, self.base.key, self.exponent.key)
+
+
+Atom = Symbol | PathAtom | Function | Power
+Monomial = tuple[tuple[Atom, int], ...]
+IMAGINARY = Symbol("constant", "I")
+PI = Symbol("constant", "pi")
+
+
+def _monomial_key(monomial: Monomial) -> tuple[Any, ...]:
+    return tuple((atom.key, power) for atom, power in monomial)
+
+
+def _merge(left: Monomial, right: Monomial) -> tuple[Monomial, int]:
+    """Product of two monomials and the sign that I^2 = -1 leaves."""
+    powers: dict[Atom, int] = dict(left)
+    for atom, power in right:
+        powers[atom] = powers.get(atom, 0) + power
+    sign = 1
+    if IMAGINARY in powers:
+        turns = powers.pop(IMAGINARY) % 4
+        sign = -1 if turns in (2, 3) else 1
+        if turns % 2:
+            powers[IMAGINARY] = 1
+    items = sorted(((a, p) for a, p in powers.items() if p), key=lambda item: item[0].key)
+    return tuple(items), sign
+
+
+@dataclass(frozen=True)
+class Expression:
+    """A sum of (monomial, coefficient), sorted, without zero coefficients. Build with `number`, `of`, and arithmetic."""
+
+    terms: tuple[tuple[Monomial, Fraction], ...]
+
+    # --- building -------------------------------------------------------------------------------------------
+    @staticmethod
+    def collect(pairs: Iterable[tuple[Monomial, Fraction]]) -> Expression:
+        """Sum the coefficients of equal monomials and sort."""
+        total: dict[Monomial, Fraction] = {}
+        for monomial, coefficient in pairs:
+            total[monomial] = total.get(monomial, Fraction(0)) + coefficient
+            if len(total) > TERM_LIMIT:
+                raise ActionError(f"the expression expands to more than {TERM_LIMIT} terms")
+        kept = [(m, c) for m, c in total.items() if c]
+        return Expression(tuple(sorted(kept, key=lambda item: _monomial_key(item[0]))))
+
+    @staticmethod
+    def number(value: int | Fraction) -> Expression:
+        return Expression((((), Fraction(value)),) if value else ())
+
+    @staticmethod
+    def of(atom: Atom, power: int = 1) -> Expression:
+        return Expression(((((atom, power),), Fraction(1)),))
+
+    # --- questions ------------------------------------------------------------------------------------------
+    @cached_property
+    def key(self) -> tuple[Any, ...]:
+        return tuple((_monomial_key(m), c) for m, c in self.terms)
+
+    @cached_property
+    def _hash(self) -> int:
+        return hash(self.terms)
+
+    def __hash__(self) -> int:
+        return self._hash
+
+    @property
+    def constant(self) -> Fraction | None:
+        """The rational number that this is, or None."""
+        if not self.terms:
+            return Fraction(0)
+        if len(self.terms) == 1 and self.terms[0][0] == ():
+            return self.terms[0][1]
+        return None
+
+    def atoms(self) -> Iterator[Atom]:
+        """Every atom, also those inside functions and powers; with repetitions."""
+        for monomial, _ in self.terms:
+            for atom, _power in monomial:
+                yield atom
+                if isinstance(atom, Function):
+                    yield from atom.argument.atoms()
+                elif isinstance(atom, Power):
+                    yield from atom.base.atoms()
+                    yield from atom.exponent.atoms()
+
+    @cached_property
+    def paths(self) -> frozenset[PathAtom]:
+        return frozenset(a for a in self.atoms() if isinstance(a, PathAtom))
+
+    @cached_property
+    def symbols(self) -> frozenset[Symbol]:
+        return frozenset(a for a in self.atoms() if isinstance(a, Symbol))
+
+    # --- arithmetic -----------------------------------------------------------------------------------------
+    def __add__(self, other: Expression) -> Expression:
+        return Expression.collect((*self.terms, *other.terms))
+
+    def __neg__(self) -> Expression:
+        return Expression(tuple((m, -c) for m, c in self.terms))
+
+    def __sub__(self, other: Expression) -> Expression:
+        return self + (-other)
+
+    def __mul__(self, other: Expression) -> Expression:
+        if len(self.terms) * len(other.terms) > 50 * TERM_LIMIT:
+            raise ActionError(f"the expression expands to more than {TERM_LIMIT} terms")
+        pairs = []
+        for left, a in self.terms:
+            for right, b in other.terms:
+                monomial, sign = _merge(left, right)
+                pairs.append((monomial, sign * a * b))
+        return Expression.collect(pairs)._reduced()
+
+    def scaled(self, factor: int | Fraction) -> Expression:
+        return Expression(tuple((m, c * factor) for m, c in self.terms)) if factor else ZERO
+
+    def __pow__(self, exponent: int) -> Expression:
+        """Integer power; a negative power of a sum stays a `Power`."""
+        if abs(exponent) > 64:
+            raise ActionError(f"the exponent {exponent} is too large; the largest is 64")
+        if exponent < 0:
+            return self.inverse() ** (-exponent)
+        result = ONE
+        for _ in range(exponent):
+            result = result * self
+        return result
+
+    def inverse(self) -> Expression:
+        """1 / self; raises ZeroDivisionError where self is zero."""
+        if not self.terms:
+            raise ZeroDivisionError
+        if len(self.terms) == 1:
+            monomial, coefficient = self.terms[0]
+            flipped, sign = _merge(tuple((a, -p) for a, p in monomial), ())
+            return Expression(((flipped, sign / coefficient),))._reduced()
+        lead = self.terms[0][1]  # a common factor outside, so that 1/(2+2q) and (1/2)/(1+q) are equal
+        return Expression.of(Power(self.scaled(1 / lead), MINUS_ONE)).scaled(1 / lead)
+
+    def power(self, exponent: Expression) -> Expression:
+        """General power: expanded where it is an integer, kept as an atom otherwise."""
+        value = exponent.constant
+        if value is not None and value.denominator == 1:
+            return self ** int(value)
+        if value is not None:
+            root = _rational_root(self.constant, value)
+            if root is not None:
+                return Expression.number(root)
+            unit = Fraction(1, value.denominator)
+            return Expression.of(Power(self, Expression.number(unit)), value.numerator)._reduced()
+        return Expression.of(Power(self, exponent))
+
+    def _reduced(self) -> Expression:
+        """Whole powers hidden in atoms expand: sqrt(x)^2 = x, ((1+q)^-1)^-1 = 1+q."""
+        for monomial, coefficient in self.terms:
+            for atom, power in monomial:
+                whole = _whole_power(atom, power)
+                if whole is None:
+                    continue
+                rest = tuple(item for item in monomial if item[0] != atom)
+                others = Expression(tuple(t for t in self.terms if t[0] != monomial))
+                inner, left = whole
+                term = Expression(((rest, coefficient),)) * inner
+                if left:
+                    term = term * Expression.of(atom, left)
+                return (others + term)._reduced()
+        return self
+
+    # --- calculus -------------------------------------------------------------------------------------------
+    def diff(self, atom: Atom) -> Expression:
+        """Partial derivative with respect to an atom, by the chain rule through functions and powers."""
+        total = ZERO
+        for monomial, coefficient in self.terms:
+            for inner, power in monomial:
+                slope = _derivative(inner, atom)
+                if not slope.terms:
+                    continue
+                rest = tuple((a, p - (a == inner)) for a, p in monomial if p - (a == inner))
+                total = total + Expression(((rest, coefficient * power),)) * slope
+        return total
+
+    def substitute(self, replace: Callable[[Atom], Expression | None]) -> Expression:
+        """Rebuild with atoms replaced where `replace` gives an expression, inside functions and powers too."""
+        total = ZERO
+        for monomial, coefficient in self.terms:
+            term = Expression.number(coefficient)
+            for atom, power in monomial:
+                term = term * (_substituted(atom, replace) ** power)
+            total = total + term
+        return total
+
+    # --- numbers --------------------------------------------------------------------------------------------
+    def evaluate(self, lookup: Mapping[Atom, Any] | Callable[[Atom], Any], module: Any) -> Any:
+        """Value with atoms looked up and functions taken from `module` (numpy or jax.numpy).
+
+        Path-independent factors are multiplied first, so that arrays meet one scalar per term.
+        """
+        find = lookup if callable(lookup) else lookup.__getitem__
+        total: Any = 0.0
+        for monomial, coefficient in self.terms:
+            scalar: Any = float(coefficient)
+            array: Any = None
+            for atom, power in monomial:
+                factor = _atom_value(atom, find, module) ** power
+                if _depends_on_path(atom):
+                    array = factor if array is None else array * factor
+                else:
+                    scalar = scalar * factor
+            total = total + (scalar if array is None else scalar * array)
+        return total
+
+
+ZERO = Expression(())
+ONE = Expression.number(1)
+MINUS_ONE = Expression.number(-1)
+
+
+def apply(name: str, argument: Expression) -> Expression:
+    """An elementary function of an expression, with parity and the value at zero made canonical."""
+    if name == "sqrt":
+        return argument.power(Expression.number(Fraction(1, 2)))
+    if argument.constant == 0 and name in AT_ZERO:
+        return Expression.number(AT_ZERO[name])
+    if argument.constant == 1 and name == "log":
+        return ZERO
+    negative = bool(argument.terms) and argument.terms[0][1] < 0
+    if negative and name in EVEN_FUNCTIONS:
+        return Expression.of(Function(name, -argument))
+    if negative and name in ODD_FUNCTIONS:
+        return -Expression.of(Function(name, -argument))
+    return Expression.of(Function(name, argument))
+
+
+def _rational_root(base: Fraction | None, exponent: Fraction) -> Fraction | None:
+    """base ** exponent where that is rational (square roots of squares), else None."""
+    if base is None or base < 0 or exponent.denominator != 2:
+        return None
+    top, bottom = _exact_root(base.numerator), _exact_root(base.denominator)
+    if top is None or bottom is None or (top == 0 and exponent < 0):
+        return None
+    return Fraction(top, bottom) ** exponent.numerator
+
+
+def _exact_root(value: int) -> int | None:
+    import math
+
+    root = math.isqrt(value)
+    return root if root * root == value else None
+
+
+def _whole_power(atom: Atom, power: int) -> tuple[Expression, int] | None:
+    """(expanded part, power of the atom that is left), or None where nothing expands."""
+    if not isinstance(atom, Power):
+        return None
+    value = atom.exponent.constant
+    if value is None:
+        return None
+    if value == -1 and power < 0:
+        return atom.base ** (-power), 0
+    if value.denominator > 1 and abs(power) >= value.denominator:
+        whole = int(power / value.denominator)
+        return atom.base**whole, power - whole * value.denominator
+    return None
+
+
+def _derivative(atom: Atom, variable: Atom) -> Expression:
+    if atom == variable:
+        return ONE
+    if isinstance(atom, Function):
+        inner = atom.argument.diff(variable)
+        return _function_slope(atom) * inner if inner.terms else ZERO
+    if isinstance(atom, Power):
+        base = atom.base.diff(variable)
+        exponent = atom.exponent.diff(variable)
+        slope = ZERO
+        if base.terms:
+            slope = slope + atom.exponent * atom.base.power(atom.exponent - ONE) * base
+        if exponent.terms:
+            slope = slope + Expression.of(atom) * apply("log", atom.base) * exponent
+        return slope
+    return ZERO
+
+
+def _function_slope(atom: Function) -> Expression:
+    x = atom.argument
+    match atom.name:
+        case "exp":
+            return Expression.of(atom)
+        case "log":
+            return x.inverse()
+        case "sin":
+            return apply("cos", x)
+        case "cos":
+            return -apply("sin", x)
+        case "tan":
+            return ONE + Expression.of(atom, 2)
+        case "sinh":
+            return apply("cosh", x)
+        case "cosh":
+            return apply("sinh", x)
+        case "tanh":
+            return ONE - Expression.of(atom, 2)
+        case "abs":
+            return Expression.of(Function("sign", x))
+        case "sign":
+            return ZERO
+    raise ActionError(f"{atom.name} has no derivative here")
+
+
+def _substituted(atom: Atom, replace: Callable[[Atom], Expression | None]) -> Expression:
+    new = replace(atom)
+    if new is not None:
+        return new
+    if isinstance(atom, Function):
+        return apply(atom.name, atom.argument.substitute(replace))
+    if isinstance(atom, Power):
+        return atom.base.substitute(replace).power(atom.exponent.substitute(replace))
+    return Expression.of(atom)
+
+
+def _depends_on_path(atom: Atom) -> bool:
+    if isinstance(atom, PathAtom):
+        return True
+    if isinstance(atom, Function):
+        return bool(atom.argument.paths)
+    return isinstance(atom, Power) and bool(atom.base.paths or atom.exponent.paths)
+
+
+def _atom_value(atom: Atom, find: Callable[[Atom], Any], module: Any) -> Any:
+    if atom == PI:
+        return module.pi
+    if atom == IMAGINARY:
+        return 1j
+    if isinstance(atom, Function) and atom.name not in ("mean", "charge"):
+        return getattr(module, atom.name)(atom.argument.evaluate(find, module))
+    if isinstance(atom, Power):
+        base = atom.base.evaluate(find, module)
+        value = atom.exponent.constant
+        if value == Fraction(1, 2):
+            return module.sqrt(base)
+        if value == -1:
+            return 1.0 / base
+        return base ** (float(value) if value is not None else atom.exponent.evaluate(find, module))
+    return find(atom)
