@@ -1,0 +1,50 @@
+"""What a Markov move is: `step(key, state, p, tuning) -> (state, info)`, leaving exp(-Re S) invariant.
+
+Moves compose: a sweep is a tuple of moves applied in order. Each move is a frozen object whose fields are fixed at
+compile time; everything that may change between runs arrives as an argument.
+"""
+
+from dataclasses import dataclass
+from typing import NamedTuple, Protocol
+
+from jax import Array
+
+from quarterturn.compiled.target import Parameters, PathState
+
+TRAJECTORY_LIMIT = 48  # kicks in the longest trajectory
+
+
+class Tuning(NamedTuple):
+    """What warm-up decides and then freezes. All traced: no value here compiles anything."""
+
+    frequency_squared: Array  # (C,), Omega^2 of the reference form
+    centre: Array  # (C,), the point about which the reference flow rotates, whitened
+    rotations: Array  # (TRAJECTORY_LIMIT + 1,), angles of the exact flow [rad]
+    kicks: Array  # (TRAJECTORY_LIMIT,), weights of the kicks [rad]
+    count: Array  # (), number of kicks in use
+    segments: Array  # (), whether the segment flip is used
+
+
+class MoveInfo(NamedTuple):
+    """What one step of a move reports, each (chains,)."""
+
+    accepted: Array  # 0 or 1
+    energy_change: Array  # dH or dS of the proposal; 0 where a move always accepts
+
+
+class Move(Protocol):
+    """One Markov kernel. Frozen and hashable, so that a sweep can be a static argument."""
+
+    @property
+    def name(self) -> str: ...
+
+    def step(
+        self, key: Array, state: PathState, p: Parameters, tuning: Tuning
+    ) -> tuple[PathState, MoveInfo]: ...
+
+
+@dataclass(frozen=True)
+class Sweep:
+    """Moves in order; one sweep is one draw."""
+
+    moves: tuple[Move, ...]
