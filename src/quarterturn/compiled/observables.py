@@ -157,8 +157,6 @@ def lattice_offsets(bracket: Bracket, spacing: float, sites: int) -> tuple[int, 
                 f"its neighbours are {below:g} and {above:g}"
             )
         if abs(nearest) >= sites:
-            raise RequestError(
-                f"{bracket.label}: the time {float(time):g} is beyond beta = {sites * spacing:g}"
-            )
+            raise RequestError(f"{bracket.label}: the time {float(time):g} is beyond beta = {sites * spacing:g}")
         offsets.append(nearest)
     return tuple(offsets)

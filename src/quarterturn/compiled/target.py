@@ -83,9 +83,7 @@ class Target:
     def mass_factor(self, p: Parameters) -> Array:
         """G with K = G G^T, lower triangular, shape (C, C)."""
         lookup = self.scalars(p)
-        rows = [
-            [jnp.asarray(k.evaluate(lookup, jnp), jnp.float64) for k in row] for row in self.euclidean.mass
-        ]
+        rows = [[jnp.asarray(k.evaluate(lookup, jnp), jnp.float64) for k in row] for row in self.euclidean.mass]
         return (
             jnp.linalg.cholesky(jnp.stack([jnp.stack(row) for row in rows]))
             if len(rows) > 1

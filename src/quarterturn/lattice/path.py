@@ -49,9 +49,7 @@ def discretise(euclidean: EuclideanAction, sites: int, spacing: float) -> Lattic
     Raises RequestError for fewer than three sites (links would be doubled) or a spacing that is not positive.
     """
     if sites < SMALLEST:
-        raise RequestError(
-            f"a periodic path needs at least {SMALLEST} sites, got {sites}: two sites double each link"
-        )
+        raise RequestError(f"a periodic path needs at least {SMALLEST} sites, got {sites}: two sites double each link")
     if not spacing > 0 or spacing == float("inf"):
         raise RequestError(f"the spacing a must be positive and finite, got {spacing}")
     return LatticeAction(euclidean, sites, spacing)

@@ -45,9 +45,7 @@ class Chain:
     program: Program
     recipe: Recipe
     numbers: Ledger
-    curves: (
-        Ledger  # columns: the numbers, then the curves flattened (curve, step); entries are means of a block
-    )
+    curves: Ledger  # columns: the numbers, then the curves flattened (curve, step); entries are means of a block
     warm_up: int  # draws per chain before the first measured one
     stop: str = ""  # satisfied | draws | time | interrupted
     acceptance: dict[str, float] | None = None
@@ -109,9 +107,7 @@ def start_state(program: Program, key: jax.Array, p: Parameters, recipe: Recipe)
     size = jnp.exp(jax.random.uniform(size_key, (shape[0], 1, 1), jnp.float64, -0.7, 0.7))
     width = (4 * jnp.asarray(np.array(recipe.frequency_squared))) ** -0.25
     side = jax.random.uniform(side_key, (*shape[:2], 1), jnp.float64, -1.5, 1.5) * width[:, None]
-    return PathState(
-        jnp.asarray(np.array(recipe.centre))[:, None] + x * size + side, jnp.zeros(shape[:2], jnp.float64)
-    )
+    return PathState(jnp.asarray(np.array(recipe.centre))[:, None] + x * size + side, jnp.zeros(shape[:2], jnp.float64))
 
 
 def first_recipe(program: Program, couplings: Mapping[str, float], p: Parameters, beta: float) -> Recipe:

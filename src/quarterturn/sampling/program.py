@@ -90,9 +90,7 @@ class Program:
         numbers = first + jnp.arange(BLOCK, dtype=jnp.uint32)
         (state, curves), out = jax.lax.scan(sweep, (state, zero), numbers)
         measured, probes, accepted, change, winding = out
-        return state, BlockOutput(
-            measured, curves / BLOCK, probes, jnp.mean(accepted, axis=0), change, winding
-        )
+        return state, BlockOutput(measured, curves / BLOCK, probes, jnp.mean(accepted, axis=0), change, winding)
 
 
 _programs: OrderedDict[tuple, Program] = OrderedDict()

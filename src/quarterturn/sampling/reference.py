@@ -30,9 +30,7 @@ def _directions(components: int) -> tuple[Floats, Floats]:
     return cloud, np.full(len(cloud), 1 / len(cloud))
 
 
-def gaussian_reference(
-    potential: Callable[[Floats], Floats], components: int, beta: float
-) -> tuple[Floats, Floats]:
+def gaussian_reference(potential: Callable[[Floats], Floats], components: int, beta: float) -> tuple[Floats, Floats]:
     """(Omega^2, centre), each (C,), of the variational Gaussian for V(x), x whitened of shape (C, points).
 
     Omega is bounded below by 1/beta, the slowest thing that a periodic path of this extent can feel.
@@ -52,8 +50,6 @@ def gaussian_reference(
         (np.array([start, *np.full(components, c)]) for start in np.linspace(-12, 12, 25) for c in (0.0,)),
         key=energy,
     )
-    found = minimize(
-        energy, best, method="Nelder-Mead", options={"maxiter": 400 * (components + 1), "xatol": 1e-3}
-    )
+    found = minimize(energy, best, method="Nelder-Mead", options={"maxiter": 400 * (components + 1), "xatol": 1e-3})
     omega = max(math.exp(float(np.clip(found.x[0], -60, 60))), 1 / beta)
     return np.full(components, omega**2), np.asarray(found.x[1:])

@@ -24,9 +24,7 @@ from quarterturn.sampling.moves.segment_flip import SegmentFlip
 from quarterturn.sampling.program import BLOCK, BlockOutput, Program
 
 Floats = NDArray[np.float64]
-FIXED_COST = (
-    4.0  # a draw without kicks, in units of a kick (measured on two cores; only the choice depends on it)
-)
+FIXED_COST = 4.0  # a draw without kicks, in units of a kick (measured on two cores; only the choice depends on it)
 SEGMENT_COST = 2.5
 INTEGRATORS = {s.name: s for s in (LEAPFROG, MINIMUM_NORM)}
 
@@ -110,9 +108,7 @@ class WarmUp:
         slope = np.asarray(target.force(self.state, self.p))
         if target.angles:
             return recipe
-        mirrored = np.all(
-            np.asarray(target.euclidean.symmetries).reshape(-1, target.components) < 0, axis=1
-        ).any()
+        mirrored = np.all(np.asarray(target.euclidean.symmetries).reshape(-1, target.components) < 0, axis=1).any()
         centre = np.zeros(target.components) if mirrored else x.mean(axis=(0, 2))
         y = x - centre[None, :, None]
         ratio = (y * slope).mean(axis=(0, 2)) / (y * y).mean(axis=(0, 2))
@@ -168,9 +164,7 @@ def _shapes(start: Recipe) -> Iterator[Recipe]:
     quarter = 1.5
     for integrator in (LEAPFROG, MINIMUM_NORM):
         per_step = len(integrator.kicks)
-        for steps in sorted(
-            {1, 2, 3, max(1, start.kicks // per_step), max(1, start.kicks * 3 // (2 * per_step))}
-        ):
+        for steps in sorted({1, 2, 3, max(1, start.kicks // per_step), max(1, start.kicks * 3 // (2 * per_step))}):
             for angle in sorted({quarter, min(quarter, start.angle)}):
                 if _plausible(integrator, steps, angle, start):
                     yield replace(start, integrator=integrator.name, steps=steps, angle=angle)

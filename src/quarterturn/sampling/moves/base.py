@@ -38,9 +38,7 @@ class Move(Protocol):
     @property
     def name(self) -> str: ...
 
-    def step(
-        self, key: Array, state: PathState, p: Parameters, tuning: Tuning
-    ) -> tuple[PathState, MoveInfo]: ...
+    def step(self, key: Array, state: PathState, p: Parameters, tuning: Tuning) -> tuple[PathState, MoveInfo]: ...
 
 
 @dataclass(frozen=True)

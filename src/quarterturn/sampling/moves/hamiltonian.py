@@ -19,9 +19,7 @@ from jax import Array
 from quarterturn.compiled.target import Parameters, PathState, Target, ahead
 from quarterturn.sampling.moves.base import MoveInfo, Tuning
 
-JITTER = (
-    0.15  # each trajectory's angles are scaled by 1 + JITTER u, u uniform in (-1, 1): no resonance survives
-)
+JITTER = 0.15  # each trajectory's angles are scaled by 1 + JITTER u, u uniform in (-1, 1): no resonance survives
 
 
 @dataclass(frozen=True)
@@ -91,12 +89,7 @@ class HamiltonianMove:
         chains = state.x.shape[0]
         scale = 1 + JITTER * jax.random.uniform(jitter, (chains, 1, 1), jnp.float64, -1.0, 1.0)
         proposal, v = self.flow(state, v, scale, p, tuning, 1 / form)
-        change = (
-            self.target.action(proposal, p)
-            + self.kinetic(v, p, tuning)
-            - self.target.action(state, p)
-            - before
-        )
+        change = self.target.action(proposal, p) + self.kinetic(v, p, tuning) - self.target.action(state, p) - before
         change = jnp.where(jnp.isfinite(change), change, jnp.inf)
         accept = jnp.log(jax.random.uniform(decide, (chains,), jnp.float64)) < -change
         x = jnp.where(accept[:, None, None], proposal.x, state.x)
