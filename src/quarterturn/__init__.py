@@ -1,0 +1,72 @@
+"""quarterturn: from an action on the blackboard to a number with a defended error bar.
+
+The calls a person makes are here; everything heavy is imported when it is first used.
+"""
+
+from typing import TYPE_CHECKING, Any
+
+from quarterturn.errors import (
+    ActionError,
+    EstimateError,
+    NotationError,
+    QuarterturnError,
+    RecordError,
+    RequestError,
+    SpectrumError,
+)
+
+if TYPE_CHECKING:
+    from quarterturn.runs.declaration import action
+    from quarterturn.runs.sampling import sample
+    from quarterturn.runs.spectrum import levels
+    from quarterturn.runs.verification import verify
+
+__version__ = "0.1.0"
+__all__ = [
+    "ActionError",
+    "EstimateError",
+    "NotationError",
+    "QuarterturnError",
+    "RecordError",
+    "RequestError",
+    "SpectrumError",
+    "action",
+    "levels",
+    "sample",
+    "verify",
+]
+
+_ROOMS = {
+    "action": "quarterturn.runs.declaration",
+    "sample": "quarterturn.runs.sampling",
+    "levels": "quarterturn.runs.spectrum",
+    "verify": "quarterturn.runs.verification",
+}
+
+
+def __getattr__(name: str) -> Any:
+    if name in _ROOMS:
+        from importlib import import_module
+
+        found = getattr(import_module(_ROOMS[name]), name)
+        globals()[name] = found
+        return found
+    raise AttributeError(f"module 'quarterturn' has no attribute {name!r}")
+
+
+def __dir__() -> list[str]:
+    return sorted([*globals(), *_ROOMS])
+
+
+def load_ipython_extension(ipython: Any) -> None:
+    """Called by `%load_ext quarterturn`."""
+    from quarterturn.magics.extension import load
+
+    load(ipython)
+
+
+def unload_ipython_extension(ipython: Any) -> None:
+    """Called by `%unload_ext quarterturn`."""
+    from quarterturn.magics.extension import unload
+
+    unload(ipython)

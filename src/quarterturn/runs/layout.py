@@ -1,0 +1,90 @@
+"""Which primary observables a set of measurements needs, and in which columns of a chain's ledgers they stand."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+
+import numpy as np
+from numpy.typing import NDArray
+
+from quarterturn.action.expression import Expression
+from quarterturn.action.model import Bracket, EuclideanAction, Measurement
+from quarterturn.compiled.observables import Observables, lattice_offsets
+from quarterturn.compiled.target import Target
+
+NOW = Fraction(0)
+
+
+@dataclass(frozen=True)
+class Layout:
+    """Brackets without repetition, numbers before curves, and where to find each."""
+
+    fixed: tuple[Bracket, ...]
+    free: tuple[Bracket, ...]
+    steps: int  # points of a curve
+    is_complex: bool  # column 0 is then the phase
+
+    def number(self, bracket: Bracket) -> int:
+        """Column of a fixed bracket, in the ledger of numbers and at the head of the ledger of curves."""
+        return _place(self.fixed, bracket) + self.is_complex
+
+    def curve(self, bracket: Bracket) -> NDArray[np.int_]:
+        """Columns of a free bracket in the ledger of curves, (steps,)."""
+        first = len(self.fixed) + self.is_complex + _place(self.free, bracket) * self.steps
+        return np.arange(first, first + self.steps)
+
+    @property
+    def number_names(self) -> tuple[str, ...]:
+        phase = ("average phase",) if self.is_complex else ()
+        return (*phase, *(b.label for b in self.fixed))
+
+    @property
+    def curve_names(self) -> tuple[str, ...]:
+        return (*self.number_names, *(f"{b.label} at step {n}" for b in self.free for n in range(self.steps)))
+
+
+def _place(brackets: tuple[Bracket, ...], wanted: Bracket) -> int:
+    """Position of the bracket of the same meaning; labels do not count."""
+    return next(i for i, b in enumerate(brackets) if (b.groups, b.over) == (wanted.groups, wanted.over))
+
+
+def pair_bracket(left: Expression, right: Expression, label: str) -> Bracket:
+    """<left(t) right(0)>."""
+    return Bracket(label, ((None, left), (NOW, right)))
+
+
+def gap_brackets(measurement: Measurement) -> tuple[list[list[Bracket]], list[Bracket]]:
+    """The correlation matrix of a gap's operators and their expectation values."""
+    operators = measurement.operators
+    matrix = [
+        [pair_bracket(f, g, f"{measurement.label}: C[{i + 1},{j + 1}](t)") for j, g in enumerate(operators)]
+        for i, f in enumerate(operators)
+    ]
+    for i in range(len(operators)):
+        for j in range(i):
+            matrix[i][j] = matrix[j][i]
+    means = [Bracket(f"{measurement.label}: <O{i + 1}>", ((NOW, f),)) for i, f in enumerate(operators)]
+    return matrix, means
+
+
+def lay_out(measurements: Sequence[Measurement], euclidean: EuclideanAction, sites: int) -> Layout:
+    """Collect the brackets of all measurements. Labels do not tell brackets apart, their meaning does."""
+    fixed: dict[tuple, Bracket] = {}
+    free: dict[tuple, Bracket] = {}
+    for measurement in measurements:
+        brackets = list(measurement.brackets)
+        if measurement.kind == "gap":
+            matrix, means = gap_brackets(measurement)
+            brackets = [*(b for row in matrix for b in row), *means]
+        for bracket in brackets:
+            (free if bracket.free else fixed).setdefault((bracket.groups, bracket.over), bracket)
+    is_complex = any(a.terms for a in euclidean.drift)
+    return Layout(tuple(fixed.values()), tuple(free.values()), sites // 2 + 1, is_complex)
+
+
+def observables(layout: Layout, target: Target, spacing: float) -> Observables:
+    """The compiled side of a layout. Raises RequestError where a time is not on the lattice."""
+    offsets = tuple(lattice_offsets(b, spacing, target.sites) for b in (*layout.fixed, *layout.free))
+    return Observables(target, layout.fixed, layout.free, offsets)

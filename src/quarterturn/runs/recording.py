@@ -1,0 +1,113 @@
+"""Records of runs: everything needed to get the numbers again, from the notation alone."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+import numpy as np
+
+from quarterturn.action.model import Action
+from quarterturn.estimates.estimate import CurveEstimate, Estimate
+from quarterturn.records.schema import SCHEMA, environment, validate
+from quarterturn.runs.settings import Settings
+from quarterturn.sampling.driver import Chain
+
+
+def notation_of(action: Action) -> str:
+    """The canonical notation with its couplings, lattice and measurements: a body that declares the action again."""
+    lines = [action.canonical]
+    if action.couplings:
+        lines.append(", ".join(f"{name} = {c.default!r}" for name, c in action.couplings.items()))
+    if action.measurements:
+        lines.append("measure " + ", ".join(m.source for m in action.measurements))
+    return "\n".join(lines)
+
+
+def base_record(kind: str, action: Action, settings: Settings) -> dict[str, Any]:
+    """The part of a record that every kind of run shares."""
+    versions, platform = environment()
+    return {
+        "schema": SCHEMA,
+        "kind": kind,
+        "action": {
+            "name": action.name,
+            "notation": notation_of(action),
+            "digest": action.digest,
+            "turned_digest": action.euclidean.digest,
+        },
+        "couplings": {name: float(value) for name, value in settings.couplings.items()},
+        "lattice": {"sites": settings.sites, "spacing": settings.spacing, "boundary": "periodic"},
+        "versions": versions,
+        "platform": platform,
+        "precision": "float64",
+        "parents": [],
+    }
+
+
+def sample_record(
+    action: Action,
+    settings: Settings,
+    chain: Chain,
+    seed: int,
+    numbers: Mapping[str, Estimate],
+    curves: Mapping[str, CurveEstimate],
+    warnings: tuple[str, ...],
+) -> dict[str, Any]:
+    """The record of a Monte Carlo run."""
+    recipe = chain.recipe
+    record = base_record("sample", action, settings)
+    record["request"] = {
+        "seed": seed,
+        "chains": chain.program.chains,
+        "draws": chain.draws,
+        "warm_up": chain.warm_up,
+        "generator": "threefry2x32",
+    }
+    record["method"] = {
+        "sampler": "Hamiltonian Monte Carlo, reference form evolved exactly",
+        "moves": dict(chain.acceptance or {}),
+        "integrator": recipe.integrator,
+        "steps": recipe.steps,
+        "angle": recipe.angle,
+        "reference_frequency_squared": list(recipe.frequency_squared),
+        "reference_centre": list(recipe.centre),
+        "segment_flips": recipe.segments,
+        "exp_minus_dH": list(chain.exp_change),
+    }
+    record["results"] = [
+        *(number_result(label, e) for label, e in numbers.items()),
+        *(curve_result(label, c) for label, c in curves.items()),
+    ]
+    record["warnings"] = list(warnings)
+    record["stop"] = chain.stop
+    record["wall_seconds"] = round(chain.seconds, 3)
+    validate(record)
+    return record
+
+
+def _finite(value: float | None) -> float | None:
+    return None if value is None or not np.isfinite(value) else float(value)
+
+
+def number_result(label: str, e: Estimate) -> dict[str, Any]:
+    return {
+        "label": label,
+        "kind": "number",
+        "value": _finite(e.value),
+        "error": _finite(e.error),
+        "tau": _finite(e.tau),
+        "n_eff": _finite(e.n_eff),
+        "state": e.state,
+    }
+
+
+def curve_result(label: str, c: CurveEstimate) -> dict[str, Any]:
+    return {
+        "label": label,
+        "kind": "curve",
+        "t": [float(v) for v in c.t],
+        "value": [_finite(v) for v in c.value],
+        "error": [_finite(v) for v in c.error],
+        "state": c.state,
+    }

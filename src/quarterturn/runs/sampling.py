@@ -1,0 +1,344 @@
+"""`sample`: from a declared action to numbers with errors, an exact column, warnings and a record."""
+
+from __future__ import annotations
+
+import threading
+import time as clock
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from quarterturn.action.expression import Atom, Symbol
+from quarterturn.action.measurements import measurement_label
+from quarterturn.action.model import Action, Measurement
+from quarterturn.compiled.target import Target
+from quarterturn.errors import RequestError
+from quarterturn.estimates.checks import warnings as error_warnings
+from quarterturn.estimates.estimate import GOOD, UNRESOLVED, CurveEstimate, Estimate
+from quarterturn.estimates.series import Samples
+from quarterturn.lattice.path import discretise
+from quarterturn.records.canonical import record_name
+from quarterturn.runs import doubts
+from quarterturn.runs.evaluation import Evaluator, is_odd
+from quarterturn.runs.exact import ExactColumn
+from quarterturn.runs.interruption import stoppable
+from quarterturn.runs.layout import Layout, lay_out, observables
+from quarterturn.runs.progress import Progress, Watcher
+from quarterturn.runs.recording import sample_record
+from quarterturn.runs.run import Run
+from quarterturn.runs.settings import Goal, Settings, goal, resolve
+from quarterturn.sampling.driver import Chain, Request, run_chains
+from quarterturn.sampling.program import Program, default_chains, program_for
+
+Floats = NDArray[np.float64]
+FEWEST_DRAWS = 64  # per chain, before a precision can count as met
+MOST_CHAINS = 4096
+
+
+def sample(
+    action: Action,
+    *,
+    error: Any = None,
+    time: Any = None,
+    draws: int | None = None,
+    chains: int | None = None,
+    seed: int = 1,
+    progress: Watcher | None = None,
+    stop: threading.Event | None = None,
+    **keywords: float,
+) -> Run:
+    """Sample an action by Monte Carlo until a target error, a time or a number of draws, whichever is met first.
+
+    Parameters
+    ----------
+    action
+        From `quarterturn.action`.
+    error
+        Target for every measured number: "1%" (relative) or a number (absolute); or a mapping from labels to targets.
+        Numbers that a symmetry makes zero are left out of a relative target. Default 1 %, with a minute of time.
+    time
+        Longest duration, warm-up included: seconds, "60s", "2 min".
+    draws
+        Number of draws per chain; a run cut by draws alone is repeated bit for bit from its seed.
+    chains, seed
+        Number of Markov chains (default by the length of the path) and seed of their generator.
+    progress
+        Called with a `Progress` a few times a second.
+    stop
+        Set it from another thread to end the run at the next safe point and keep what there is, as Ctrl-C does.
+    **keywords
+        Couplings of the action; `a`, `beta`, `sites` of the lattice.
+
+    Returns
+    -------
+    Run
+        Estimates by label, with the exact value at the same spacing for one path.
+
+    Raises
+    ------
+    RequestError
+        An unknown keyword, a value that can't be used, a time that is not on the lattice.
+    ActionError
+        A finding at these couplings makes the path integral diverge.
+    """
+    settings = resolve(action, keywords)
+    wanted = goal(error, time, draws)
+    lattice = discretise(action.euclidean, settings.sites, settings.spacing)
+    count = _chain_count(chains, lattice.sites, lattice.components)
+    layout = lay_out(action.measurements, action.euclidean, settings.sites)
+    target = Target(action.euclidean, settings.sites, tuple(sorted(settings.couplings)))
+    program = program_for(target, observables(layout, target, settings.spacing), count)
+    exact = ExactColumn(action.euclidean, settings.couplings, settings.sites, settings.spacing)
+    session = _Session(action, settings, layout, wanted, exact, progress, clock.monotonic())
+    session.check_labels()
+    event = stop or threading.Event()
+    with stoppable(event):
+        session.say("compiling" if program.compilations == 0 else "warming up", None)
+        chain = run_chains(
+            program,
+            settings.couplings,
+            settings.spacing,
+            Request(int(seed), wanted.draws, wanted.seconds),
+            session.edges(program),
+            event.is_set,
+            session.satisfied,
+        )
+    return session.finish(chain, int(seed))
+
+
+def _chain_count(asked: int | None, sites: int, components: int) -> int:
+    if asked is None:
+        return default_chains(sites, components)
+    if isinstance(asked, bool) or int(asked) != asked or not 2 <= asked <= MOST_CHAINS:
+        raise RequestError(
+            f"chains must be a whole number from 2 (so that replicas can be compared) to {MOST_CHAINS}, got {asked!r}"
+        )
+    return int(asked)
+
+
+@dataclass
+class _Session:
+    """One run while it runs: evaluates what there is, and turns the finished chain into a Run."""
+
+    action: Action
+    settings: Settings
+    layout: Layout
+    goal: Goal
+    exact: ExactColumn
+    progress: Watcher | None
+    began: float
+    busy: float = 0.0  # seconds spent evaluating, kept a small share of the run
+    met: bool = False
+    basins: doubts.Basins | None = None
+
+    # --- before ---------------------------------------------------------------------------------------------
+    def check_labels(self) -> None:
+        """Targets for named numbers must name numbers."""
+        labels = [m.label for m in self.action.measurements if m.kind != "curve"]
+        for label in self.goal.precision:
+            if label and measurement_label(label) not in labels:
+                raise RequestError(f"no number is measured under {label!r}; there is {', '.join(labels)}")
+
+    def edges(self, program: Program) -> tuple[Floats, ...]:
+        """Values of the whitened variables that part sectors."""
+        euclidean = self.action.euclidean
+        self.basins = doubts.find_basins(euclidean, self.settings.couplings, self.exact.transfer)
+        if self.basins is not None:
+            scalars = {Symbol("coupling", n): v for n, v in self.settings.couplings.items()}
+            mass = float(euclidean.mass[0][0].evaluate(scalars, np))
+            return (self.basins.edges * np.sqrt(mass),)
+        flipped = np.any(np.array(euclidean.symmetries).reshape(-1, len(euclidean.variables)) < 0, axis=0)
+        angles = [p is not None for p in euclidean.periods]
+        return tuple(np.zeros(1) if f and not a else np.zeros(0) for f, a in zip(flipped, angles, strict=True))
+
+    def constants(self) -> dict[Atom, float]:
+        values: dict[Atom, float] = {Symbol("coupling", n): v for n, v in self.settings.couplings.items()}
+        beta = self.settings.beta
+        for name, value in (("a", self.settings.spacing), ("beta", beta), ("vol", beta)):
+            values[Symbol("geometry", name)] = value
+        return values
+
+    # --- during ---------------------------------------------------------------------------------------------
+    def evaluator(self, chain: Chain) -> Evaluator:
+        numbers = Samples(
+            chain.numbers.values(), chain.numbers.block, chain.numbers.variance(), self.layout.number_names
+        )
+        curves = Samples(chain.curves.values(), chain.curves.block, chain.curves.variance(), self.layout.curve_names)
+        return Evaluator(
+            self.layout,
+            numbers,
+            curves,
+            self.constants(),
+            self.action.euclidean,
+            self.settings.beta,
+            self.settings.spacing,
+        )
+
+    def satisfied(self, chain: Chain) -> bool:
+        """Whether the target is met; also tells the watcher. Asked a few times a second, answers cheaply."""
+        now = clock.monotonic()
+        if chain.draws < FEWEST_DRAWS or self.busy > 0.25 * (now - self.began):
+            return False
+        evaluator = self.evaluator(chain)
+        numbers = self.numbers(evaluator, gaps=True) if self.goal.precision else self.numbers(evaluator, gaps=False)
+        shares = {label: self.share(label, e) for label, e in numbers.items()}
+        left = [s for s in shares.values() if s is not None]
+        self.met = bool(self.goal.precision) and all(s >= 1 for s in left)
+        self.busy += clock.monotonic() - now
+        rows = tuple((label, str(e), shares[label]) for label, e in numbers.items())
+        worst = min(left, default=None)
+        remaining = None if not worst or worst >= 1 else (now - self.began) * (1 / worst - 1)
+        if self.goal.seconds is not None:
+            rest = max(0.0, self.goal.seconds - (now - self.began))
+            remaining = rest if remaining is None else min(remaining, rest)
+        self.say("drawing", chain, rows, remaining)
+        return self.met
+
+    def share(self, label: str, e: Estimate) -> float | None:
+        """Share of the needed draws that there are, (target / error)^2; None where no target applies."""
+        precision = next(
+            (p for name, p in self.goal.precision.items() if name == "" or measurement_label(name) == label), None
+        )
+        if precision is None or e.error is None or e.error == 0:
+            return None
+        if e.state != GOOD:
+            return 0.0
+        if precision.relative and self.vanishes(label):
+            return None
+        return (precision.allowed(e.value) / e.error) ** 2
+
+    def vanishes(self, label: str) -> bool:
+        """Whether a symmetry makes the number zero, so that a relative error means nothing."""
+        m = next(m for m in self.action.measurements if m.label == label)
+        if m.kind != "number" or len(m.brackets) != 1 or m.brackets[0].over != "sites":
+            return False
+        product = m.brackets[0].groups[0][1]
+        for _, factor in m.brackets[0].groups[1:]:
+            product = product * factor
+        return is_odd(product, self.action.euclidean)
+
+    def say(
+        self,
+        stage: str,
+        chain: Chain | None,
+        rows: tuple[tuple[str, str, float | None], ...] = (),
+        remaining: float | None = None,
+    ) -> None:
+        if self.progress is None:
+            return
+        draws, chains = (chain.draws, chain.program.chains) if chain else (0, 0)
+        self.progress(Progress(stage, clock.monotonic() - self.began, draws, chains, rows, remaining))
+
+    # --- after ----------------------------------------------------------------------------------------------
+    def numbers(self, evaluator: Evaluator, gaps: bool) -> dict[str, Estimate]:
+        found: dict[str, Estimate] = {}
+        for m in self.action.measurements:
+            if m.kind == "number":
+                found[m.label] = evaluator.number(m)
+            elif m.kind == "gap" and gaps:
+                found[m.label] = evaluator.gap(m).estimate
+        return found
+
+    def finish(self, chain: Chain, seed: int) -> Run:
+        """Final estimates, exact column, warnings, record."""
+        if chain.draws == 0:
+            raise RequestError("the run was stopped before the first block of draws; there is nothing to report")
+        evaluator, constants = self.evaluator(chain), self.constants()
+        gaps = {m.label: evaluator.gap(m) for m in self.action.measurements if m.kind == "gap"}
+        numbers: dict[str, Estimate] = {}
+        phase = evaluator.phase()
+        if phase is not None:
+            numbers["average phase"] = phase.with_exact(self.exact.average_phase())
+        curves: dict[str, CurveEstimate] = {}
+        for m in self.action.measurements:
+            if m.kind == "curve":
+                curves[m.label] = replace(evaluator.curve(m), exact=self.exact.curve(m, constants, self.layout.steps))
+                continue
+            e = gaps[m.label].estimate if m.kind == "gap" else evaluator.number(m)
+            numbers[m.label] = e.with_exact(self.exact.number(m, constants))
+        warnings, numbers = self.judge(chain, evaluator, numbers, self.action.measurements)
+        if self.met or not self.goal.precision:
+            met = True
+        else:
+            shares = [self.share(label, e) for label, e in numbers.items() if label != "average phase"]
+            met = all(s is None or s >= 1 for s in shares)
+        stop = "satisfied" if met and self.goal.precision and chain.stop == "satisfied" else chain.stop
+        chain.stop = stop
+        record = sample_record(self.action, self.settings, chain, seed, numbers, curves, warnings)
+        return Run(
+            self.action,
+            self.settings,
+            numbers,
+            curves,
+            gaps,
+            warnings,
+            self.facts(chain),
+            stop,
+            met and all(e.state == GOOD for e in numbers.values()),
+            record,
+            record_name(record),
+        )
+
+    def judge(
+        self, chain: Chain, evaluator: Evaluator, numbers: Mapping[str, Estimate], measurements: Sequence[Measurement]
+    ) -> tuple[tuple[str, ...], dict[str, Estimate]]:
+        """All warnings, and the numbers with the state they deserve."""
+        couplings, euclidean = self.settings.couplings, self.action.euclidean
+        stuck = doubts.stuck_sectors(chain, euclidean, self.basins, self.exact.transfer)
+        judged = dict(numbers)
+        if stuck:
+            judged = {
+                label: replace(e, state=UNRESOLVED, remark=e.remark or "the chains are stuck") if e.state == GOOD else e
+                for label, e in numbers.items()
+            }
+        primary = {
+            k: e
+            for k, e in numbers.items()
+            if e.gradient is not None and len(e.gradient) == evaluator.numbers.values.shape[2]
+        }
+        words = [
+            *(("cut short: the run was interrupted and holds what there was",) if chain.stop == "interrupted" else ()),
+            *stuck,
+            *error_warnings(evaluator.numbers, list(primary.values()), list(primary)),
+            *doubts.energy_violation(chain),
+            *doubts.contradictions(list(judged), list(judged.values())),
+            *doubts.contamination(self.settings.beta, self.exact.transfer),
+            *doubts.artefacts(measurements, judged, euclidean, couplings, self.settings.beta),
+        ]
+        if self.layout.is_complex:
+            phase = numbers["average phase"]
+            words.insert(0, f"the weight is complex: the numbers are reweighted by a phase whose average is {phase}")
+        return tuple(words), judged
+
+    def facts(self, chain: Chain) -> tuple[tuple[str, str], ...]:
+        """The method, line by line."""
+        recipe = chain.recipe
+        moves = ", ".join(f"{name} {rate:.0%}" for name, rate in (chain.acceptance or {}).items())
+        omega = ", ".join(f"{np.sqrt(w2):.4g}" for w2 in recipe.frequency_squared)
+        mean, error = chain.exp_change
+        reasons = {
+            "satisfied": "target error reached",
+            "draws": "number of draws reached",
+            "time": "time is up",
+            "interrupted": "interrupted",
+        }
+        facts = [
+            (
+                "lattice",
+                f"{self.settings.sites} sites, a = {self.settings.spacing:g}, beta = {self.settings.beta:g}, periodic",
+            ),
+            ("chains", f"{chain.program.chains} chains of {chain.draws} draws after {chain.warm_up} of warm-up"),
+            (
+                "trajectory",
+                f"{recipe.integrator}, {recipe.kicks} kicks over {recipe.angle:.3g} rad, reference frequency {omega}",
+            ),
+            ("moves accepted", moves),
+            ("<exp(-dH)>", f"{mean:.5f} ± {error:.5f}"),
+            ("stopped", f"{reasons[chain.stop]}, {chain.seconds:.1f} s"),
+        ]
+        if self.exact.reason:
+            facts.append(("exact column", self.exact.reason))
+        return tuple(facts)
