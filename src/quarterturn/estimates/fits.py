@@ -15,8 +15,9 @@ from quarterturn.estimates.series import Array
 
 ITERATIONS = 80
 STILL = 1e-8  # largest step, in logarithms of energy differences, of a search that has arrived
+SMALL, LEVEL = 1e-3, 1e-11  # or a small step on which chi^2 changes by no more than this share of itself
 LARGEST_STEP = 1.0
-STIFFEST = 1e12  # damping at which no direction leads down any more
+SOFTEST, STIFFEST = 1e-7, 1e8  # damping; at the latter no direction leads down any more
 SLOWEST, FASTEST = 1e-6, 30.0  # energy differences, in units of the range and of the step of times
 PARALLEL = 1e-10  # relative size below which a state is a copy of the others
 
@@ -178,8 +179,10 @@ def _search(problem: _Problem, logs: Array) -> tuple[_Point, NDArray[np.bool_]]:
         moved = active.copy()
         moved[active] = better
         _overwrite(point, moved, _take(trial, better))
-        damping[active] *= np.where(better, 0.1, 10.0)
-        arrived[active] = (better & (np.abs(step).max(axis=1) < STILL)) | (damping[active] > STIFFEST)
+        damping[active] = np.maximum(damping[active] * np.where(better, 0.1, 10.0), SOFTEST)
+        size = np.abs(step).max(axis=1)
+        level = np.abs(trial.chi2 - here.chi2) <= LEVEL * here.chi2
+        arrived[active] = (size < STILL) | (level & (size < SMALL)) | (damping[active] > STIFFEST)
     return point, arrived
 
 
