@@ -8,7 +8,6 @@ which makes the second call of one installation free and lets an sdist, which ca
 import hashlib
 import os
 import shutil
-import subprocess
 from pathlib import Path
 from typing import Any
 

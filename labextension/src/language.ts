@@ -13,7 +13,7 @@ import { Tag, tagHighlighter, tags } from '@lezer/highlight';
 
 import { atLineStart, isAction, nextToken, startState, type Kind, type State } from './notation.js';
 
-const field = Tag.define(tags.definition(tags.variableName));
+const field = Tag.define(tags.variableName);
 const expectation = Tag.define(tags.bracket);
 const derivative = Tag.define(tags.string);
 
@@ -23,7 +23,7 @@ const tagOfKind: Record<Kind, Tag> = {
   name: tags.definition(tags.variableName),
   option: tags.attributeName,
   keyword: tags.keyword,
-  field,
+  field: tags.definition(field),
   function: tags.standard(tags.variableName),
   symbol: tags.variableName,
   setting: tags.atom,

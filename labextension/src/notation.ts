@@ -65,16 +65,16 @@ const fieldWords: ReadonlySet<string> = new Set(['mod', 'complex', 'in', 'su', '
 const FIRST_LINE = /^%%action(?![\p{L}\p{N}_])/u;
 const SPACE = /\s+/y;
 const COMMENT = /#.*/y;
-const WORD = /[\p{L}_][\p{L}\p{M}\p{N}_]*/uy;
+const WORD = /[\p{L}_][\p{L}\p{M}\p{Nd}₀-₉_]*/uy; // not ², which is an exponent
 const NUMBER = /(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?|[½⅓¼¾⅔⅛]|[⁻⁺]?[⁰¹²³⁴⁵⁶⁷⁸⁹]+/uy;
-const DECLARED = /([\p{L}_][\p{L}\p{N}_]*)(?:\[\d+\])?\(\s*[txyz](?:\s*,\s*[xyz])*\s*\)(?!\s*=)/uy;
+const DECLARED = /([\p{L}_][\p{L}\p{Nd}₀-₉_]*)(?:\[\d+\])?\(\s*[txyz](?:\s*,\s*[xyz])*\s*\)(?!\s*=)/uy;
 const HEAD = /(?:LE|SE|L|H)(?=\s*=)/y;
 const DERIVATIVE = /(?:d|∂)(?:[_^](?:[\p{L}\p{N}]+|\{[^}]*\})|[ₜₓᵧμν])+|∂|d(?=\s+[\p{L}])|['′″]+/uy;
 const OPTION = /--?[\p{L}][\p{L}\p{N}-]*/uy;
 const METRIC = /[+-]{2,}|mostly\s+(?:plus|minus)/y;
 const TIMES = /[x×](?=\s*\d)/y;
 const AVERAGE = /[<⟨]|[>⟩](?:_c(?![\p{L}\p{N}]))?/uy;
-const OVERDOT = /[\u0307\u0308]/u;
+const OVERDOTS = /[\u0307\u0308]/gu;
 
 /** Whether a cell is an action cell; `firstLine` may run on, only its beginning matters. */
 export function isAction(firstLine: string): boolean {
@@ -188,7 +188,7 @@ function firstOfStatement(line: string, from: number, state: State): Token | nul
 
 function kindOfWord(word: string, state: State): Kind {
   // a dot above is a derivative in print; the letter below it is what the eye looks for
-  const bare = word.normalize('NFD').replace(new RegExp(OVERDOT, 'gu'), '');
+  const bare = word.normalize('NFD').replace(OVERDOTS, '');
   if (state.fields.has(word) || state.fields.has(bare)) {
     return 'field';
   }

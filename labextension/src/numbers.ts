@@ -61,13 +61,13 @@ export function general(value: number, digits: number): string {
   return scientific ? `${short}e${exponentDigits(power)}` : short;
 }
 
-/** `value` with so many decimals, always with its sign: +0.4. */
+/** `value` with so many decimals and always with its sign, +0.4, unless that rounds to zero. */
 export function signed(value: number, decimals: number): string {
   if (!Number.isFinite(value)) {
     return words(value);
   }
   const text = fixed(decimal(String(Math.abs(value))), decimals);
-  return `${value < 0 ? '-' : '+'}${text}`;
+  return /[1-9]/.test(text) ? `${value < 0 ? '-' : '+'}${text}` : text;
 }
 
 /** A whole number, thousands apart: 12 340; a large one with an exponent. */

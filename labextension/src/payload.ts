@@ -11,6 +11,7 @@ export const PAYLOAD_VERSION = 1;
 
 const MOST_ROWS = 1000;
 const MOST_CURVES = 40;
+const LARGEST_DRAWN = 1e150; // so that no difference or square on the way to the page overflows
 const MOST_WORDS = 200; // warnings, facts, couplings: more of them nobody reads
 
 export interface Row {
@@ -46,7 +47,7 @@ export interface Curve {
   readonly xLabel: string;
   readonly points: readonly Point[];
   readonly exact: readonly Point[];
-  /** how many of the points given were not numbers */
+  /** how many of the points given were not numbers, or beyond LARGEST_DRAWN */
   readonly dropped: number;
   readonly style: string;
   readonly plateau: Plateau | null;
@@ -128,15 +129,15 @@ function readCurve(curve: Record<string, unknown>): Curve {
   };
 }
 
-/** The points of which both coordinates are numbers. */
+/** The points that have a place in a picture. */
 function zip(x: readonly unknown[], y: readonly unknown[], error: readonly unknown[]): Point[] {
   const points: Point[] = [];
   for (let i = 0; i < Math.min(x.length, y.length); i += 1) {
     const at = number(x[i]);
     const value = number(y[i]);
-    if (at !== null && value !== null) {
-      const size = number(error[i]);
-      points.push({ x: at, y: value, error: size === null ? null : Math.abs(size) });
+    const size = Math.abs(number(error[i]) ?? 0);
+    if (at !== null && value !== null && Math.max(Math.abs(at), Math.abs(value), size) < LARGEST_DRAWN) {
+      points.push({ x: at, y: value, error: number(error[i]) === null ? null : size });
     }
   }
   return points;
@@ -145,6 +146,9 @@ function zip(x: readonly unknown[], y: readonly unknown[], error: readonly unkno
 function readPlateau(data: unknown): Plateau | null {
   const [value, error, from, to] = list(data).map(number);
   if (value == null || error == null || from == null || to == null) {
+    return null;
+  }
+  if (Math.max(Math.abs(value), Math.abs(error)) >= LARGEST_DRAWN) {
     return null;
   }
   return { value, error: Math.abs(error), from: Math.min(from, to), to: Math.max(from, to) };

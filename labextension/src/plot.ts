@@ -56,7 +56,7 @@ export function figureOf(curve: Curve, typeset: Typeset): HTMLElement {
   });
   draw();
   figure.append(canvas, html('figcaption', 'note', caption));
-  if (curve.points.some(point => point.y > 0)) {
+  if (curve.style === 'correlator' && curve.points.some(point => point.y > 0)) {
     figure.lastElementChild?.append(' ', button);
   }
   return figure;
@@ -226,7 +226,7 @@ function captionOf(curve: Curve, kind: AxisKind): string {
     parts.push(`${curve.points.length - markers} values that are not positive have no place on this axis.`);
   }
   if (curve.dropped > 0) {
-    parts.push(`${curve.dropped} entries that are not numbers are left out.`);
+    parts.push(`${curve.dropped} entries are left out: not numbers, or too large to draw.`);
   }
   return parts.join(' ');
 }

@@ -34,7 +34,7 @@ export function resultTable(rows: readonly Row[], typeset: Typeset): HTMLElement
   if (remarks) {
     head.append(heading(['remark'], ''));
   }
-  const widths = columns.map(column => Math.max(...rows.map(row => splitAtPoint(column.cell(row))[0].length)));
+  const widths = columns.map(column => Math.max(...rows.map(row => splitAtPoint(column.cell(row))[1].length)));
   const body = html('tbody', '');
   for (const row of rows) {
     const label = html('th', 'quantity', formula(row.label, row.latex, typeset));
@@ -88,19 +88,17 @@ function heading(content: (Node | string)[], meaning: string): HTMLElement {
   return cell;
 }
 
-/** What stands before the decimal point, and the rest. */
-export function splitAtPoint(text: string): [string, string] {
-  const whole = /^[-+]?[\d\u202f]+/.exec(text)?.[0] ?? '';
-  return [whole, text.slice(whole.length)];
+/** Sign, digits before the decimal point, and the rest. */
+export function splitAtPoint(text: string): [string, string, string] {
+  const [start = '', sign = '', whole = ''] = /^([-+]?)([\d\u202f]+)/.exec(text) ?? [];
+  return [sign, whole, text.slice(start.length)];
 }
 
+/** Digits right-aligned before the point; the sign hangs to their left, since it is not as wide as a digit. */
 function aligned(text: string, width: number): HTMLElement {
-  const [whole, rest] = splitAtPoint(text);
-  const left = html('span', 'whole', whole.replace('-', '\u2212'));
+  const [sign, whole, rest] = splitAtPoint(text);
+  const digits = html('span', 'digits', html('span', 'sign', sign.replace('-', '\u2212')), whole);
+  const left = html('span', 'whole', digits);
   left.style.minWidth = `${width}ch`;
-  const cell = html('td', 'number', left, rest);
-  if (whole === '' && rest !== '') {
-    cell.classList.add('qt-mod-word');
-  }
-  return cell;
+  return html('td', 'number', left, html('span', whole === '' ? 'word' : '', rest));
 }
