@@ -22,7 +22,7 @@ from quarterturn.estimates.series import Array, Samples
 
 WINDOW_FACTOR = 1.5  # S of the automatic window: the assumed ratio of exponential and integrated time
 FEWEST_BINS = 16  # below this there is no error at all
-WORST_ERROR_OF_ERROR = 0.25  # relative; an error that is known less well is unresolved
+WORST_ERROR_OF_ERROR = 0.2  # relative; an error that is known less well is unresolved
 SHORTEST_CHAIN = 6.0  # in tau: shorter chains have not moved enough for their scatter to be the error
 NONLINEAR = 0.25  # share of the bias in the error above which a derived quantity says so
 ROUNDING = 1e-14  # relative spread below which a quantity counts as constant
@@ -86,7 +86,7 @@ def gamma_method(samples: Samples, gradient: Array, *, window: int | None = None
     -------
     The error with its own error, tau [draws], and whether it is resolved: it is not where no window closes inside
     half a chain and the chains are too few or too short for their scatter to stand in, nor where the error is known
-    to no better than 25 %.
+    to no better than 20 %.
 
     Raises
     ------
@@ -110,9 +110,10 @@ def gamma_method(samples: Samples, gradient: Array, *, window: int | None = None
     summed = -1.0 if chosen is None else float(gamma[0] + 2 * gamma[1 : chosen + 1].sum())
     if chosen is None or summed <= 0:
         return _from_scatter_of_chains(samples, series, single)
-    summed *= 1 + (2 * chosen + 1) / total  # the bias of subtracting the measured mean: Wolff, eq. (49)
+    single += summed / total  # subtracting the measured mean took this from all Gamma(t): Wolff, eq. (49)
+    summed *= 1 + (2 * chosen + 1) / total
     error = float(np.sqrt(summed / total))
-    tau = _tau(samples, error, single)
+    tau = error**2 * samples.draws / (2 * single)
     relative = float(np.sqrt((chosen + 0.5) / total))
     tau_error = 2 * tau * np.sqrt(max(0.0, chosen + 0.5 - tau / samples.block) / total)
     resolved = relative <= WORST_ERROR_OF_ERROR
@@ -218,11 +219,6 @@ def as_estimate(value: float, result: GammaResult, gradient: Array, bias: float 
     )
 
 
-def _tau(samples: Samples, error: float, single: float) -> float:
-    """tau [draws] from error^2 = 2 tau variance / draws; the variance gets back what the measured mean took."""
-    return error**2 * samples.draws / (2 * (single + error**2))
-
-
 def _from_scatter_of_chains(samples: Samples, series: Array, single: float) -> GammaResult:
     """The error from the means of whole chains, where no window closes; unresolved if they are few or short."""
     chains, bins = series.shape
@@ -232,7 +228,7 @@ def _from_scatter_of_chains(samples: Samples, series: Array, single: float) -> G
     else:
         error = float(series.mean(axis=1).std(ddof=1) / np.sqrt(chains))
         relative, freedom = float(1 / np.sqrt(2 * (chains - 1))), float(chains - 1)
-    tau = _tau(samples, error, single)
+    tau = error**2 * samples.draws / (2 * (single + error**2))
     length = bins * samples.block
     long_enough = length >= SHORTEST_CHAIN * tau
     resolved = long_enough and relative <= WORST_ERROR_OF_ERROR
