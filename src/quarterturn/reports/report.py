@@ -4,6 +4,7 @@ Whoever makes results fills a `Report`; the renderers of this room (text, HTML, 
 nothing else. `Report.payload()` is the vendor JSON that the Lab extension draws.
 """
 
+import math
 from dataclasses import asdict, dataclass, field
 from typing import Any
 
@@ -41,6 +42,7 @@ class Curve:
     exact: tuple[float, ...] = ()
     style: str = "correlator"  # correlator | gap | history | wave | potential
     plateau: tuple[float, float, float, float] | None = None  # value, error, x from, x to of a fit drawn in
+    baseline: float | None = None  # wave: the energy at which the wave function is drawn
 
 
 @dataclass(frozen=True, slots=True)
@@ -60,7 +62,22 @@ class Report:
     record: dict[str, Any] = field(default_factory=dict, compare=False, repr=False)
 
     def payload(self) -> dict[str, Any]:
-        """The vendor JSON: this report without the record, which travels in the output's metadata."""
+        """The vendor JSON: this report without the record, which travels in the output's metadata.
+
+        Numbers that JSON cannot hold (points of a curve that do not exist) become null.
+        """
         data = asdict(self)
         del data["record"]
-        return {"version": PAYLOAD_VERSION, **data}
+        plain: dict[str, Any] = _plain(data)
+        return {"version": PAYLOAD_VERSION, **plain}
+
+
+def _plain(value: Any) -> Any:
+    """`value` as JSON has it: lists for tuples, null for numbers that are not finite."""
+    if isinstance(value, dict):
+        return {key: _plain(item) for key, item in value.items()}
+    if isinstance(value, (list, tuple)):
+        return [_plain(item) for item in value]
+    if isinstance(value, float):
+        return float(value) if math.isfinite(value) else None
+    return value
