@@ -10,6 +10,9 @@ const PLAIN_DIGITS = 6; // of a value without an error
 const UNRESOLVED_DIGITS = 4; // of a value whose error is not known
 const SMALLEST_PLAIN = -4; // powers of ten between which no exponent is written
 const LARGEST_PLAIN = 6;
+const GUARD_DIGITS = 1; // of an exact value, beyond the last digit of the measured one
+const MOST_DIGITS = 12;
+const ALONE_DIGITS = 8; // of an exact value beside no error
 const EXACT_DIGITS = 100; // as many as the language gives; a tie is decided long before
 
 /** mantissa times ten to the power exponent */
@@ -45,6 +48,29 @@ export function withReason(value: number, reason: string): string {
   return `${general(value, UNRESOLVED_DIGITS)}(${reason})`;
 }
 
+/** An independent value, to one digit more than a value with this error is printed. */
+export function exactValue(exact: number, error: number | null): string {
+  if (!error || exact === 0 || !Number.isFinite(exact) || !Number.isFinite(error)) {
+    return general(exact, ALONE_DIGITS);
+  }
+  const last = Math.floor(Math.log10(Math.abs(error))) - 1 - GUARD_DIGITS;
+  const power = Math.floor(Math.log10(Math.abs(exact)));
+  const size = Math.max(power, last + 2);
+  if (SMALLEST_PLAIN <= size && size < LARGEST_PLAIN) {
+    const decimals = Math.max(0, Math.min(-last, MOST_DIGITS - Math.max(power, 0)));
+    return fixed(decimal(exact.toExponential(EXACT_DIGITS)), decimals);
+  }
+  return scientific(exact, Math.min(Math.max(power - last, 0), MOST_DIGITS));
+}
+
+/** An integrated autocorrelation time, with its error where there is one. */
+export function autocorrelation(tau: number, error: number | null): string {
+  if (error !== null && error !== 0) {
+    return valueWithError(tau, error);
+  }
+  return tau < 100 ? general(tau, 2) : fixed(decimal(tau.toExponential(EXACT_DIGITS)), 0);
+}
+
 /** `value` in `digits` significant digits, without trailing zeros; an exponent only where it has to be. */
 export function general(value: number, digits: number): string {
   if (!Number.isFinite(value)) {
@@ -55,10 +81,17 @@ export function general(value: number, digits: number): string {
   }
   const exact = decimal(value.toExponential(EXACT_DIGITS));
   const power = roundedPower(exact, digits);
-  const scientific = power < SMALLEST_PLAIN || power >= digits;
-  const text = fixed(scientific ? shifted(exact, -power) : exact, digits - 1 - (scientific ? 0 : power));
-  const short = text.includes('.') ? text.replace(/\.?0+$/, '') : text;
-  return scientific ? `${short}e${exponentDigits(power)}` : short;
+  const short = (text: string): string => (text.includes('.') ? text.replace(/\.?0+$/, '') : text);
+  if (power < SMALLEST_PLAIN || power >= digits) {
+    return `${short(fixed(shifted(exact, -power), digits - 1))}e${exponentDigits(power)}`;
+  }
+  return short(fixed(exact, digits - 1 - power));
+}
+
+function scientific(value: number, decimals: number): string {
+  const exact = decimal(value.toExponential(EXACT_DIGITS));
+  const power = roundedPower(exact, decimals + 1);
+  return `${fixed(shifted(exact, -power), decimals)}e${exponentDigits(power)}`;
 }
 
 /** `value` with so many decimals and always with its sign, +0.4, unless that rounds to zero. */

@@ -51,6 +51,8 @@ export interface Curve {
   readonly dropped: number;
   readonly style: string;
   readonly plateau: Plateau | null;
+  /** of a wave function: the energy that it is drawn on */
+  readonly baseline: number;
 }
 
 export interface Report {
@@ -125,7 +127,8 @@ function readCurve(curve: Record<string, unknown>): Curve {
     exact: zip(x, list(curve['exact']), []),
     dropped: Math.max(x.length, y.length) - points.length,
     style: text(curve['style']) || 'correlator',
-    plateau: readPlateau(curve['plateau'])
+    plateau: readPlateau(curve['plateau']),
+    baseline: number(curve['baseline']) ?? 0
   };
 }
 

@@ -9,12 +9,13 @@ import { IRenderMimeRegistry, type IRenderMime } from '@jupyterlab/rendermime';
 import { Widget } from '@lumino/widgets';
 
 import { formula, html, type Typeset } from './elements.js';
+import { figureOf, panelsOf } from './figure.js';
 import { general } from './numbers.js';
 import { readPayload, RESULT_MIME, type Report } from './payload.js';
-import { figureOf } from './plot.js';
 import { resultTable } from './table.js';
 
 const RANK = 20; // before text/html, which carries the same result for where there is no extension
+const COUPLING_DIGITS = 8;
 const NAME_LENGTH = 12; // of a record: enough to tell records of a lifetime apart
 
 class ResultView extends Widget implements IRenderMime.IRenderer {
@@ -57,7 +58,7 @@ function content(report: Report, typeset: Typeset): HTMLElement[] {
   }
   if (report.couplings.length > 0) {
     const values = report.couplings.map(([name, value]) => {
-      return html('li', '', `${name} = ${value === null ? 'not a number' : general(value, 6)}`);
+      return html('li', '', `${name} = ${value === null ? 'not a number' : general(value, COUPLING_DIGITS)}`);
     });
     parts.push(labelled(html('ul', 'couplings', ...values), 'couplings'));
   }
@@ -68,7 +69,7 @@ function content(report: Report, typeset: Typeset): HTMLElement[] {
     parts.push(html('div', 'scroll', resultTable(report.rows, typeset)));
   }
   if (report.curves.length > 0) {
-    parts.push(html('div', 'figures', ...report.curves.map(curve => figureOf(curve, typeset))));
+    parts.push(html('div', 'figures', ...panelsOf(report.curves).map(panel => figureOf(panel, typeset))));
   }
   parts.push(...report.omissions.map(sentence => html('p', 'note', sentence)));
   if (report.facts.length > 0 || report.actionText) {

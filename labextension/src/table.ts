@@ -3,49 +3,64 @@
  */
 
 import { formula, html, type Typeset } from './elements.js';
-import { count, general, signed, valueWithError, withReason } from './numbers.js';
+import { autocorrelation, count, exactValue, signed, valueWithError, withReason } from './numbers.js';
 import type { Row } from './payload.js';
 
-const EXACT_DIGITS = 6;
-
 interface Column {
+  readonly name: keyof Omit<Cells, 'remark'>;
   readonly head: (Node | string)[];
   readonly meaning: string;
-  readonly cell: (row: Row) => string;
 }
 
-/** The value as it is printed in a paper, or the word that stands in its place. */
-export function printedValue(row: Row): string {
-  if (row.state === 'withheld') {
-    return 'withheld';
+/** A row in words and digits, empty where there is nothing to say; the Python half prints the same. */
+export interface Cells {
+  readonly value: string;
+  readonly exact: string;
+  readonly pull: string;
+  readonly tau: string;
+  readonly nEff: string;
+  readonly remark: string;
+}
+
+/** A number comes with its error or with words in the error's place; a withheld one is not shown at all. */
+export function cellsOf(row: Row): Cells {
+  if (row.state === 'withheld' || row.value === null) {
+    const remark = row.remark || 'no finite number came out';
+    return { value: 'withheld', exact: '', pull: '', tau: '', nEff: '', remark };
   }
-  if (row.value === null) {
-    return row.state === 'good' ? 'not a number' : row.state;
-  }
-  return row.state === 'unresolved' ? withReason(row.value, 'unresolved') : valueWithError(row.value, row.error);
+  const resolved = row.state === 'good';
+  return {
+    value: resolved ? valueWithError(row.value, row.error) : withReason(row.value, row.state),
+    exact: row.exact === null ? '' : exactValue(row.exact, resolved ? row.error : null),
+    pull: row.pull === null || !resolved ? '' : signed(row.pull, 1),
+    tau: row.tau === null ? '' : autocorrelation(row.tau, row.tauError),
+    nEff: row.nEff === null ? '' : count(row.nEff),
+    remark: row.remark
+  };
 }
 
 /** Only the columns that say something. */
 export function resultTable(rows: readonly Row[], typeset: Typeset): HTMLElement {
-  const columns = allColumns().filter(column => rows.some(row => column.cell(row) !== ''));
-  const remarks = rows.some(row => row.remark !== '');
-  const head = html('tr', '', heading(['quantity'], ''));
+  const lines = rows.map(cellsOf);
+  const columns = allColumns().filter(({ name }) => name === 'value' || lines.some(line => line[name] !== ''));
+  const remarks = lines.some(line => line.remark !== '');
+  const head = html('tr', '', heading(['observable'], ''));
   head.append(...columns.map(column => heading(column.head, column.meaning)));
   if (remarks) {
     head.append(heading(['remark'], ''));
   }
-  const widths = columns.map(column => Math.max(...rows.map(row => splitAtPoint(column.cell(row))[1].length)));
+  const widths = columns.map(({ name }) => Math.max(...lines.map(line => splitAtPoint(line[name])[1].length)));
   const body = html('tbody', '');
-  for (const row of rows) {
-    const label = html('th', 'quantity', formula(row.label, row.latex, typeset));
+  rows.forEach((row, i) => {
+    const cells = lines[i] ?? cellsOf(row);
+    const label = html('th', 'label', formula(row.label, row.latex, typeset));
     label.scope = 'row';
-    const line = html('tr', '', label);
-    line.append(...columns.map((column, i) => aligned(column.cell(row), widths[i] ?? 0)));
+    const line = html('tr', '', label, ...columns.map(({ name }, k) => aligned(cells[name], widths[k] ?? 0)));
     if (remarks) {
-      line.append(html('td', 'remark', row.remark));
+      line.append(html('td', 'remark', cells.remark));
     }
     body.append(line);
-  }
+  });
   const table = html('table', 'table', html('thead', '', head), body);
   if (rows.some(row => row.error !== null)) {
     table.append(html('caption', 'note', 'In brackets: one standard error, in units of the last digits.'));
@@ -55,27 +70,11 @@ export function resultTable(rows: readonly Row[], typeset: Typeset): HTMLElement
 
 function allColumns(): Column[] {
   return [
-    { head: ['value'], meaning: 'value and one standard error', cell: printedValue },
-    {
-      head: ['exact'],
-      meaning: 'independent solution at the same lattice spacing',
-      cell: row => (row.exact === null ? '' : general(row.exact, EXACT_DIGITS))
-    },
-    {
-      head: ['pull'],
-      meaning: '(value \u2212 exact) / error',
-      cell: row => (row.pull === null ? '' : signed(row.pull, 1))
-    },
-    {
-      head: ['\u03c4'],
-      meaning: 'integrated autocorrelation time, in draws',
-      cell: row => (row.tau === null ? '' : valueWithError(row.tau, row.tauError))
-    },
-    {
-      head: ['n', html('sub', '', 'eff')],
-      meaning: 'effective number of samples',
-      cell: row => (row.nEff === null ? '' : count(row.nEff))
-    }
+    { name: 'value', head: ['value'], meaning: 'value and one standard error' },
+    { name: 'exact', head: ['exact'], meaning: 'independent solution at the same lattice spacing' },
+    { name: 'pull', head: ['pull'], meaning: '(value \u2212 exact) / error' },
+    { name: 'tau', head: ['\u03c4'], meaning: 'integrated autocorrelation time, in draws' },
+    { name: 'nEff', head: ['n', html('sub', '', 'eff')], meaning: 'effective number of samples' }
   ];
 }
 

@@ -29,10 +29,16 @@ from playwright.sync_api import Browser, ConsoleMessage, Locator, Page, expect, 
 ROOT = Path(__file__).parents[2]
 START_SECONDS = 60
 CHROMIUM_NAMES = ("chromium", "chromium-browser", "google-chrome")
-CHROMIUM_FLAGS = (
-    "--no-sandbox --disable-gpu --disable-quic --no-first-run --disable-background-networking "
-    "--disable-component-update --disable-sync --disable-dev-shm-usage"
-).split()
+CHROMIUM_FLAGS = [
+    "--no-sandbox",
+    "--disable-gpu",
+    "--disable-quic",
+    "--no-first-run",
+    "--disable-background-networking",
+    "--disable-component-update",
+    "--disable-sync",
+    "--disable-dev-shm-usage",
+]
 RUN_ALL = """limit => {
     const run = async () => {
         const session = window.jupyterapp.shell.currentWidget.sessionContext;
@@ -129,7 +135,10 @@ def laboratory(laboratory_python: Path, tmp_path_factory: pytest.TempPathFactory
     }
     arguments = ["--no-browser", "--allow-root", "--ip=127.0.0.1", f"--port={port}", "--ServerApp.port_retries=0"]
     arguments += [f"--IdentityProvider.token={token}", f"--ServerApp.root_dir={folder}"]
-    arguments += ["--LabApp.expose_app_in_browser=True", "--LabApp.check_for_updates_class=jupyterlab.NeverCheckForUpdate"]
+    arguments += [
+        "--LabApp.expose_app_in_browser=True",
+        "--LabApp.check_for_updates_class=jupyterlab.NeverCheckForUpdate",
+    ]
     log = home / "jupyterlab.log"
     with log.open("w") as stream:
         server = subprocess.Popen(
@@ -204,7 +213,9 @@ def chromium() -> str:
     if found := next(filter(None, map(shutil.which, CHROMIUM_NAMES)), None):
         return found
     if shutil.which("apt-get") is None or os.geteuid() != 0:
-        pytest.fail("The browser tests need Chromium. Install it (Debian: apt-get install chromium) and run them again.")
+        pytest.fail(
+            "The browser tests need Chromium. Install it (Debian: apt-get install chromium) and run them again."
+        )
     environment = {**os.environ, "DEBIAN_FRONTEND": "noninteractive"}
     for arguments in (["update"], ["install", "-y", "--no-install-recommends", "chromium"]):
         run(["apt-get", "-qq", *arguments], env=environment)

@@ -13,8 +13,9 @@ from quarterturn.reports.report import RESULT_MIME, Curve, Report, Row
 
 pytestmark = pytest.mark.xdist_group("bundle")
 
-THEMES = ("JupyterLab Light", "JupyterLab Dark")
+INK = {"JupyterLab Light": "rgba(0, 0, 0, 0.87)", "JupyterLab Dark": "rgb(255, 255, 255)"}
 TIMES = tuple(0.1 * i for i in range(60))
+PLACES = tuple(0.1 * i - 4 for i in range(81))
 DECAY = tuple(0.3058 * math.exp(-1.2 * t) for t in TIMES)
 
 REPORT = Report(
@@ -51,7 +52,30 @@ REPORT = Report(
             style="gap",
             plateau=(1.21, 0.012, 0.8, 1.9),
         ),
-        Curve("history of <q^2>", "", "draw", tuple(range(2000)), tuple(math.sin(i * i) for i in range(2000)), style="history"),
+        *(
+            Curve(
+                "<q^2>",
+                "",
+                "draw",
+                tuple(range(400)),
+                tuple(0.3 + 0.1 * math.sin(i * i + chain) for i in range(400)),
+                style="history",
+            )
+            for chain in range(2)
+        ),
+        Curve("V(q)", "", "q", PLACES, tuple(q**2 / 2 + 0.1 * q**4 for q in PLACES), style="potential"),
+        *(
+            Curve(
+                f"psi_{n}",
+                "",
+                "q",
+                PLACES,
+                tuple(q**n * math.exp(-0.6 * q**2) for q in PLACES),
+                style="wave",
+                baseline=0.56 + 1.2 * n,
+            )
+            for n in range(2)
+        ),
     ),
     warnings=("the lattice artefact, about 0.4 %, is larger than the statistical error of <q^2>.",),
     facts=(("method", "Hamiltonian moves, 16 chains"), ("draws", "16 x 2000")),
@@ -71,7 +95,7 @@ def left_edges_of_points(table: Locator, column: int) -> set[int]:
     return {round(box["x"] + box["width"]) for box in (w.bounding_box() for w in wholes.all()) if box}
 
 
-@pytest.mark.parametrize("theme", THEMES)
+@pytest.mark.parametrize("theme", INK)
 def test_a_saved_result_is_drawn_in_words_numbers_and_pictures(
     open_notebook: Callable[[list[Any]], Any], theme: str, tmp_path: Path
 ) -> None:
@@ -92,11 +116,14 @@ def test_a_saved_result_is_drawn_in_words_numbers_and_pictures(
     expect(result.locator("mjx-container, .katex").first).to_be_visible(timeout=30_000)
     notebook.picture(tmp_path / "result.png")
     assert len(left_edges_of_points(result.locator("table"), 1)) == 1
-    expect(result.locator("svg")).to_have_count(3)
+    expect(result.locator("svg")).to_have_count(4)
+    expect(result.locator("svg").nth(2).locator("polyline")).to_have_count(2)
+    expect(result.locator("svg").nth(3).locator("polyline")).to_have_count(3)
     expect(result.locator("svg").first.locator("circle")).to_have_count(len(TIMES))
     expect(result.locator(".qt-Result-record")).to_have_text("record 3f2a9c41be07")
     ink = result.evaluate("node => getComputedStyle(node).color")
-    assert result.locator("circle").first.evaluate("node => getComputedStyle(node).fill") == ink
+    exact = result.locator(".qt-Plot-exact").evaluate("node => getComputedStyle(node).stroke")
+    assert exact == ink == INK[theme]
 
 
 def test_the_axis_is_switched_from_the_keyboard(open_notebook: Callable[[list[Any]], Any]) -> None:
@@ -127,7 +154,7 @@ HOSTILE = '<img src=x onerror="window.broken = true"><script>window.broken = tru
                 "rows": [{"label": "a", "value": None, "error": None}],
                 "curves": [{"label": "c", "x": [0, 1, 2], "y": [None, -1, 1e308], "error": [None, 1e308, -1]}],
             },
-            "not a number",
+            "no finite number came out",
         ),
         ({"version": 1, "curves": [{"x": [*range(200_000)], "y": [0.5] * 200_000, "style": "history"}]}, "result"),
         ({"version": 1, "title": HOSTILE, "latex": HOSTILE, "rows": [{"label": HOSTILE, "latex": HOSTILE}]}, "<img"),
