@@ -20,7 +20,7 @@ def notation_of(action: Action) -> str:
     if action.couplings:
         lines.append(", ".join(f"{name} = {c.default!r}" for name, c in action.couplings.items()))
     if action.measurements:
-        lines.append("measure " + ", ".join(m.source for m in action.measurements))
+        lines.append("measure " + ", ".join(getattr(m, "source", "") or m.label for m in action.measurements))
     return "\n".join(lines)
 
 

@@ -15,7 +15,7 @@ from quarterturn.estimates.correlators import GapResult
 from quarterturn.estimates.estimate import UNRESOLVED, CurveEstimate, Estimate
 from quarterturn.reports.bundle import mimebundle
 from quarterturn.reports.report import Curve, Report, Row
-from quarterturn.reports.text import render as render_text
+from quarterturn.reports.text import text as render_text
 from quarterturn.runs.settings import Settings
 
 

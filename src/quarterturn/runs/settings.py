@@ -133,11 +133,10 @@ def _geometry(action: Action, asked: Mapping[str, float]) -> tuple[int, float]:
             raise RequestError(f"{word} must be positive, got {value:g}")
     if sites is not None and sites != int(sites):
         raise RequestError(f"sites must be a whole number, got {sites:g}")
-    if given is not None:
-        if spacing is None and (beta is None or sites is None):
-            spacing = given.spacing
-        elif beta is None and sites is None:
-            beta = given.beta
+    if given is not None and not asked:
+        return given.sites, given.spacing
+    if given is not None and len(asked) == 1:
+        beta, spacing = (given.beta, spacing) if spacing is not None else (beta, given.spacing)
     if sites is None:
         assert beta is not None and spacing is not None
         sites = round(beta / spacing)

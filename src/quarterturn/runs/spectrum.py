@@ -22,7 +22,7 @@ from quarterturn.records.canonical import record_name
 from quarterturn.records.schema import validate
 from quarterturn.reports.bundle import mimebundle
 from quarterturn.reports.report import Curve, Report, Row
-from quarterturn.reports.text import render as render_text
+from quarterturn.reports.text import text as render_text
 from quarterturn.runs.exact import ENERGY, ExactColumn
 from quarterturn.runs.recording import base_record
 from quarterturn.runs.settings import Settings, examined, resolve, split
