@@ -80,7 +80,7 @@ function wordsFor(panel: Panel, kind: AxisKind): string {
     parts.push(...wordsForPoints(first, kind));
   } else if (panel.kind === 'waves') {
     const waves = panel.curves.filter(({ style }) => style === 'wave').map(({ label }) => label);
-    parts.push(`Wave functions, each on its energy: ${waves.join(', ')}. Dark line: potential.`);
+    parts.push(`Wave functions, each on its energy: ${waves.join(', ')}. Thick line: potential.`);
   } else if (panel.curves.length > 1) {
     parts.push(`${panel.curves.length} chains.`);
   }

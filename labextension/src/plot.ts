@@ -23,6 +23,7 @@ const MARKS_ACROSS = 6;
 const MARKS_UP = 5;
 const ROOM = 0.04; // of the height, above and below the data
 const WAVE_FILL = 0.8; // height of the largest wave function over the distance of levels
+const FAR = 1e4; // off the page, and still a number that every browser can draw
 const SERIES = 3; // colours, used in turn
 
 export type AxisKind = 'linear' | 'logarithmic';
@@ -156,15 +157,19 @@ function pointLayers(curves: readonly Curve[], frame: Frame): SVGElement[] {
   ]);
 }
 
+/** In a window of their own, which cuts off what leaves the frame: the wall of a potential, not its levels. */
 function lineLayers(curves: readonly Curve[], frame: Frame): SVGElement[] {
   let series = 0;
-  return curves.map(curve => {
+  const lines = curves.map(curve => {
     if (curve.style === 'potential') {
       return line(curve.points, frame, 'qt-Plot-potential');
     }
     series += 1;
     return line(curve.points, frame, `qt-Plot-line qt-mod-series${((series - 1) % SERIES) + 1}`);
   });
+  const [top, height] = [TOP - 4, HEIGHT - BOTTOM - TOP + 8];
+  const window = { x: 0, y: top, width: WIDTH, height, viewBox: `0 ${top} ${WIDTH} ${height}`, overflow: 'hidden' };
+  return [svg('svg', window, ...lines)];
 }
 
 function fit(plateau: Plateau, frame: Frame): SVGElement[] {
@@ -194,9 +199,10 @@ function markers(points: readonly Point[], frame: Frame): SVGElement {
 }
 
 function line(points: readonly Point[], frame: Frame, name: string): SVGElement {
-  const drawn = envelope(onAxis(points, frame.kind), MOST_BINS)
-    .filter(({ y }) => frame.y(y) > -HEIGHT && frame.y(y) < 2 * HEIGHT) // the rest of a steep wall is off the page
-    .map(({ x, y }) => `${frame.x(x).toFixed(1)},${inside(frame.y(y)).toFixed(1)}`);
+  const drawn = envelope(onAxis(points, frame.kind), MOST_BINS).map(({ x, y }) => {
+    const height = Math.min(FAR, Math.max(-FAR, frame.y(y)));
+    return `${frame.x(x).toFixed(1)},${height.toFixed(1)}`;
+  });
   return svg('polyline', { class: name, points: drawn.join(' ') });
 }
 

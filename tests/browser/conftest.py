@@ -29,16 +29,10 @@ from playwright.sync_api import Browser, ConsoleMessage, Locator, Page, expect, 
 ROOT = Path(__file__).parents[2]
 START_SECONDS = 60
 CHROMIUM_NAMES = ("chromium", "chromium-browser", "google-chrome")
-CHROMIUM_FLAGS = [
-    "--no-sandbox",
-    "--disable-gpu",
-    "--disable-quic",
-    "--no-first-run",
-    "--disable-background-networking",
-    "--disable-component-update",
-    "--disable-sync",
-    "--disable-dev-shm-usage",
-]
+CHROMIUM_FLAGS = (
+    *("--no-sandbox", "--disable-gpu", "--disable-quic", "--no-first-run", "--disable-background-networking"),
+    *("--disable-component-update", "--disable-sync", "--disable-dev-shm-usage"),
+)
 RUN_ALL = """limit => {
     const run = async () => {
         const session = window.jupyterapp.shell.currentWidget.sessionContext;
