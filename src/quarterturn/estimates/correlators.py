@@ -177,7 +177,9 @@ def gap(
     gradient = average.slope @ correlator.gradients[picked]
     statistical = as_estimate(average.energy, gamma_method(samples, gradient), gradient)
     error = float(np.hypot(statistical.error or 0.0, average.systematic))
-    remark = "; ".join(words for words in (statistical.remark, _near_zero(average, error), _poor(average)) if words)
+    remark = "; ".join(
+        words for words in (statistical.remark, _near_zero(average.energy, error, period), _poor(average)) if words
+    )
     estimate = replace(statistical, error=error, remark=remark, exact=exact)
     return GapResult(estimate, average.fits, shown, statistical.error or 0.0, average.systematic)
 
@@ -261,8 +263,12 @@ def _thinned(times: NDArray[np.int_], most: int) -> NDArray[np.int_]:
     return times[:: max(1, -(-len(times) // most))]
 
 
-def _near_zero(average: AveragedFits, error: float) -> str:
-    return "" if average.energy > 2 * error else "compatible with zero, and an energy is positive: no Gaussian error"
+def _near_zero(energy: float, error: float, period: float | None) -> str:
+    """Words where the energy is within two sigma of zero; the cosh of a small energy knows its square only."""
+    flat = period is not None and energy * period / 2 < 1
+    if energy > (4 if flat else 2) * error:
+        return ""
+    return "compatible with zero, and an energy is positive: no Gaussian error"
 
 
 def _poor(average: AveragedFits) -> str:
