@@ -6,7 +6,7 @@ from typing import Any
 from quarterturn.errors import display_width
 from quarterturn.reports.cells import one_line
 from quarterturn.reports.latex import escaped
-from quarterturn.reports.markup import definitions, formula, framed, saying, words
+from quarterturn.reports.markup import definitions, formula, framed, saying, verbatim, words
 from quarterturn.reports.text import GAP, SHORT_NAME, WIDTH, padded, wrapped
 
 MARKS = {"fatal": "The integral diverges:", "note": "Note:"}  # any other severity is its own word
@@ -43,10 +43,11 @@ class ActionCard:
     def html(self) -> str:
         """For a page; self-contained."""
         pairs = [
-            ("real time", formula(self.real_time, self.canonical) if self.real_time else ""),
+            ("real time", formula(self.real_time, "") if self.real_time else ""),
             ("imaginary time", formula(self.imaginary_time, "") if self.imaginary_time else ""),
             ("lattice", words(self.lattice)),
             ("measured", "<br>".join(f"<code>{words(label)}</code>" for label in self.measurements)),
+            ("notation", verbatim(self.canonical) if self.canonical else ""),
         ]
         says = [
             ("qt-note" if severity == "note" else "qt-warning", _mark(severity), message)

@@ -51,10 +51,7 @@ def cells(row: Row) -> Cells:
         reason = one_line(row.remark) or "no finite number came out"
         return Cells(label, row.latex, "withheld", remark=reason)
     resolved = row.state == "good"
-    if resolved:
-        value = format_value_error(row.value, row.error)
-    else:
-        value = format_unresolved(row.value, row.state)
+    value = format_value_error(row.value, row.error) if resolved else format_unresolved(row.value, row.state)
     return Cells(
         label,
         row.latex,

@@ -4,7 +4,7 @@ Self-contained: style and pictures are inside, nothing is fetched, nothing runs.
 """
 
 from quarterturn.reports.cells import HEADINGS, NUMBERS, Cells, cells, columns_in_use, coupling_text, curve_text
-from quarterturn.reports.markup import definitions, formula, framed, head_width, number, saying, words
+from quarterturn.reports.markup import definitions, formula, framed, head_width, number, saying, verbatim, words
 from quarterturn.reports.plots import Picture
 from quarterturn.reports.report import Report
 from quarterturn.reports.text import SHORT_NAME
@@ -37,13 +37,22 @@ def _title(report: Report) -> str:
 
 
 def _table(lines: list[Cells]) -> str:
+    """One line a number; a remark has a line of its own below, so that the table stays narrow."""
     if not lines:
         return ""
-    columns = columns_in_use(lines)
+    columns = [name for name in columns_in_use(lines) if name != "remark"]
     widths = {name: head_width(line[name] for line in lines) for name in columns if name in NUMBERS}
     heading = "".join(_heading(name) for name in columns)
-    rows = "".join(f"<tr>{''.join(_cell(line, name, widths) for name in columns)}</tr>" for line in lines)
-    return f"<table><thead><tr>{heading}</tr></thead><tbody>{rows}</tbody></table>"
+    rows = "".join(_row(line, columns, widths) for line in lines)
+    table = f"<table><thead><tr>{heading}</tr></thead><tbody>{rows}</tbody></table>"
+    return f'<div class="qt-wide">{table}</div>'
+
+
+def _row(line: Cells, columns: list[str], widths: dict[str, int]) -> str:
+    row = f"<tr>{''.join(_cell(line, name, widths) for name in columns)}</tr>"
+    if not line.remark:
+        return row
+    return f'{row}<tr class="qt-remark"><td></td><td colspan="{len(columns) - 1}">{words(line.remark)}</td></tr>'
 
 
 def _heading(column: str) -> str:
@@ -54,8 +63,6 @@ def _heading(column: str) -> str:
 def _cell(line: Cells, column: str, widths: dict[str, int]) -> str:
     if column == "label":
         return f'<th scope="row">{formula(line.latex, line.label)}</th>'
-    if column == "remark":
-        return f'<td class="qt-remark">{words(line.remark)}</td>'
     return f"<td>{number(line[column], widths[column])}</td>"
 
 
@@ -67,8 +74,9 @@ def _pictures(pictures: tuple[Picture, ...]) -> str:
 def _method(report: Report) -> str:
     facts = [(name, words(fact)) for name, fact in report.facts]
     curves = [("curve", words(line)) for line in curve_text(report)]
-    action = [("action", formula(report.latex, report.action_text))] if report.latex or report.action_text else []
-    listed = definitions([*action, *facts, *curves])
+    action = [("action", formula(report.latex, ""))] if report.latex else []
+    notation = [("notation", verbatim(report.action_text))] if report.action_text else []
+    listed = definitions([*action, *notation, *facts, *curves])
     return f"<details><summary>action and method</summary>{listed}</details>" if listed else ""
 
 

@@ -5,7 +5,16 @@ Withheld and unresolved numbers keep their words; warnings follow the table, so 
 
 import re
 
-from quarterturn.reports.cells import NUMBERS, SCIENTIFIC, Cells, cells, columns_in_use, coupling_text, head_length, one_line
+from quarterturn.reports.cells import (
+    NUMBERS,
+    SCIENTIFIC,
+    Cells,
+    cells,
+    columns_in_use,
+    coupling_text,
+    head_length,
+    one_line,
+)
 from quarterturn.reports.report import Report
 from quarterturn.reports.text import SHORT_NAME
 
@@ -53,7 +62,7 @@ def escaped(text: str) -> str:
 
 def _tabular(lines: list[Cells]) -> str:
     columns = columns_in_use(lines)
-    layout = {name: "l" for name in columns}
+    layout = dict.fromkeys(columns, "l")
     layout.update({name: "r@{}l" for name in columns if name in NUMBERS})
     if "remark" in columns:
         layout["remark"] = f"p{{{REMARK_WIDTH}}}"

@@ -1,4 +1,4 @@
-"""Pieces of HTML that reports and action cards share: escaped words, formulas, aligned numbers, the frame with its style.
+"""Pieces of HTML that reports and action cards share: escaped words, formulas, aligned numbers, the frame.
 
 Every text that comes from outside passes `words`; no other door leads into the page. The markup also reads without
 its style, as it stands in a notebook that is not trusted, where style and SVG elements are taken out.
@@ -20,8 +20,14 @@ def words(text: str) -> str:
     return html.escape(one_line(text), quote=True)
 
 
+def verbatim(text: str) -> str:
+    """A text of several lines, escaped and set as it was written."""
+    lines = "\n".join("".join(letter if letter.isprintable() else " " for letter in line) for line in text.splitlines())
+    return f"<pre>{html.escape(lines, quote=True)}</pre>"
+
+
 def formula(latex: str, plain: str) -> str:
-    """A formula in TeX, and the same in `plain` notation for pages that typeset nothing; one of the two may be empty."""
+    """A formula in TeX, and in `plain` notation for pages that typeset nothing; one of the two may be empty."""
     tex, note = words(latex.replace("$", r"\$")), words(plain)
     if not latex or not plain:
         return f"<span>${tex}$</span>" if latex else f"<code>{note}</code>"
@@ -62,9 +68,9 @@ def saying(lines: Sequence[tuple[str, str, str]]) -> str:
 
 
 def definitions(pairs: Iterable[tuple[str, str]]) -> str:
-    """A list of names and what they stand for; the second of each pair is markup already."""
-    items = "".join(f"<dt>{words(name)}</dt><dd>{markup}</dd>" for name, markup in pairs)
-    return f"<dl>{items}</dl>" if items else ""
+    """Names and what they stand for, in two columns; the second of each pair is markup already."""
+    rows = "".join(f'<tr><th scope="row">{words(name)}</th><td>{markup}</td></tr>' for name, markup in pairs)
+    return f'<table class="qt-facts"><tbody>{rows}</tbody></table>' if rows else ""
 
 
 def framed(*parts: str) -> str:
