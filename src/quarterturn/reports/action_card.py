@@ -18,8 +18,8 @@ class ActionCard:
     """An action and its turned form, as plain data."""
 
     name: str
-    real_time: str  # the action as written, in LaTeX without dollar signs
-    imaginary_time: str  # the Euclidean action, in LaTeX without dollar signs
+    latex: str  # the action as written, in LaTeX without dollar signs
+    euclidean_latex: str  # the Euclidean action, in LaTeX without dollar signs
     canonical: str  # canonical notation
     findings: tuple[tuple[str, str, str], ...]  # (severity, topic, message)
     couplings: tuple[tuple[str, float, str], ...]  # (name, default, dimension in words; empty where undetermined)
@@ -27,68 +27,74 @@ class ActionCard:
     lattice: str
     digest: str
 
-    def text(self) -> str:
-        """For a terminal, without a trailing line break."""
-        body = ["    " + _printable(line) for line in self.canonical.splitlines()]
-        parts = [
-            f"action {one_line(self.name)}",
-            "\n".join(body),
-            "\n".join(_columns([("lattice", self.lattice), *(("measured", label) for label in self.measurements)])),
-            "\n".join(self._coupling_lines()),
-            "\n".join(_sentence(severity, message) for severity, _, message in self.findings),
-            f"digest{GAP}{self.digest[:SHORT_NAME]}" if self.digest else "",
-        ]
-        return "\n\n".join(part for part in parts if part)
 
-    def html(self) -> str:
-        """For a page; self-contained."""
-        pairs = [
-            ("real time", formula(self.real_time, "") if self.real_time else ""),
-            ("imaginary time", formula(self.imaginary_time, "") if self.imaginary_time else ""),
-            ("lattice", words(self.lattice)),
-            ("measured", "<br>".join(f"<code>{words(label)}</code>" for label in self.measurements)),
-            ("notation", verbatim(self.canonical) if self.canonical else ""),
-        ]
-        says = [
-            ("qt-note" if severity == "note" else "qt-warning", _mark(severity), message)
-            for severity, _, message in self.findings
-        ]
-        digest = words(self.digest)
-        return framed(
-            f'<p class="qt-title"><strong>action {words(self.name)}</strong></p>',
-            definitions([pair for pair in pairs if pair[1]]),
-            self._coupling_table(),
-            saying(says),
-            f'<p class="qt-quiet">digest <code title="{digest}">{digest[:SHORT_NAME]}</code></p>' if digest else "",
-        )
+def render_text(card: ActionCard) -> str:
+    """For a terminal, without a trailing line break."""
+    body = ["    " + _printable(line) for line in card.canonical.splitlines()]
+    parts = [
+        f"action {one_line(card.name)}",
+        "\n".join(body),
+        "\n".join(_columns([("lattice", card.lattice), *(("measured", label) for label in card.measurements)])),
+        "\n".join(_coupling_lines(card)),
+        "\n".join(_sentence(severity, message) for severity, _, message in card.findings),
+        f"digest{GAP}{card.digest[:SHORT_NAME]}" if card.digest else "",
+    ]
+    return "\n\n".join(part for part in parts if part)
 
-    def latex(self) -> str:
-        """LaTeX source."""
-        parts = [f"\\noindent\\textbf{{action {escaped(self.name)}}}"]
-        parts += [f"\\[ {one_line(tex)} \\]" for tex in (self.real_time, self.imaginary_time) if tex]
-        parts += [
-            f"\\noindent {escaped(f'{name} = {value:.8g}, dimension {dimension or UNKNOWN_DIMENSION}')}"
-            for name, value, dimension in self.couplings
-        ]
-        parts += [f"\\noindent {escaped(f'{_mark(severity)} {message}')}" for severity, _, message in self.findings]
-        return "\n\n".join(parts) + "\n"
 
-    def mimebundle(self) -> tuple[dict[str, Any], dict[str, Any]]:
-        """The data and the metadata of an output that shows this card."""
-        return {"text/plain": self.text(), "text/html": self.html(), "text/latex": self.latex()}, {}
+def render_html(card: ActionCard) -> str:
+    """For a page; self-contained."""
+    pairs = [
+        ("real time", formula(card.latex, "") if card.latex else ""),
+        ("imaginary time", formula(card.euclidean_latex, "") if card.euclidean_latex else ""),
+        ("lattice", words(card.lattice)),
+        ("measured", "<br>".join(f"<code>{words(label)}</code>" for label in card.measurements)),
+        ("notation", verbatim(card.canonical) if card.canonical else ""),
+    ]
+    says = [
+        ("qt-note" if severity == "note" else "qt-warning", _mark(severity), message)
+        for severity, _, message in card.findings
+    ]
+    digest = words(card.digest)
+    return framed(
+        f'<p class="qt-title"><strong>action {words(card.name)}</strong></p>',
+        definitions([pair for pair in pairs if pair[1]]),
+        _coupling_table(card),
+        saying(says),
+        f'<p class="qt-quiet">digest <code title="{digest}">{digest[:SHORT_NAME]}</code></p>' if digest else "",
+    )
 
-    def _coupling_lines(self) -> list[str]:
-        pairs = [(f"{name} = {value:.8g}", dimension or UNKNOWN_DIMENSION) for name, value, dimension in self.couplings]
-        return _columns([("coupling", "dimension"), *pairs]) if pairs else []
 
-    def _coupling_table(self) -> str:
-        rows = "".join(
-            f'<tr><th scope="row"><code>{words(name)} = {value:.8g}</code></th>'
-            f"<td>{words(dimension or UNKNOWN_DIMENSION)}</td></tr>"
-            for name, value, dimension in self.couplings
-        )
-        heading = '<th scope="col">coupling</th><th scope="col">dimension</th>'
-        return f"<table><thead><tr>{heading}</tr></thead><tbody>{rows}</tbody></table>" if rows else ""
+def render_latex(card: ActionCard) -> str:
+    """LaTeX source."""
+    parts = [f"\\noindent\\textbf{{action {escaped(card.name)}}}"]
+    parts += [f"\\[ {one_line(tex)} \\]" for tex in (card.latex, card.euclidean_latex) if tex]
+    parts += [
+        f"\\noindent {escaped(f'{name} = {value:.8g}, dimension {dimension or UNKNOWN_DIMENSION}')}"
+        for name, value, dimension in card.couplings
+    ]
+    parts += [f"\\noindent {escaped(f'{_mark(severity)} {message}')}" for severity, _, message in card.findings]
+    return "\n\n".join(parts) + "\n"
+
+
+def action_bundle(card: ActionCard) -> tuple[dict[str, Any], dict[str, Any]]:
+    """The data and the metadata of an output that shows `card`."""
+    return {"text/plain": render_text(card), "text/html": render_html(card), "text/latex": render_latex(card)}, {}
+
+
+def _coupling_lines(card: ActionCard) -> list[str]:
+    pairs = [(f"{name} = {value:.8g}", dimension or UNKNOWN_DIMENSION) for name, value, dimension in card.couplings]
+    return _columns([("coupling", "dimension"), *pairs]) if pairs else []
+
+
+def _coupling_table(card: ActionCard) -> str:
+    rows = "".join(
+        f'<tr><th scope="row"><code>{words(name)} = {value:.8g}</code></th>'
+        f"<td>{words(dimension or UNKNOWN_DIMENSION)}</td></tr>"
+        for name, value, dimension in card.couplings
+    )
+    heading = '<th scope="col">coupling</th><th scope="col">dimension</th>'
+    return f"<table><thead><tr>{heading}</tr></thead><tbody>{rows}</tbody></table>" if rows else ""
 
 
 def _mark(severity: str) -> str:

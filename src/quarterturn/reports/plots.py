@@ -11,6 +11,7 @@ import warnings
 from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
+from typing import Any
 
 import matplotlib
 from matplotlib.backends.backend_agg import FigureCanvasAgg
@@ -121,11 +122,11 @@ def _style() -> Iterator[None]:
 
     A letter that no font has is drawn as a box; that is no reason for a warning in somebody's notebook.
     """
-    defaults = {
+    settings: dict[Any, Any] = {
         key: value
         for key, value in matplotlib.rcParamsDefault.items()
         if key.partition(".")[0] in OURS or key.startswith(("xtick", "ytick"))
     }
-    with warnings.catch_warnings(), matplotlib.rc_context({**defaults, **STYLE}):
+    with warnings.catch_warnings(), matplotlib.rc_context({**settings, **STYLE}):
         warnings.filterwarnings("ignore", message="Glyph .* missing from")
         yield
