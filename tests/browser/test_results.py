@@ -126,7 +126,7 @@ def test_a_saved_result_is_drawn_in_words_numbers_and_pictures(
     assert exact == ink == INK[theme]
 
 
-def test_the_axis_is_switched_from_the_keyboard(open_notebook: Callable[[list[Any]], Any]) -> None:
+def test_the_axis_is_switched_from_the_keyboard(open_notebook: Callable[[list[Any]], Any], tmp_path: Path) -> None:
     notebook = open_notebook([cell_with(REPORT.payload())])
     figure = notebook.result(0).locator("figure").first
     button = figure.get_by_role("button")
@@ -136,6 +136,7 @@ def test_the_axis_is_switched_from_the_keyboard(open_notebook: Callable[[list[An
         notebook.page.keyboard.press(key)
         expect(button).to_have_text(after)
         expect(button).to_be_focused()
+        notebook.picture(tmp_path / f"{key}.png")
 
 
 HOSTILE = '<img src=x onerror="window.broken = true"><script>window.broken = true</script>'
