@@ -180,3 +180,10 @@ def test_operators_that_are_the_same_are_withheld_with_the_reason(simulated):
     same = np.broadcast_to(np.arange(len(t)), (2, 2, len(t)))
     result = gap(samples, same, t, period)
     assert result.estimate.state == "withheld" and "can't be told apart" in result.estimate.remark
+
+
+def test_a_fine_mesh_is_thinned_and_still_covers(simulated):
+    """Eighty times, of which sixteen are fitted: coverage as above, to the cautious side."""
+    pulls = np.abs(pulls_of(simulated, 80, 40, {1.0: 1.0, 3.0: 0.3}, sites=160, a=0.1))
+    assert np.mean(pulls < 1) >= simulated.binomial_limits(40, 0.6827, FALSE_ALARM)[0]
+    assert np.mean(pulls < 2) >= simulated.binomial_limits(40, 0.9545, FALSE_ALARM)[0]

@@ -6,7 +6,7 @@ Golub and Pereyra, SIAM J. Numer. Anal. 10 (1973) 413, with Kaufman's Jacobian, 
 Levenberg and Marquardt's method. All windows with the same number of states advance together.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 
 import numpy as np
 from numpy.typing import NDArray
@@ -34,6 +34,10 @@ class ExponentialFits:
     prior_error: Array  # (n,): share of the prior's width in the error of E_1
     parameters: Array  # (n,): how many parameters the data determine, 2 k without a prior
     arrived: NDArray[np.bool_]  # (n,): the search converged and the states are distinct
+
+    def part(self, rows: slice) -> "ExponentialFits":
+        """Some of the windows."""
+        return ExponentialFits(*(getattr(self, column.name)[rows] for column in fields(self)))
 
 
 @dataclass(frozen=True)
@@ -250,11 +254,9 @@ def _slope(problem: _Problem, point: _Point) -> tuple[Array, Array, Array]:
 
 
 def _take(point: _Point, chosen: NDArray[np.bool_]) -> _Point:
-    return _Point(
-        *(getattr(point, name)[chosen] for name in ("logs", "chi2", "residual", "jacobian", "amplitudes", "distinct"))
-    )
+    return _Point(*(getattr(point, column.name)[chosen] for column in fields(_Point)))
 
 
 def _overwrite(point: _Point, chosen: NDArray[np.bool_], other: _Point) -> None:
-    for name in ("logs", "chi2", "residual", "jacobian", "amplitudes", "distinct"):
-        getattr(point, name)[chosen] = getattr(other, name)
+    for column in fields(_Point):
+        getattr(point, column.name)[chosen] = getattr(other, column.name)

@@ -10,7 +10,7 @@ that, and chi^2 carries the factor (n - p - 2)/(n - 1) for p times and n blocks 
 covariance unbiased (Hartlap, Simon and Schneider, Astron. Astrophys. 464 (2007) 399).
 """
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, fields, replace
 
 import numpy as np
 
@@ -134,16 +134,12 @@ def _fitted(
     first = np.array([t[i] for i, _ in spans])
     lowest = np.array([_decay(t[i:j], value[i:j]) for i, j in spans])
     prior = prior_of(t)
-    best: ExponentialFits | None = None
+    widths = [lowest, np.full(len(spans), np.exp(prior.centre))][: 1 if states == 1 else 2]
     ladder = np.arange(states, dtype=np.float64)
-    for width in (lowest, np.full(len(spans), np.exp(prior.centre))):
-        start = lowest[:, None] + width[:, None] * ladder
-        found = fit_exponentials(t, value, whitening, first, start, period, prior)
-        best = found if best is None else _better(best, found)
-        if states == 1:
-            break
-    assert best is not None
-    return best
+    start = np.concatenate([lowest[:, None] + width[:, None] * ladder for width in widths])
+    tries = len(widths)
+    found = fit_exponentials(t, value, np.tile(whitening, (tries, 1, 1)), np.tile(first, tries), start, period, prior)
+    return found if tries == 1 else _better(found.part(slice(0, len(spans))), found.part(slice(len(spans), None)))
 
 
 def prior_of(t: Array) -> Prior:
@@ -173,19 +169,11 @@ def _better(one: ExponentialFits, other: ExponentialFits) -> ExponentialFits:
     """Fit by fit, the one that arrived at the smaller chi^2."""
     take = (other.arrived & ~one.arrived) | ((other.arrived == one.arrived) & (other.chi2 < one.chi2))
 
-    def merged(a: Array, b: Array) -> Array:
-        return np.where(take.reshape(-1, *[1] * (a.ndim - 1)), b, a)
-
-    return ExponentialFits(
-        energies=merged(one.energies, other.energies),
-        amplitudes=merged(one.amplitudes, other.amplitudes),
-        chi2=merged(one.chi2, other.chi2),
-        slope=merged(one.slope, other.slope),
-        pull=merged(one.pull, other.pull),
-        prior_error=merged(one.prior_error, other.prior_error),
-        parameters=merged(one.parameters, other.parameters),
-        arrived=np.where(take, other.arrived, one.arrived),
-    )
+    columns = []
+    for column in fields(ExponentialFits):
+        a, b = getattr(one, column.name), getattr(other, column.name)
+        columns.append(np.where(take.reshape(-1, *[1] * (a.ndim - 1)), b, a))
+    return ExponentialFits(*columns)
 
 
 def _described(t: Array, covariance: Array, found: ExponentialFits, index: int, span: tuple[int, int]) -> Fit:
