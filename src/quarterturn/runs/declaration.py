@@ -8,9 +8,8 @@ from typing import Any
 from quarterturn.action.declare import declare
 from quarterturn.action.model import Action
 from quarterturn.errors import ActionError
-from quarterturn.reports.action_card import ActionCard
+from quarterturn.reports.action_card import ActionCard, action_bundle, render_text
 from quarterturn.runs.settings import LATTICE_WORDS
-
 
 RESERVED = frozenset(
     {"action", "error", "time", "draws", "chains", "seed", "progress", "stop", "count", "spacing", *LATTICE_WORDS}
@@ -41,13 +40,9 @@ class DeclaredAction(Action):
         )
 
     def __repr__(self) -> str:
-        from quarterturn.reports.action_card import render_text
-
         return render_text(self.card())
 
     def _repr_mimebundle_(self, include: Any = None, exclude: Any = None) -> Any:
-        from quarterturn.reports.action_card import action_bundle
-
         return action_bundle(self.card())
 
 
