@@ -27,7 +27,7 @@ MOST_PANELS = 4  # of one report
 PNG_DPI = 144
 LONG_DATA, LONG_NUMBER = re.compile(r' d="[^"]{200,}"'), re.compile(r"\d+\.\d{3,}")  # a hundredth of a point will do
 OURS = ("axes", "errorbar", "figure", "font", "lines", "mathtext", "patch", "path", "savefig", "svg", "text")
-STYLE = {
+STYLE: dict[Any, Any] = {
     "font.family": "STIXGeneral",
     "mathtext.fontset": "stix",
     "font.size": 10,
