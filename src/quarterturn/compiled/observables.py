@@ -26,9 +26,7 @@ class Observables:
     target: Target
     fixed: tuple[Bracket, ...]
     free: tuple[Bracket, ...]
-    offsets: tuple[
-        tuple[int, ...], ...
-    ]  # per bracket (fixed, then free): lattice offset of each group, 0 for a free one
+    offsets: tuple[tuple[int, ...], ...]  # per bracket, fixed then free: lattice offset of each group, 0 for a free one
 
     @property
     def is_complex(self) -> bool:
@@ -53,8 +51,8 @@ class Observables:
             columns = [weight, *(weight * c for c in columns)]
         return jnp.stack(columns, axis=-1) if columns else jnp.zeros((q.shape[0], 0))
 
-    def curves(self, state: PathState, p: Parameters) -> Array:
-        """(chains, curves, steps)."""
+    def spectra(self, state: PathState, p: Parameters) -> Array:
+        """Fourier transforms of the curves, real, (chains, curves, sites // 2 + 1): what is summed over draws."""
         q = self.target.path(state, p)
         rows = [self._free(len(self.fixed) + i, bracket, q, p) for i, bracket in enumerate(self.free)]
         if not rows:
@@ -63,6 +61,12 @@ class Observables:
         if self.is_complex:
             stacked = stacked * jnp.cos(self.target.phase(state, p))[:, None, None]
         return stacked
+
+    def curves(self, spectra: Array) -> Array:
+        """The curves at the separations 0 … N/2, (chains, curves, steps), from their (averaged) spectra."""
+        if not self.free:
+            return spectra
+        return jnp.fft.irfft(spectra, n=self.target.sites, axis=-1)[..., : self.steps]
 
     # --- one bracket ----------------------------------------------------------------------------------------
     def _local(self, expression: Expression, q: Array, p: Parameters) -> Array:
@@ -86,15 +90,13 @@ class Observables:
         return total
 
     def _free(self, index: int, bracket: Bracket, q: Array, p: Parameters) -> Array:
-        """(1/N) sum_i f(q_{i+t}) g(q_i) for t = 0 … N/2, folded with -t."""
-        sites = self.target.sites
+        """Spectrum of (1/N) sum_i f(q_{i+t}) g(q_i), folded with -t: its real part is the part even in t."""
         moving = next(e for time, e in bracket.groups if time is None)
         f = jnp.fft.rfft(self._local(moving, q, p), axis=-1)
         fixed = [(t, e) for t, e in bracket.groups if t is not None]
         same = len(fixed) == 1 and fixed[0][1] == moving
         g = f if same else jnp.fft.rfft(self._product(index, bracket, q, p), axis=-1)
-        # the real part of the spectrum is the part even in t
-        return jnp.fft.irfft(jnp.real(f * jnp.conj(g)) / sites, n=sites, axis=-1)[..., : self.steps]
+        return (jnp.real(f) * jnp.real(g) + jnp.imag(f) * jnp.imag(g)) / self.target.sites
 
     def _whole(self, expression: Expression, q: Array, state: PathState, p: Parameters) -> Array:
         lookup = self.target.lookup(q, p)
@@ -123,19 +125,14 @@ class Observables:
         Source: Herman, Bruskin and Berne, J. Chem. Phys. 76 (1982) 5150.
         """
         potential = jnp.mean(self.target.potential(q, p), axis=-1)
-        if not self.target.angles:
-            slope = self.target.force(state, p)
-            return potential + 0.5 * jnp.sum(jnp.mean(state.x * slope, axis=-1), axis=-1)
         slope = self.target.force(state, p)
+        if not self.target.angles:
+            return potential + 0.5 * jnp.sum(jnp.mean(state.x * slope, axis=-1), axis=-1)
         displaced = state.x - jnp.mean(state.x, axis=-1, keepdims=True)
         virial = 0.5 * jnp.sum(jnp.mean(displaced * slope, axis=-1), axis=-1)
         beta = self.target.sites * p.spacing
-        return (
-            self.target.components / (2 * beta)
-            + potential
-            + virial
-            - self.target.winding_action(state.winding, p) / beta
-        )
+        centroid = self.target.components / (2 * beta)
+        return centroid + potential + virial - self.target.winding_action(state.winding, p) / beta
 
 
 def lattice_offsets(bracket: Bracket, spacing: float, sites: int) -> tuple[int, ...]:

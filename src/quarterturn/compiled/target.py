@@ -17,10 +17,10 @@ from typing import NamedTuple
 import jax.numpy as jnp
 import numpy as np
 from jax import Array
-from jax.scipy.linalg import solve_triangular
 
-from quarterturn.action.expression import Atom, Expression, PathAtom, Symbol
+from quarterturn.action.expression import Atom, Expression, Symbol
 from quarterturn.action.model import EuclideanAction
+from quarterturn.errors import ActionError
 
 
 class Parameters(NamedTuple):
@@ -28,6 +28,8 @@ class Parameters(NamedTuple):
 
     couplings: Array  # (K,), in the order of `Target.names`
     spacing: Array  # (), a [time]
+    whitening: Array  # (C, C), G of the mass matrix K = G G^T, lower triangular
+    unwhitening: Array  # (C, C), its inverse
 
 
 class PathState(NamedTuple):
@@ -35,6 +37,7 @@ class PathState(NamedTuple):
 
     x: Array  # (chains, C, sites), whitened, periodic part of the path
     winding: Array  # (chains, C), whole numbers as floats; zero for variables on the line
+    action: Array  # (chains,), Re S, kept so that no sweep computes it twice
 
 
 def ahead(x: Array) -> Array:
@@ -72,38 +75,47 @@ class Target:
         return tuple(euclidean.potential.diff(atom) for atom in euclidean.variables)
 
     def parameters(self, couplings: Mapping[str, float], spacing: float) -> Parameters:
-        """Traced arguments from plain numbers. Call inside `double()`."""
+        """Traced arguments from plain numbers. Call inside `double()`.
+
+        Raises ActionError where the mass matrix is not positive definite at these couplings.
+        """
+        lookup: dict[Atom, float] = {Symbol("coupling", name): float(couplings[name]) for name in self.names}
+        mass = np.array([[float(k.evaluate(lookup, np)) for k in row] for row in self.euclidean.mass])
+        try:
+            factor = np.linalg.cholesky(mass)
+        except np.linalg.LinAlgError as error:
+            raise ActionError(f"the kinetic form is not positive at these couplings: masses {mass.tolist()}") from error
         values = np.array([couplings[name] for name in self.names], dtype=np.float64)
-        return Parameters(jnp.asarray(values), jnp.asarray(np.float64(spacing)))
+        arrays = (values, np.float64(spacing), factor, np.linalg.inv(factor))
+        return Parameters(*(jnp.asarray(array) for array in arrays))
 
     def scalars(self, p: Parameters) -> dict[Atom, Array]:
         return {Symbol("coupling", name): p.couplings[i] for i, name in enumerate(self.names)}
 
     # --- masses ---------------------------------------------------------------------------------------------
-    def mass_factor(self, p: Parameters) -> Array:
-        """G with K = G G^T, lower triangular, shape (C, C)."""
-        lookup = self.scalars(p)
-        rows = [[jnp.asarray(k.evaluate(lookup, jnp), jnp.float64) for k in row] for row in self.euclidean.mass]
-        return (
-            jnp.linalg.cholesky(jnp.stack([jnp.stack(row) for row in rows]))
-            if len(rows) > 1
-            else jnp.sqrt(rows[0][0]).reshape(1, 1)
+    @cached_property
+    def coupled(self) -> np.ndarray:
+        """(C, C), whether the masses mix two variables, directly or through others; G has no other entries."""
+        mixed = np.array([[bool(k.terms) for k in row] for row in self.euclidean.mass]) | np.eye(
+            self.components, dtype=bool
         )
+        return np.linalg.matrix_power(mixed.astype(int), self.components) > 0
+
+    def _mixed(self, matrix: Array, x: Array, among: np.ndarray) -> Array:
+        """matrix . x along the component axis (second to last), written out over the entries that aren't zero."""
+        rows = []
+        for c in range(self.components):
+            terms = [matrix[c, d] * x[..., d, :] for d in range(self.components) if among[c, d]]
+            rows.append(sum(terms[1:], terms[0]))
+        return jnp.stack(rows, axis=-2)
 
     def from_whitened(self, x: Array, p: Parameters) -> Array:
-        """q = G^-T x along the component axis (second to last)."""
-        factor = self.mass_factor(p)
-        if self.components == 1:
-            return x / factor[0, 0]
-        inverse = solve_triangular(factor, jnp.eye(self.components), lower=True).T
-        return jnp.einsum("cd,...dn->...cn", inverse, x)
+        """q = G^-T x along the component axis."""
+        return self._mixed(p.unwhitening.T, x, np.triu(self.coupled))
 
     def to_whitened(self, q: Array, p: Parameters) -> Array:
         """x = G^T q."""
-        factor = self.mass_factor(p)
-        if self.components == 1:
-            return q * factor[0, 0]
-        return jnp.einsum("dc,...dn->...cn", factor, q)
+        return self._mixed(p.whitening.T, q, np.triu(self.coupled))
 
     # --- paths ----------------------------------------------------------------------------------------------
     def path(self, state: PathState, p: Parameters) -> Array:
@@ -133,12 +145,7 @@ class Target:
         lookup = self.lookup(q, p)
         shape = q.shape[:-2] + q.shape[-1:]
         parts = [jnp.broadcast_to(g.evaluate(lookup, jnp), shape) for g in self.gradient]
-        slope = jnp.stack(parts, axis=-2)
-        factor = self.mass_factor(p)
-        if self.components == 1:
-            return slope / factor[0, 0]
-        inverse = solve_triangular(factor, jnp.eye(self.components), lower=True)
-        return jnp.einsum("cd,...dn->...cn", inverse, slope)
+        return self._mixed(p.unwhitening, jnp.stack(parts, axis=-2), np.tril(self.coupled))
 
     def winding_action(self, winding: Array, p: Parameters) -> Array:
         """Kinetic action of the winding ramp, 1/2 (PW)^T K (PW) / beta, (chains,)."""
@@ -153,9 +160,14 @@ class Target:
         return jnp.sum(links**2, axis=(-2, -1)) / (2 * p.spacing) + self.winding_action(state.winding, p)
 
     def action(self, state: PathState, p: Parameters) -> Array:
-        """Re S of each path, (chains,)."""
+        """Re S of each path, computed afresh, (chains,)."""
         v = self.potential(self.path(state, p), p)
         return self.kinetic_action(state, p) + p.spacing * jnp.sum(v, axis=-1)
+
+    def state(self, x: Array, winding: Array, p: Parameters) -> PathState:
+        """A state with its action."""
+        bare = PathState(x, winding, jnp.zeros(x.shape[:-2]))
+        return bare._replace(action=self.action(bare, p))
 
     def phase(self, state: PathState, p: Parameters) -> Array:
         """-Im S: the angle of the weight of each path, sum_i A(q_mid) . (q_i+1 - q_i), (chains,)."""
@@ -176,8 +188,3 @@ class Target:
         """D(k) = (2/a)(1 - cos k) + a Omega_c^2 for the real Fourier modes, (C, sites // 2 + 1)."""
         k = 2 * math.pi * jnp.arange(self.sites // 2 + 1) / self.sites
         return (2 / p.spacing) * (1 - jnp.cos(k)) + p.spacing * frequency_squared[:, None]
-
-
-def path_atom_index(target: Target, atom: PathAtom) -> int:
-    """Position of a path's variable among the C components."""
-    return target.euclidean.variables.index(atom.value)

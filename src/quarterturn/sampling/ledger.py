@@ -1,8 +1,8 @@
 """What a chain leaves behind: block means of its draws, in bounded memory.
 
 Each entry is the mean of `block` consecutive draws of each chain. When there are more than `limit` entries,
-neighbours are averaged in pairs and the block doubles, so that memory does not grow with the length of a run. Sums and squares of
-the single draws are kept beside them, for the variance that an autocorrelation time needs.
+neighbours are averaged in pairs and the block doubles, so that memory does not grow with the length of a run. Sums
+and squares of the single draws are kept beside them, for the variance that an autocorrelation time needs.
 """
 
 from __future__ import annotations

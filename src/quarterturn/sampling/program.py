@@ -13,16 +13,20 @@ from typing import NamedTuple
 
 import jax
 import jax.numpy as jnp
+import numpy as np
 from jax import Array
 
 from quarterturn.compiled.observables import Observables
 from quarterturn.compiled.precision import double
 from quarterturn.compiled.target import Parameters, PathState, Target
 from quarterturn.sampling.moves.base import Move, MoveInfo, Tuning
+from quarterturn.sampling.random import child
 from quarterturn.sampling.sweep import applicable_moves
 
 BLOCK = 16  # draws in one call of the compiled program
 KEPT_PROGRAMS = 24
+MOST_CHAINS, FEWEST_CHAINS = 64, 8
+SITES_AT_ONCE = 16384  # of all chains; more no longer fit the nearest caches and gain nothing (benchmarks: `chains`)
 
 
 class BlockOutput(NamedTuple):
@@ -32,7 +36,8 @@ class BlockOutput(NamedTuple):
     curves: Array  # (chains, curves, steps), means over the block
     probes: Array  # (BLOCK, chains, probes), see `probes`
     accepted: Array  # (moves,), means over draws and chains
-    exp_change: Array  # (BLOCK, chains), exp(-dH) of the trajectories
+    exp_change: Array  # (chains,), exp(-dH) of the trajectories, means over the block
+    nonfinite: Array  # (), trajectories whose end has no finite energy
     winding: Array  # (BLOCK, chains, C)
 
 
@@ -54,8 +59,7 @@ class Program:
         self, state: PathState, key: Array, first: int, p: Parameters, tuning: Tuning
     ) -> tuple[PathState, BlockOutput]:
         """BLOCK sweeps, numbered from `first`. Call inside `double()`."""
-        number = jnp.asarray(first, jnp.uint32)
-        return self._advance(state, key, number, p, tuning)  # type: ignore[operator]
+        return self._advance(state, key, np.uint32(first), p, tuning)  # type: ignore[operator]
 
     def probes(self, state: PathState) -> Array:
         """Slow things to tune by, (chains, 3 C): mean of x, of x^2, and the power of the longest wave."""
@@ -70,27 +74,40 @@ class Program:
         self.compilations += 1  # runs only while tracing
 
         def sweep(carry: tuple[PathState, Array], number: Array) -> tuple[tuple[PathState, Array], tuple]:
-            state, curves = carry
-            keys = jax.random.split(jax.random.fold_in(key, number), len(self.moves))
+            state, spectra = carry
+            keys = child(child(key, number), jnp.arange(len(self.moves), dtype=jnp.uint32))
             infos: list[MoveInfo] = []
-            for move, move_key in zip(self.moves, keys, strict=True):
-                state, info = move.step(move_key, state, p, tuning)
+            for i, move in enumerate(self.moves):
+                state, info = move.step(keys[i], state, p, tuning)
                 infos.append(info)
-            accepted = jnp.stack([jnp.mean(info.accepted) for info in infos])
             out = (
                 self.observables.numbers(state, p),
                 self.probes(state),
-                accepted,
-                jnp.exp(-infos[0].energy_change),
+                jnp.stack([jnp.mean(info.accepted) for info in infos]),
+                infos[0].energy_change,
                 state.winding,
             )
-            return (state, curves + self.observables.curves(state, p)), out
+            return (state, spectra + self.observables.spectra(state, p)), out
 
         zero = jnp.zeros((self.chains, len(self.observables.free), self.observables.steps))
         numbers = first + jnp.arange(BLOCK, dtype=jnp.uint32)
-        (state, curves), out = jax.lax.scan(sweep, (state, zero), numbers)
+        (state, spectra), out = jax.lax.scan(sweep, (state, zero), numbers)
         measured, probes, accepted, change, winding = out
-        return state, BlockOutput(measured, curves / BLOCK, probes, jnp.mean(accepted, axis=0), change, winding)
+        return state, BlockOutput(
+            measured,
+            self.observables.curves(spectra / BLOCK),
+            probes,
+            jnp.mean(accepted, axis=0),
+            jnp.mean(jnp.exp(-change), axis=0),
+            jnp.sum(~jnp.isfinite(change)),
+            winding,
+        )
+
+
+def default_chains(sites: int, components: int) -> int:
+    """Number of chains for a path: a power of two, 64 for short paths and fewer for long ones."""
+    share = max(1, SITES_AT_ONCE // (sites * components))
+    return min(MOST_CHAINS, max(FEWEST_CHAINS, 1 << (share.bit_length() - 1)))
 
 
 _programs: OrderedDict[tuple, Program] = OrderedDict()

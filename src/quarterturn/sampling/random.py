@@ -16,6 +16,7 @@ import jax
 import jax.numpy as jnp
 import numpy as np
 from jax import Array
+from numpy.typing import NDArray
 
 ROTATIONS = ((13, 15, 26, 6), (17, 29, 16, 24))
 PARITY = np.uint32(0x1BD11BDA)
@@ -39,9 +40,14 @@ def threefry(key: Array, first: Array, second: Array) -> tuple[Array, Array]:
     return a, b
 
 
-def seed_key(seed: int) -> Array:
-    """The key of a seed; of a seed beyond 64 bits the low 64 count. Shape (2,)."""
-    return jnp.asarray(np.array([seed & 0xFFFFFFFF, (seed >> 32) & 0xFFFFFFFF], dtype=np.uint32))
+def seed_key(seed: int, purpose: int = 0) -> NDArray[np.uint32]:
+    """The key of a seed for one of several purposes, shape (2,); of a seed beyond 64 bits the low 64 count.
+
+    Computed in NumPy, by the same rounds, so that nothing is compiled for it.
+    """
+    root = np.array([[seed & 0xFFFFFFFF], [(seed >> 32) & 0xFFFFFFFF]], dtype=np.uint32)
+    found = threefry(root, np.array([purpose], np.uint32), np.array([CHILDREN], np.uint32))  # type: ignore[arg-type]
+    return np.concatenate([np.asarray(word) for word in found])
 
 
 def child(key: Array, number: Array | int) -> Array:

@@ -1,55 +1,57 @@
 """A first reference form from the potential alone: the best Gaussian path at zero temperature.
 
-Minimises Omega/4 + <V>_G over centre and frequency, the Gaussian variational energy of each whitened variable (the
+Minimises Omega/4 + <V>_G over centre and frequency, the Gaussian variational energy of the whitened variables (the
 Feynman-Jensen bound; Feynman, Statistical Mechanics, 1972, ch. 3). It only starts the warm-up, which then measures.
 """
 
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
 
 import numpy as np
 from numpy.typing import NDArray
 from scipy.optimize import minimize
 
+from quarterturn.sampling.points import PointAction
+
 Floats = NDArray[np.float64]
 NODES = 24
+CLOUD = 256  # points of the average for several variables, and as many mirrored ones
+LOG_LIMIT = 30.0
 
 
 def _directions(components: int) -> tuple[Floats, Floats]:
-    """Nodes (points, C) and weights of a normal average: Gauss-Hermite for one variable, axis by axis for more."""
-    nodes, weights = np.polynomial.hermite_e.hermegauss(NODES)
-    weights = weights / weights.sum()
+    """Nodes (points, C) and weights of a normal average: Gauss-Hermite for one variable, mirrored noise for more."""
     if components == 1:
-        return nodes[:, None], weights
-    from scipy.stats import qmc
-
-    points = qmc.MultivariateNormalQMC(np.zeros(components), engine=qmc.Sobol(components, scramble=False))
-    cloud = points.random(512)
+        nodes, weights = np.polynomial.hermite_e.hermegauss(NODES)
+        return nodes[:, None], weights / weights.sum()
+    half = np.random.default_rng(1).standard_normal((CLOUD, components))
+    cloud = np.concatenate([half, -half])
     return cloud, np.full(len(cloud), 1 / len(cloud))
 
 
-def gaussian_reference(potential: Callable[[Floats], Floats], components: int, beta: float) -> tuple[Floats, Floats]:
-    """(Omega^2, centre), each (C,), of the variational Gaussian for V(x), x whitened of shape (C, points).
+def gaussian_reference(points: PointAction) -> tuple[Floats, Floats]:
+    """(Omega^2, centre), each (C,), of the variational Gaussian of a potential.
 
     Omega is bounded below by 1/beta, the slowest thing that a periodic path of this extent can feel.
     """
+    components = points.target.components
     nodes, weights = _directions(components)
 
     def energy(v: Floats) -> float:
-        log_omega, centre = v[0], v[1:]
-        omega = math.exp(min(max(log_omega, -60.0), 60.0))
-        x = centre[:, None] + nodes.T / math.sqrt(2 * omega)
-        with np.errstate(all="ignore"):
-            value = potential(x)
-        mean = float(np.sum(weights * np.where(np.isfinite(value), value, 1e30)))
+        omega = math.exp(min(max(v[0], -LOG_LIMIT), LOG_LIMIT))
+        value = points.potential(v[1:, None] + nodes.T / math.sqrt(2 * omega))
+        mean = float(np.sum(weights * np.where(np.isfinite(value), np.clip(value, -1e30, 1e30), 1e30)))
         return components * omega / 4 + mean
 
-    best = min(
-        (np.array([start, *np.full(components, c)]) for start in np.linspace(-12, 12, 25) for c in (0.0,)),
-        key=energy,
-    )
-    found = minimize(energy, best, method="Nelder-Mead", options={"maxiter": 400 * (components + 1), "xatol": 1e-3})
-    omega = max(math.exp(float(np.clip(found.x[0], -60, 60))), 1 / beta)
-    return np.full(components, omega**2), np.asarray(found.x[1:])
+    best = min((np.array([s, *c]) for s in np.linspace(-14, 14, 29) for c in _centres(components)), key=energy)
+    found = minimize(energy, best, method="Powell", options={"maxiter": 30, "xtol": 1e-3, "ftol": 1e-6})
+    v = found.x if energy(found.x) <= energy(best) else best
+    omega = max(math.exp(float(np.clip(v[0], -LOG_LIMIT, LOG_LIMIT))), 1 / points.beta)
+    return np.full(components, omega**2), np.asarray(v[1:])
+
+
+def _centres(components: int) -> list[Floats]:
+    """Points to begin from: the origin, and both sides of it along each axis at four sizes."""
+    along = [size * sign * axis for axis in np.eye(components) for size in (0.1, 1.0, 10.0, 100.0) for sign in (1, -1)]
+    return [np.zeros(components), *along]

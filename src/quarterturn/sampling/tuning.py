@@ -2,14 +2,16 @@
 
 Every decision follows from sampled data alone, never from a clock, so that a run is repeated bit for bit from its
 seed. A candidate is scored by the smallest number of effective samples per unit of cost over a few slow probes and
-the measured numbers; the cost of a draw is a fixed part (momenta, energies, measurements) and one part for each kick.
+the measured numbers. All candidates of one comparison start from the same paths and draw the same random numbers, so
+that what is compared is their difference and not their luck.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from dataclasses import dataclass, replace
 
+import jax
 import jax.numpy as jnp
 import numpy as np
 from jax import Array
@@ -18,14 +20,19 @@ from numpy.typing import NDArray
 from quarterturn.compiled.target import Parameters, PathState
 from quarterturn.sampling.integrators.leapfrog import LEAPFROG
 from quarterturn.sampling.integrators.minimum_norm import MINIMUM_NORM
-from quarterturn.sampling.integrators.splitting import Splitting
-from quarterturn.sampling.moves.base import Tuning
+from quarterturn.sampling.moves.base import TRAJECTORY_LIMIT, Tuning
 from quarterturn.sampling.moves.segment_flip import SegmentFlip
+from quarterturn.sampling.points import PointAction
 from quarterturn.sampling.program import BLOCK, BlockOutput, Program
 
 Floats = NDArray[np.float64]
-FIXED_COST = 4.0  # a draw without kicks, in units of a kick (measured on two cores; only the choice depends on it)
-SEGMENT_COST = 2.5
+FIXED_COST = 2.5  # a draw without kicks, in units of a kick (benchmarks: `sweep parts`); only the choice depends on it
+SEGMENT_COST = 2.0
+QUARTER = 1.5  # angle of a trajectory that forgets the reference paths: pi/2, a little less for the jitter
+SETTLING = (0.6, 0.95)  # acceptance that settling aims at
+SETTLING_BLOCKS = 24
+TRIAL_SAMPLES = 2048  # draws of all chains together that a trial counts
+TRIAL_BLOCKS = 4  # the most blocks of a trial
 INTEGRATORS = {s.name: s for s in (LEAPFROG, MINIMUM_NORM)}
 
 
@@ -60,6 +67,29 @@ class Recipe:
     def cost(self) -> float:
         return FIXED_COST + self.kicks + SEGMENT_COST * self.segments
 
+    def with_kicks(self, integrator: str, kicks: int) -> Recipe:
+        """The same trajectory with about so many kicks, at least one step."""
+        per_step = len(INTEGRATORS[integrator].kicks)
+        steps = max(1, min(kicks, TRAJECTORY_LIMIT) // per_step)
+        return replace(self, integrator=integrator, steps=steps)
+
+    def scaled(self, factor: float) -> Recipe:
+        """The same trajectory with reference frequencies `factor` times as large."""
+        return replace(self, frequency_squared=tuple(v * factor**2 for v in self.frequency_squared))
+
+
+@dataclass(frozen=True)
+class Trial:
+    """One candidate of the warm-up, its acceptance, and the effective samples it gave per draw."""
+
+    recipe: Recipe
+    acceptance: float
+    efficiency: float
+
+    @property
+    def score(self) -> float:
+        return self.efficiency / self.recipe.cost
+
 
 class WarmUp:
     """Carries the chains through warm-up. `blocks` counts the blocks used; `interrupted` stops between blocks."""
@@ -68,13 +98,15 @@ class WarmUp:
         self,
         program: Program,
         p: Parameters,
+        points: PointAction,
         key: Array,
         state: PathState,
         interrupted: Callable[[], bool],
     ) -> None:
-        self.program, self.p, self.key, self.state = program, p, key, state
+        self.program, self.p, self.points, self.key, self.state = program, p, points, key, state
         self.interrupted = interrupted
         self.blocks = 0
+        self.trials: list[Trial] = []
 
     def run(self, recipe: Recipe, blocks: int) -> list[BlockOutput]:
         """Advance all chains by `blocks` blocks under a recipe; fewer when interrupted."""
@@ -85,50 +117,77 @@ class WarmUp:
                 break
             self.state, out = self.program.advance(self.state, self.key, self.blocks * BLOCK, self.p, tuning)
             self.blocks += 1
-            outputs.append(out)
+            outputs.append(jax.device_get(out))
         return outputs
 
-    def settle(self, recipe: Recipe, rounds: int) -> Recipe:
-        """Equilibrate with a step that follows the acceptance up and down."""
-        for _ in range(rounds):
+    def settle(self, recipe: Recipe, fewest: int) -> Recipe:
+        """Equilibrate with a step that follows the acceptance; on until it lies in the range, or the limit is met."""
+        low, high = SETTLING
+        for round_ in range(SETTLING_BLOCKS):
             out = self.run(recipe, 1)
             if not out:
                 break
             accepted = float(out[0].accepted[0])
-            if accepted < 0.6:
-                recipe = _shorter(recipe)
-            elif accepted > 0.9:
+            if low <= accepted and round_ >= fewest:
+                break
+            if accepted < low:
+                recipe = _shorter(recipe, 2.0 if accepted < low / 3 else 1.4)
+            elif accepted > high:
                 recipe = _longer(recipe)
         return recipe
 
     def measure_reference(self, recipe: Recipe) -> Recipe:
         """Omega^2 = <(x - c) dV/dx> / <(x - c)^2>, the linear force that the samples show, and their centre."""
         target = self.program.target
-        x = np.asarray(self.state.x)
-        slope = np.asarray(target.force(self.state, self.p))
         if target.angles:
             return recipe
+        x = np.moveaxis(np.asarray(self.state.x), 1, 0)
         mirrored = np.all(np.asarray(target.euclidean.symmetries).reshape(-1, target.components) < 0, axis=1).any()
-        centre = np.zeros(target.components) if mirrored else x.mean(axis=(0, 2))
-        y = x - centre[None, :, None]
-        ratio = (y * slope).mean(axis=(0, 2)) / (y * y).mean(axis=(0, 2))
-        old = np.array(recipe.frequency_squared)
-        measured = np.where(np.isfinite(ratio) & (ratio > 0), ratio, old)
+        centre = np.zeros(target.components) if mirrored else x.mean(axis=(1, 2))
+        y = x - centre[:, None, None]
+        ratio = (y * self.points.gradient(x)).mean(axis=(1, 2)) / (y * y).mean(axis=(1, 2))
         return replace(
             recipe,
-            frequency_squared=tuple(float(v) for v in measured),
+            frequency_squared=_admissible(ratio, recipe, self.points.beta),
             centre=tuple(float(v) for v in centre),
         )
 
-    def score(self, recipe: Recipe, blocks: int) -> float:
-        """Effective samples per unit of cost of the slowest probe; the first block of a trial is not counted."""
-        outputs = self.run(recipe, blocks + 1)[1:]
-        if len(outputs) < blocks:
-            return 0.0
-        series = np.concatenate(
-            [np.concatenate([np.asarray(o.probes), np.asarray(o.numbers)], axis=-1) for o in outputs]
-        )
-        return _efficiency(series) / recipe.cost
+    def local_reference(self, recipe: Recipe) -> Recipe:
+        """Omega^2 = <d^2 V/dx^2>, how paths vibrate where they are: larger than the linear force in separate wells."""
+        x = np.moveaxis(np.asarray(self.state.x), 1, 0)
+        curvature = self.points.curvature(x).mean(axis=(1, 2))
+        return replace(recipe, frequency_squared=_admissible(curvature, recipe, self.points.beta))
+
+    def try_all(self, candidates: Iterable[Recipe], best: Trial | None) -> Trial | None:
+        """The best of the candidates and of `best`, each from the paths at hand and with the same random numbers.
+
+        A candidate whose cost alone rules it out is not tried. The chains go on from the paths of the best one.
+        """
+        wanted = min(TRIAL_BLOCKS, max(2, -(-TRIAL_SAMPLES // (BLOCK * self.program.chains))))
+        start, first = self.state, self.blocks
+        kept, used = start, first
+        for candidate in candidates:
+            if best is not None and 1 / candidate.cost <= best.score:
+                continue
+            self.state, self.blocks = start, first
+            outputs = self.run(candidate, wanted)
+            if len(outputs) < wanted:
+                break
+            series = np.concatenate([np.concatenate([o.probes, o.numbers], axis=-1) for o in outputs])
+            trial = Trial(candidate, float(np.mean([o.accepted[0] for o in outputs])), _efficiency(series))
+            self.trials.append(trial)
+            used = max(used, self.blocks)
+            if best is None or trial.score > best.score:
+                best, kept = trial, self.state
+        self.state, self.blocks = kept, max(used, self.blocks)
+        return best
+
+
+def _admissible(measured: Floats, recipe: Recipe, beta: float) -> tuple[float, ...]:
+    """Frequencies that a path of this extent can feel; the old ones where the measured ones aren't positive."""
+    old = np.array(recipe.frequency_squared)
+    usable = np.isfinite(measured) & (measured > 0)
+    return tuple(float(v) for v in np.where(usable, np.maximum(measured, beta**-2), old))
 
 
 def _efficiency(series: Floats) -> float:
@@ -147,59 +206,56 @@ def _efficiency(series: Floats) -> float:
     return float(np.min((1 - rho) / (1 + rho)))
 
 
-def _shorter(recipe: Recipe) -> Recipe:
-    if recipe.kicks <= 20 and recipe.angle > 0.4:
-        return replace(recipe, steps=recipe.steps + 1)
-    return replace(recipe, angle=recipe.angle * 0.7)
+def _shorter(recipe: Recipe, factor: float) -> Recipe:
+    """Shorter steps: more of them, and where that ends, a shorter trajectory."""
+    steps = int(np.ceil(recipe.steps * factor))
+    if steps <= TRAJECTORY_LIMIT // 2:
+        return replace(recipe, steps=steps)
+    return replace(recipe, angle=recipe.angle / factor)
 
 
 def _longer(recipe: Recipe) -> Recipe:
-    if recipe.angle < 1.5:
-        return replace(recipe, angle=min(1.5, recipe.angle * 1.3))
-    return replace(recipe, steps=max(1, recipe.steps - 1))
+    if recipe.angle < QUARTER:
+        return replace(recipe, angle=min(QUARTER, recipe.angle * 1.3))
+    return replace(recipe, steps=max(1, recipe.steps * 3 // 4))
 
 
-def _shapes(start: Recipe) -> Iterator[Recipe]:
-    """Candidates of integrator, steps and angle around a recipe that is known to be accepted."""
-    quarter = 1.5
-    for integrator in (LEAPFROG, MINIMUM_NORM):
-        per_step = len(integrator.kicks)
-        for steps in sorted({1, 2, 3, max(1, start.kicks // per_step), max(1, start.kicks * 3 // (2 * per_step))}):
-            for angle in sorted({quarter, min(quarter, start.angle)}):
-                if _plausible(integrator, steps, angle, start):
-                    yield replace(start, integrator=integrator.name, steps=steps, angle=angle)
+def _numbers_of_kicks(around: int) -> Iterator[int]:
+    """Fewer and more kicks than `around`, in the order of trying."""
+    yield from sorted({max(1, round(around * f)) for f in (0.4, 0.6, 0.8, 1.0, 1.3, 1.7)})
 
 
-def _plausible(integrator: Splitting, steps: int, angle: float, start: Recipe) -> bool:
-    """Not far beyond the kick length that was accepted in settling, and within the limit of kicks."""
-    kicks = steps * len(integrator.kicks)
-    reach = 2.5 * start.angle / start.kicks
-    return kicks <= 40 and angle / kicks <= max(reach, 0.1)
+def _shapes(recipe: Recipe) -> list[Recipe]:
+    """Leapfrogs of a full angle around a recipe that is known to be accepted."""
+    full = replace(recipe, angle=QUARTER)
+    kicks = min(TRAJECTORY_LIMIT, round(recipe.kicks * QUARTER / recipe.angle))
+    return [recipe, *(full.with_kicks(LEAPFROG.name, n) for n in _numbers_of_kicks(kicks) if n <= TRAJECTORY_LIMIT)]
 
 
 def tune(warm_up: WarmUp, first: Recipe) -> Recipe:
     """The whole warm-up; returns the recipe to freeze."""
     segments = any(isinstance(m, SegmentFlip) for m in warm_up.program.moves)
-    recipe = warm_up.settle(replace(first, segments=segments), 8)
-    recipe = warm_up.settle(warm_up.measure_reference(recipe), 4)
+    recipe = warm_up.settle(replace(first, segments=segments), 6)
+    recipe = warm_up.settle(warm_up.measure_reference(recipe), 3)
     recipe = warm_up.measure_reference(recipe)
-    score, recipe = _best(warm_up, sorted(_shapes(recipe), key=lambda c: c.cost), 0.0, recipe)
-    wider = [
-        replace(recipe, frequency_squared=tuple(factor * v for v in recipe.frequency_squared))
-        for factor in (1.6, 0.6, 2.5)
-    ]
-    score, recipe = _best(warm_up, wider, score, recipe)
+    best = warm_up.try_all(_shapes(recipe), None)
+    if best is None:  # interrupted
+        return recipe
+    recipe = best.recipe
+    local = warm_up.local_reference(recipe)
+    references = [local] if _differ(local, recipe) else []
+    references += [recipe.scaled(factor) for factor in (1.3, 0.8)]
+    best = warm_up.try_all(references, best) or best
+    recipe = best.recipe
+    others = [recipe.with_kicks(LEAPFROG.name, recipe.kicks - 1)] if recipe.kicks > 1 else []
+    others += [recipe.with_kicks(MINIMUM_NORM.name, n) for n in {recipe.kicks, recipe.kicks * 2 // 3} if n > 1]
+    others += [replace(recipe, angle=recipe.angle * factor) for factor in (0.75, 1.3)]
+    best = warm_up.try_all(others, best) or best
     if segments:
-        _, recipe = _best(warm_up, [replace(recipe, segments=False)], score, recipe)
-    return recipe
+        best = warm_up.try_all([replace(best.recipe, segments=False)], best) or best
+    return best.recipe
 
 
-def _best(warm_up: WarmUp, candidates: list[Recipe], score: float, recipe: Recipe) -> tuple[float, Recipe]:
-    """The best of the candidates and of `recipe` with its `score`; one whose cost alone rules it out isn't tried."""
-    for candidate in candidates:
-        if 1 / candidate.cost <= score:
-            continue
-        trial = warm_up.score(candidate, 2)
-        if trial > score:
-            score, recipe = trial, candidate
-    return score, recipe
+def _differ(a: Recipe, b: Recipe) -> bool:
+    ratios = np.array(a.frequency_squared) / np.array(b.frequency_squared)
+    return bool(np.any(ratios > 1.2) or np.any(ratios < 0.8))

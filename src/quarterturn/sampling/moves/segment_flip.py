@@ -15,29 +15,49 @@ from dataclasses import dataclass
 
 import jax
 import jax.numpy as jnp
+import numpy as np
 from jax import Array
 
 from quarterturn.compiled.target import Parameters, PathState, Target, ahead
 from quarterturn.sampling.moves.base import MoveInfo, Tuning
-from quarterturn.sampling.moves.sign_flip import flipped
+from quarterturn.sampling.moves.sign_flip import chosen_symmetry, flipped
+from quarterturn.sampling.random import coins_and_uniforms
+
+LINKS, CHOICES = 0, 1  # streams of random numbers
+WORD = 32
 
 
-def segment_flips(key: Array, broken: Array) -> Array:
+def segment_flips(broken: Array, coins: Array, first: Array) -> Array:
     """Which sites flip, (chains, sites), given the broken links (link i joins sites i and i+1, periodically).
 
-    Across a broken link the flip changes with probability 1/2; the changes round the ring must be even in number, so
-    the last broken link takes the parity of the others. That is the uniform distribution over segment flips.
+    Across a broken link the flip changes if its coin says so; the changes round the ring must be even in number, so
+    the last broken link takes the parity of the others. With fair coins, and a fair one in `first` (chains,) for the
+    first site, that is the uniform distribution over segment flips. Computed on 32 sites at a time, as bits of words.
     """
-    change_key, first_key = jax.random.split(key)
-    change = broken & jax.random.bernoulli(change_key, 0.5, broken.shape)
-    behind = jnp.cumsum(broken[:, ::-1].astype(jnp.int32), axis=-1)[:, ::-1]
-    last = broken & (behind == 1)
-    others = jnp.sum(change & ~last, axis=-1, keepdims=True) % 2 == 1
-    change = jnp.where(last, others, change)
-    first = jax.random.bernoulli(first_key, 0.5, (broken.shape[0], 1))
-    passed = jnp.cumsum(change.astype(jnp.int32), axis=-1)
-    before = jnp.concatenate([jnp.zeros_like(passed[:, :1]), passed[:, :-1]], axis=-1)
-    return (before % 2 == 1) ^ first
+    sites = broken.shape[-1]
+    breaks, change = _packed(broken), _packed(broken & coins)
+    place = jnp.where(breaks != 0, jnp.arange(1, breaks.shape[-1] + 1), 0)
+    final = (place == jnp.max(place, axis=-1, keepdims=True)) & (breaks != 0)
+    last = jnp.where(final, np.uint32(1 << 31) >> jax.lax.clz(breaks), np.uint32(0))
+    change = change & ~last
+    odd = jnp.sum(jax.lax.population_count(change), axis=-1, keepdims=True) & 1 == 1
+    change = change | jnp.where(odd, last, np.uint32(0))
+    passed = change  # becomes the parity of the changes up to each bit
+    for shift in (1, 2, 4, 8, 16):
+        passed = passed ^ (passed << np.uint32(shift))
+    words = (passed >> np.uint32(WORD - 1)).astype(jnp.int32)
+    carried = (jnp.cumsum(words, axis=-1) - words + first[:, None]) & 1
+    before = passed ^ change ^ jnp.where(carried == 1, np.uint32(0xFFFFFFFF), np.uint32(0))
+    bits = (before[..., None] >> jnp.arange(WORD, dtype=jnp.uint32)) & np.uint32(1)
+    return bits.reshape(*bits.shape[:-2], -1)[..., :sites] == 1
+
+
+def _packed(flags: Array) -> Array:
+    """Flags (…, sites) as bits of 32-bit words, lowest first, (…, words)."""
+    rest = -flags.shape[-1] % WORD
+    padded = jnp.pad(flags, [(0, 0)] * (flags.ndim - 1) + [(0, rest)])
+    bits = padded.reshape(*flags.shape[:-1], -1, WORD).astype(jnp.uint32)
+    return jnp.sum(bits << jnp.arange(WORD, dtype=jnp.uint32), axis=-1, dtype=jnp.uint32)
 
 
 @dataclass(frozen=True)
@@ -51,17 +71,16 @@ class SegmentFlip:
         return "segment flips"
 
     def flip(self, key: Array, state: PathState, p: Parameters) -> PathState:
-        which, bonds, flips = jax.random.split(key, 3)
-        signs = jnp.asarray(self.target.euclidean.symmetries, jnp.float64)
-        sigma = signs[jax.random.randint(which, (), 0, len(signs))]
-        mirror = flipped(self.target, state.x, sigma, p)
-        near, far = ahead(state.x) - state.x, ahead(state.x) - mirror
-        cost = jnp.sum(far**2 - near**2, axis=-2) / (2 * p.spacing)
-        broken = jax.random.uniform(bonds, cost.shape, jnp.float64) < jnp.exp(-jnp.maximum(cost, 0.0))
-        turn = segment_flips(flips, broken)
-        return PathState(jnp.where(turn[:, None, :], mirror, state.x), state.winding)
+        chains, _, sites = state.x.shape
+        first, chance = coins_and_uniforms(key, (chains,), CHOICES)
+        coins, uniform = coins_and_uniforms(key, (chains, sites), LINKS)
+        mirror = flipped(self.target, state.x, chosen_symmetry(self.target, chance[0]), p)
+        following = ahead(state.x)
+        cost = jnp.sum((following - mirror) ** 2 - (following - state.x) ** 2, axis=-2) / (2 * p.spacing)
+        turn = segment_flips(uniform < jnp.exp(-jnp.maximum(cost, 0.0)), coins, first)
+        return self.target.state(jnp.where(turn[:, None, :], mirror, state.x), state.winding, p)
 
     def step(self, key: Array, state: PathState, p: Parameters, tuning: Tuning) -> tuple[PathState, MoveInfo]:
         state = jax.lax.cond(tuning.segments, lambda s: self.flip(key, s, p), lambda s: s, state)
-        zero = jnp.zeros(state.x.shape[0])
-        return state, MoveInfo(zero + 1, zero)
+        chains = state.x.shape[0]
+        return state, MoveInfo(jnp.ones(chains), jnp.zeros(chains))

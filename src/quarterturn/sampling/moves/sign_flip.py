@@ -4,12 +4,12 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-import jax
 import jax.numpy as jnp
 from jax import Array
 
 from quarterturn.compiled.target import Parameters, PathState, Target
 from quarterturn.sampling.moves.base import MoveInfo, Tuning
+from quarterturn.sampling.random import coins_and_uniforms
 
 
 def flipped(target: Target, x: Array, sigma: Array, p: Parameters) -> Array:
@@ -17,6 +17,12 @@ def flipped(target: Target, x: Array, sigma: Array, p: Parameters) -> Array:
     if target.components == 1:
         return x * sigma[0]
     return target.to_whitened(target.from_whitened(x, p) * sigma[:, None], p)
+
+
+def chosen_symmetry(target: Target, chance: Array) -> Array:
+    """One of the sign symmetries, all equally likely, (C,); `chance` is uniform in (0, 1)."""
+    signs = jnp.asarray(target.euclidean.symmetries, jnp.float64)
+    return signs[(chance * len(signs)).astype(jnp.int32)]
 
 
 @dataclass(frozen=True)
@@ -30,12 +36,9 @@ class SignFlip:
         return "global sign flip"
 
     def step(self, key: Array, state: PathState, p: Parameters, tuning: Tuning) -> tuple[PathState, MoveInfo]:
-        which, whether = jax.random.split(key)
-        signs = jnp.asarray(self.target.euclidean.symmetries, jnp.float64)
-        sigma = signs[jax.random.randint(which, (), 0, len(signs))]
         chains = state.x.shape[0]
-        flip = jax.random.bernoulli(whether, 0.5, (chains,))
+        flip, chance = coins_and_uniforms(key, (chains,))
+        sigma = chosen_symmetry(self.target, chance[0])
         x = jnp.where(flip[:, None, None], flipped(self.target, state.x, sigma, p), state.x)
         winding = jnp.where(flip[:, None], state.winding * sigma, state.winding)
-        zero = jnp.zeros(chains)
-        return PathState(x, winding), MoveInfo(zero + 1, zero)
+        return PathState(x, winding, state.action), MoveInfo(jnp.ones(chains), jnp.zeros(chains))

@@ -14,7 +14,8 @@ import jax.numpy as jnp
 from jax import Array
 
 from quarterturn.compiled.target import Parameters, PathState, Target
-from quarterturn.sampling.moves.base import MoveInfo, Tuning
+from quarterturn.sampling.moves.base import MoveInfo, Tuning, metropolis
+from quarterturn.sampling.random import uniforms
 
 
 def ramp(start: Array, length: Array, sites: int) -> Array:
@@ -44,20 +45,15 @@ class WindingMove:
         return sizes
 
     def step(self, key: Array, state: PathState, p: Parameters, tuning: Tuning) -> tuple[PathState, MoveInfo]:
-        keys = jax.random.split(key, 5)
         chains, sites = state.x.shape[0], self.target.sites
         angles, sizes = jnp.asarray(self.target.angles), jnp.asarray(self.lengths())
-        which = angles[jax.random.randint(keys[0], (chains,), 0, len(angles))]
-        length = sizes[jax.random.randint(keys[1], (chains,), 0, len(sizes))]
-        start = jax.random.randint(keys[2], (chains,), 0, sites)
-        sign = jnp.where(jax.random.bernoulli(keys[3], 0.5, (chains,)), 1.0, -1.0)
+        chance = uniforms(key, (5, chains))
+        which = angles[(chance[0] * len(angles)).astype(jnp.int32)]
+        length = sizes[(chance[1] * len(sizes)).astype(jnp.int32)]
+        start = (chance[2] * sites).astype(jnp.int32)
+        sign = jnp.where(chance[3] < 0.5, 1.0, -1.0)
         one = jax.nn.one_hot(which, self.target.components, dtype=jnp.float64) * sign[:, None]
         shape = ramp(start, length, sites) - jnp.arange(sites) / sites
         bump = (one * jnp.asarray(self.target.periods))[..., None] * shape[:, None, :]
-        proposal = PathState(state.x + self.target.to_whitened(bump, p), state.winding + one)
-        change = self.target.action(proposal, p) - self.target.action(state, p)
-        change = jnp.where(jnp.isfinite(change), change, jnp.inf)
-        accept = jnp.log(jax.random.uniform(keys[4], (chains,), jnp.float64)) < -change
-        x = jnp.where(accept[:, None, None], proposal.x, state.x)
-        winding = jnp.where(accept[:, None], proposal.winding, state.winding)
-        return PathState(x, winding), MoveInfo(accept.astype(jnp.float64), change)
+        proposal = self.target.state(state.x + self.target.to_whitened(bump, p), state.winding + one, p)
+        return metropolis(chance[4], proposal.action - state.action, proposal, state)

@@ -1,0 +1,54 @@
+"""The potential and its derivatives at points of configuration space, in NumPy: what is needed outside the chains."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from quarterturn.action.expression import Atom, Expression
+from quarterturn.compiled.target import Parameters, Target
+
+Floats = NDArray[np.float64]
+
+
+class PointAction:
+    """V(x), its gradient and diagonal curvatures for whitened points x, at fixed couplings and spacing."""
+
+    def __init__(self, target: Target, p: Parameters) -> None:
+        self.target = target
+        self.spacing = float(p.spacing)
+        self.unwhitening = np.asarray(p.unwhitening)
+        self.scalars: dict[Atom, float] = {atom: float(value) for atom, value in target.scalars(p).items()}
+        variables = target.euclidean.variables
+        self.hessian = tuple(tuple(g.diff(atom) for atom in variables) for g in target.gradient)
+
+    @property
+    def beta(self) -> float:
+        return self.spacing * self.target.sites
+
+    def potential(self, x: Floats) -> Floats:
+        """V at x of shape (C, …), shape (…); nan or inf where it has no value."""
+        return self._values((self.target.euclidean.potential,), x)[0]
+
+    def gradient(self, x: Floats) -> Floats:
+        """dV/dx, (C, …)."""
+        return np.tensordot(self.unwhitening, self._values(self.target.gradient, x), axes=1)
+
+    def curvature(self, x: Floats) -> Floats:
+        """d^2 V/dx_c^2, (C, …)."""
+        rows = np.stack([self._values(row, x) for row in self.hessian])
+        return np.einsum("ci,ij...,cj->c...", self.unwhitening, rows, self.unwhitening)
+
+    def path_action(self, x: Floats) -> Floats:
+        """Re S of paths (chains, C, sites) without winding, (chains,)."""
+        links = np.roll(x, -1, axis=-1) - x
+        kinetic = np.sum(links**2, axis=(1, 2)) / (2 * self.spacing)
+        return kinetic + self.spacing * np.sum(self.potential(np.moveaxis(x, 1, 0)), axis=-1)
+
+    def _values(self, expressions: tuple[Expression, ...], x: Floats) -> Floats:
+        q = np.tensordot(self.unwhitening.T, x, axes=1)
+        lookup = {**self.scalars, **dict(zip(self.target.euclidean.variables, q, strict=True))}
+        with np.errstate(all="ignore"):
+            return np.stack(
+                [np.broadcast_to(np.asarray(e.evaluate(lookup, np), float), x.shape[1:]) for e in expressions]
+            )
