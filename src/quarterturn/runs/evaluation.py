@@ -7,7 +7,7 @@ average phase is compatible with zero the numbers are withheld.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -135,7 +135,9 @@ class Evaluator:
         subtract = None
         if not all(is_odd(f, self.euclidean) for f in measurement.operators):
             subtract = np.array([self.layout.number(b) for b in means])
-        return gap(self.curves, indices, self.times, self.beta, subtract)
+        result = gap(self.curves, indices, self.times, self.beta, subtract)
+        # curves are kept as block means, so that a fit to them has no autocorrelation time in draws
+        return replace(result, estimate=replace(result.estimate, tau=None, tau_error=None, n_eff=None))
 
 
 def is_odd(expression: Expression, euclidean: EuclideanAction) -> bool:
