@@ -21,7 +21,7 @@ from quarterturn.reports.report import Curve
 Array = NDArray[np.float64]
 
 MOST_BARS = 60  # beyond, error bars become a band
-MOST_POINTS = 300  # of a line; a longer history is drawn by means over blocks
+MOST_POINTS = 200  # of a line; a longer history is drawn by means over blocks, a longer curve by one point in so many
 LOG_RATIO = 5.0  # a correlator that falls by less is drawn on a linear axis
 WAVE_FILL = 0.8  # height of the largest wave function over the smallest distance of levels
 WAVE_ENDS = 0.003  # of the tallest; what is lower all the way out is not worth paper
@@ -124,7 +124,10 @@ def _gap(axes: Axes, curve: Curve, ink: str) -> None:
 
 def _points(axes: Axes, curve: Curve, ink: str) -> None:
     """Measured points with their errors, and the exact line over them."""
-    x, y, error, exact = map(_numbers, (curve.x, curve.y, curve.error, curve.exact))
+    step = -(-len(curve.x) // MOST_POINTS)
+    x, y, error, exact = (_numbers(part)[::step] for part in (curve.x, curve.y, curve.error, curve.exact))
+    if step > 1:
+        _note_above(axes, f"one point in {step}")
     if error.size != x.size:
         axes.plot(x, y, color=DATA, linewidth=1.2)
     elif x.size <= MOST_BARS:
@@ -145,8 +148,7 @@ def _history(axes: Axes, curves: Sequence[Curve]) -> None:
         x, y = _block_means(_numbers(curve.x), block), _block_means(_numbers(curve.y), block)
         axes.plot(x, y, color=SERIES[index % len(SERIES)], linewidth=0.7)
     if block > 1:
-        note = f"means of {block} points"
-        axes.annotate(note, (1, 1), xycoords="axes fraction", ha="right", va="bottom", fontsize="small")
+        _note_above(axes, f"means of {block} points")
 
 
 def _waves(axes: Axes, curves: Sequence[Curve], ink: str) -> None:
@@ -201,6 +203,10 @@ def _label(set_label: Callable[..., object], latex: str, plain: str) -> None:
         set_label(plain, parse_math=False)
     else:
         set_label(f"${latex}$")
+
+
+def _note_above(axes: Axes, note: str) -> None:
+    axes.annotate(note, (1, 1), xycoords="axes fraction", ha="right", va="bottom", fontsize="small")
 
 
 def _block_means(values: Array, block: int) -> Array:
