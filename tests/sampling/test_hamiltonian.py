@@ -90,6 +90,28 @@ def test_a_trajectory_preserves_volume(case: tuple[Target, tuple[float, ...]], i
     assert abs(np.linalg.det(jacobian) - 1) < 1e-10
 
 
+def test_trajectories_of_angles_commute_with_whole_turns(target_of: Callable[..., Target]) -> None:
+    """Otherwise bringing the mean back to its interval between trajectories would break detailed balance.
+
+    An angle whose mass is coupled to a path on the line, and that path's own mean, which a turn then shifts too.
+    """
+    mixed = {"variables": (X, THETA), "periods": (None, CIRCLE["periods"][0]), "mass": PAIR["mass"]}
+    target = target_of(x**2 - apply("cos", theta) * number(2) + x * apply("sin", theta), 5, **mixed)
+    with double():
+        move, p = HamiltonianMove(target), target.parameters({}, SPACING)
+        tuning, scale = recipe((2.0, 3.0)).tuning(), jnp.ones((6, 1, 1))
+        state, v = some_paths(target, p)
+        turn = target.to_whitened(jnp.array([0.0, 2 * np.pi])[:, None] * jnp.ones(5), p)
+        plain, final = move.flow(state, v, scale, p, tuning)
+        turned, same = move.flow(state._replace(x=state.x + turn), v, scale, p, tuning)
+        assert np.max(np.abs(turn[0])) > 1
+        assert np.allclose(turned, plain + turn, atol=1e-11) and np.allclose(final, same, atol=1e-11)
+        back = move.recentred(state._replace(x=state.x + 3 * turn), p)
+        means = jnp.mean(target.path(back, p), axis=-1)[:, 1]
+        assert np.all(np.abs(means) <= np.pi + 1e-9)
+        assert np.allclose(target.action(back, p), state.action, rtol=1e-12)
+
+
 def energy_errors(target: Target, tuning: Tuning, p: Parameters, paths: tuple[PathState, jax.Array]) -> Floats:
     move, (state, v) = HamiltonianMove(target), paths
     x_, final = move.flow(state, v, jnp.ones((state.x.shape[0], 1, 1)), p, tuning)

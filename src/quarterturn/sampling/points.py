@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -47,7 +49,7 @@ class PointAction:
 
     def _values(self, expressions: tuple[Expression, ...], x: Floats) -> Floats:
         q = np.tensordot(self.unwhitening.T, x, axes=1)
-        lookup = {**self.scalars, **dict(zip(self.target.euclidean.variables, q, strict=True))}
+        lookup: dict[Atom, Any] = {**self.scalars, **dict(zip(self.target.euclidean.variables, q, strict=True))}
         with np.errstate(all="ignore"):
             return np.stack(
                 [np.broadcast_to(np.asarray(e.evaluate(lookup, np), float), x.shape[1:]) for e in expressions]

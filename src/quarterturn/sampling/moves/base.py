@@ -23,7 +23,7 @@ class Tuning(NamedTuple):
     centre: Array  # (C,), the point about which the reference flow rotates, whitened
     rotations: Array  # (TRAJECTORY_LIMIT + 1,), angles of the exact flow [rad]
     kicks: Array  # (TRAJECTORY_LIMIT,), weights of the kicks [rad]
-    count: Array  # (), number of kicks in use
+    used: Array  # (), number of kicks in use
     segments: Array  # (), whether the segment flip is used
 
 

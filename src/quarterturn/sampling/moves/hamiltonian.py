@@ -4,6 +4,10 @@ The velocity v has covariance D^-1 with D the reference form, so that H_0 = 1/2 
 each Fourier mode by the same angle and slow modes decorrelate as fast as fast ones; what is left of the action kicks
 v by -D^-1 grad S_int, one pair of Fourier transforms a kick.
 
+The mean of an angle has no place to rotate about: it drifts freely and is kicked by the whole force, so that the
+trajectory commutes with shifts by whole periods. (Were it not so, bringing the mean back to [-P/2, P/2) between
+trajectories would break detailed balance.)
+
 Sources: Duane et al., Phys. Lett. B 195 (1987) 216; mass matrix as the form itself: Batrouni et al., Phys. Rev. D 32
 (1985) 2736 (Fourier acceleration).
 """
@@ -14,6 +18,7 @@ from dataclasses import dataclass
 
 import jax
 import jax.numpy as jnp
+import numpy as np
 from jax import Array
 
 from quarterturn.compiled.target import Parameters, PathState, Target, ahead
@@ -60,17 +65,28 @@ class HamiltonianMove:
 
         def rotate(y: Array, v: Array, angle: Array) -> tuple[Array, Array]:
             cosine, sine = jnp.cos(angle * scale), jnp.sin(angle * scale)
-            return y * cosine + v * sine, v * cosine - y * sine
+            turned, speed = y * cosine + v * sine, v * cosine - y * sine
+            if self.target.angles:
+                middle, drift = self.free_part(y), self.free_part(v)
+                turned = turned + middle * (1 - cosine) + drift * (angle * scale - sine)
+                speed = speed + middle * sine + drift * (1 - cosine)
+            return turned, speed
 
         def kicked(i: Array, carry: tuple[Array, Array]) -> tuple[Array, Array]:
             y, v = carry
-            slope = self.target.force(state._replace(x=y + centre), p) - omega2 * y
+            bound = y - self.free_part(y) if self.target.angles else y
+            slope = self.target.force(state._replace(x=y + centre), p) - omega2 * bound
             push = jnp.fft.irfft(jnp.fft.rfft(slope, axis=-1) * propagator, n=self.target.sites, axis=-1)
             return rotate(y, v - tuning.kicks[i] * scale * push, tuning.rotations[i + 1])
 
         y, v = rotate(state.x - centre, v, tuning.rotations[0])
-        y, v = jax.lax.fori_loop(0, tuning.count, kicked, (y, v))
+        y, v = jax.lax.fori_loop(0, tuning.used, kicked, (y, v))
         return y + centre, v
+
+    def free_part(self, y: Array) -> Array:
+        """Means of the components that a whole turn of some angle shifts, zero for others, (chains, C, 1)."""
+        shifted = jnp.asarray(np.any(self.target.coupled[:, list(self.target.angles)], axis=1))
+        return jnp.where(shifted[:, None], jnp.mean(y, axis=-1, keepdims=True), 0.0)
 
     def recentred(self, state: PathState, p: Parameters) -> PathState:
         """Shift lifted angles by whole periods so that their mean is near zero; the physics does not change."""
