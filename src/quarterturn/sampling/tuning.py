@@ -31,6 +31,7 @@ SEGMENT_COST = 2.0
 QUARTER = 1.5  # angle of a trajectory that forgets the reference paths: pi/2, a little less for the jitter
 SETTLING = (0.6, 0.95)  # acceptance that settling aims at
 SETTLING_BLOCKS = 24
+RARE_KINKS = 0.9  # share of chains with kinks from which the trajectory may be left to make them
 TRIAL_SAMPLES = 2048  # draws of all chains together that a trial counts
 TRIAL_BLOCKS = 4  # the most blocks of a trial
 INTEGRATORS = {s.name: s for s in (LEAPFROG, MINIMUM_NORM)}
@@ -158,6 +159,12 @@ class WarmUp:
         curvature = self.points.curvature(x).mean(axis=(1, 2))
         return replace(recipe, frequency_squared=_admissible(curvature, recipe, self.points.beta))
 
+    def crossing(self) -> float:
+        """Share of chains whose path is on both sides of a sign symmetry: rare where kinks are, which need the flips."""
+        q = np.tensordot(self.points.unwhitening.T, np.moveaxis(np.asarray(self.state.x), 1, 0), axes=1)
+        flipping = np.any(np.asarray(self.program.target.euclidean.symmetries) < 0, axis=0)
+        return float(np.mean(np.any(q.min(axis=-1) * q.max(axis=-1) < 0, axis=0, where=flipping[:, None])))
+
     def try_all(self, candidates: Iterable[Recipe], best: Trial | None) -> Trial | None:
         """The best of the candidates and of `best`, each from the paths at hand and with the same random numbers.
 
@@ -251,7 +258,7 @@ def tune(warm_up: WarmUp, first: Recipe) -> Recipe:
     others += [recipe.with_kicks(MINIMUM_NORM.name, n) for n in {recipe.kicks, recipe.kicks * 2 // 3} if n > 1]
     others += [replace(recipe, angle=recipe.angle * factor) for factor in (0.75, 1.3)]
     best = warm_up.try_all(others, best) or best
-    if segments:
+    if segments and warm_up.crossing() > RARE_KINKS:
         best = warm_up.try_all([replace(best.recipe, segments=False)], best) or best
     return best.recipe
 
