@@ -10,8 +10,8 @@ from typing import Any
 import numpy as np
 import pytest
 
-from quarterturn.action.expression import ONE, ZERO, Expression, PathAtom, Symbol
-from quarterturn.action.model import Bracket, EuclideanAction
+from quarterturn.actions.expression import ONE, ZERO, Expression, PathAtom, Symbol
+from quarterturn.actions.model import Bracket, EuclideanAction
 from quarterturn.compiled.observables import Observables
 from quarterturn.compiled.target import Target
 from quarterturn.sampling.program import Program, program_for

@@ -13,8 +13,8 @@ import jax
 import numpy as np
 import pytest
 
-from quarterturn.action.expression import ONE, PI, ZERO, Expression, Function, PathAtom, Symbol, apply
-from quarterturn.action.model import Bracket
+from quarterturn.actions.expression import ONE, PI, ZERO, Expression, Function, PathAtom, Symbol, apply
+from quarterturn.actions.model import Bracket
 from quarterturn.compiled.observables import Observables
 from quarterturn.compiled.target import Target
 from quarterturn.errors import ActionError, RequestError

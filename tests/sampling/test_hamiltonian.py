@@ -11,7 +11,7 @@ import numpy as np
 import pytest
 from scipy.special import erfc
 
-from quarterturn.action.expression import ONE, PI, Expression, PathAtom, apply
+from quarterturn.actions.expression import ONE, PI, Expression, PathAtom, apply
 from quarterturn.compiled.precision import double
 from quarterturn.compiled.target import Parameters, PathState, Target
 from quarterturn.sampling.integrators.leapfrog import LEAPFROG

@@ -17,7 +17,7 @@ import numpy as np
 import pytest
 from scipy.special import iv
 
-from quarterturn.action.expression import ONE, PI, Expression, PathAtom, Symbol, apply
+from quarterturn.actions.expression import ONE, PI, Expression, PathAtom, Symbol, apply
 from quarterturn.compiled.precision import double
 from quarterturn.compiled.target import PathState, Target
 from quarterturn.sampling.moves.base import Move, Tuning

@@ -13,8 +13,8 @@ from functools import cached_property
 import jax.numpy as jnp
 from jax import Array
 
-from quarterturn.action.expression import Atom, Expression, Function, Symbol
-from quarterturn.action.model import Bracket
+from quarterturn.actions.expression import Atom, Expression, Function, Symbol
+from quarterturn.actions.model import Bracket
 from quarterturn.compiled.target import Parameters, PathState, Target
 from quarterturn.errors import RequestError
 

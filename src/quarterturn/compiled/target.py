@@ -18,8 +18,8 @@ import jax.numpy as jnp
 import numpy as np
 from jax import Array
 
-from quarterturn.action.expression import Atom, Expression, Symbol
-from quarterturn.action.model import EuclideanAction
+from quarterturn.actions.expression import Atom, Expression, Symbol
+from quarterturn.actions.model import EuclideanAction
 from quarterturn.errors import ActionError
 
 

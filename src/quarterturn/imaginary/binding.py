@@ -10,8 +10,8 @@ from collections.abc import Callable, Mapping
 import numpy as np
 from numpy.typing import NDArray
 
-from quarterturn.action.expression import Atom, Expression, Symbol
-from quarterturn.action.model import EuclideanAction
+from quarterturn.actions.expression import Atom, Expression, Symbol
+from quarterturn.actions.model import EuclideanAction
 from quarterturn.imaginary.problem import OnePath
 
 Floats = NDArray[np.float64]

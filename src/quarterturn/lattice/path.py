@@ -10,7 +10,7 @@ lifts gives each link the heat kernel of the circle, so that a free rotor has no
 
 from dataclasses import dataclass
 
-from quarterturn.action.model import EuclideanAction
+from quarterturn.actions.model import EuclideanAction
 from quarterturn.errors import RequestError
 
 SMALLEST = 3  # two sites would count each link twice

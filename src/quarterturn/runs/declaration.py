@@ -5,8 +5,8 @@ from __future__ import annotations
 from dataclasses import dataclass, fields
 from typing import Any
 
-from quarterturn.action.declare import declare
-from quarterturn.action.model import Action
+from quarterturn.actions.declare import declare
+from quarterturn.actions.model import Action
 from quarterturn.errors import ActionError
 from quarterturn.reports.action_card import ActionCard, action_bundle, render_text
 from quarterturn.runs.settings import LATTICE_WORDS

@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from quarterturn.action.model import EuclideanAction, Measurement
+from quarterturn.actions.model import EuclideanAction, Measurement
 from quarterturn.errors import SpectrumError
 from quarterturn.estimates.estimate import Estimate
 from quarterturn.imaginary.binding import local_function, one_path

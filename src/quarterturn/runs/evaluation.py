@@ -12,8 +12,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from quarterturn.action.expression import Atom, Expression, Symbol
-from quarterturn.action.model import Bracket, EuclideanAction, Measurement
+from quarterturn.actions.expression import Atom, Expression, Symbol
+from quarterturn.actions.model import Bracket, EuclideanAction, Measurement
 from quarterturn.errors import EstimateError
 from quarterturn.estimates.correlators import GapResult, gap
 from quarterturn.estimates.curves import LinearCurve

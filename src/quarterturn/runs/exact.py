@@ -11,8 +11,8 @@ from collections.abc import Mapping
 import numpy as np
 from numpy.typing import NDArray
 
-from quarterturn.action.expression import Atom, Expression, Function, Symbol
-from quarterturn.action.model import Bracket, EuclideanAction, Measurement
+from quarterturn.actions.expression import Atom, Expression, Function, Symbol
+from quarterturn.actions.model import Bracket, EuclideanAction, Measurement
 from quarterturn.compiled.observables import lattice_offsets
 from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.binding import local_function, one_path

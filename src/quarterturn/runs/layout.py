@@ -9,8 +9,8 @@ from fractions import Fraction
 import numpy as np
 from numpy.typing import NDArray
 
-from quarterturn.action.expression import Expression
-from quarterturn.action.model import Bracket, EuclideanAction, Measurement
+from quarterturn.actions.expression import Expression
+from quarterturn.actions.model import Bracket, EuclideanAction, Measurement
 from quarterturn.compiled.observables import Observables, lattice_offsets
 from quarterturn.compiled.target import Target
 

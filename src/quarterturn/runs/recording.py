@@ -7,7 +7,7 @@ from typing import Any
 
 import numpy as np
 
-from quarterturn.action.model import Action
+from quarterturn.actions.model import Action
 from quarterturn.estimates.estimate import CurveEstimate, Estimate
 from quarterturn.records.schema import SCHEMA, environment, validate
 from quarterturn.runs.settings import Settings

@@ -8,8 +8,8 @@ from typing import Any
 
 import numpy as np
 
-from quarterturn.action.measurements import measurement_label
-from quarterturn.action.model import Action
+from quarterturn.actions.measurements import measurement_label
+from quarterturn.actions.model import Action
 from quarterturn.errors import RequestError
 from quarterturn.estimates.correlators import GapResult
 from quarterturn.estimates.estimate import UNRESOLVED, CurveEstimate, Estimate

@@ -11,9 +11,9 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from quarterturn.action.expression import Atom, Symbol
-from quarterturn.action.measurements import measurement_label
-from quarterturn.action.model import Action, Measurement
+from quarterturn.actions.expression import Atom, Symbol
+from quarterturn.actions.measurements import measurement_label
+from quarterturn.actions.model import Action, Measurement
 from quarterturn.compiled.target import Target
 from quarterturn.errors import RequestError
 from quarterturn.estimates.checks import warnings as error_warnings

@@ -13,8 +13,8 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
-from quarterturn.action.findings import check
-from quarterturn.action.model import Action, Finding
+from quarterturn.actions.findings import check
+from quarterturn.actions.model import Action, Finding
 from quarterturn.errors import ActionError, RequestError
 
 LATTICE_WORDS = ("a", "beta", "sites")

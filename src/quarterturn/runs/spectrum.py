@@ -9,9 +9,9 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from quarterturn.action.expression import Atom, Symbol
-from quarterturn.action.measurements import measurement_label
-from quarterturn.action.model import Action, Bracket, Measurement
+from quarterturn.actions.expression import Atom, Symbol
+from quarterturn.actions.measurements import measurement_label
+from quarterturn.actions.model import Action, Bracket, Measurement
 from quarterturn.errors import RequestError, SpectrumError
 from quarterturn.estimates.estimate import CurveEstimate
 from quarterturn.imaginary.binding import local_function, one_path

@@ -7,7 +7,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from quarterturn.action.expression import Atom, Expression
+from quarterturn.actions.expression import Atom, Expression
 from quarterturn.compiled.target import Parameters, Target
 
 Floats = NDArray[np.float64]
@@ -54,3 +54,16 @@ class PointAction:
             return np.stack(
                 [np.broadcast_to(np.asarray(e.evaluate(lookup, np), float), x.shape[1:]) for e in expressions]
             )
+
+
+def lowest_frequency_squared(points: PointAction) -> Floats:
+    """Smallest useful Omega^2, (C,): 0 on the line; for an angle the one with which its mean drifts half round.
+
+    A free mean moves by the angle of a trajectory, about 3/2, times a velocity of variance 1 / (beta Omega^2).
+    """
+    target = points.target
+    if not target.angles:
+        return np.zeros(target.components)
+    circumference = np.linalg.norm(np.linalg.inv(points.unwhitening).T * target.periods, axis=1)
+    round_ = np.where(circumference > 0, 9 / (points.beta * np.where(circumference > 0, circumference, 1.0) ** 2), 0.0)
+    return np.maximum(round_, points.beta**-2)

@@ -1,7 +1,7 @@
-"""A first reference form from the potential alone: the best Gaussian path at zero temperature.
+"""A first reference form from the potential alone: the best Gaussian path at the temperature of the path.
 
-Minimises Omega/4 + <V>_G over centre and frequency, the Gaussian variational energy of the whitened variables (the
-Feynman-Jensen bound; Feynman, Statistical Mechanics, 1972, ch. 3). It only starts the warm-up, which then measures.
+Minimises the Gibbs-Bogoliubov bound F_0 + <V - 1/2 Omega^2 (x - c)^2>_0 over centre and frequency of the whitened
+variables (Feynman, Statistical Mechanics, 1972, ch. 3). It only starts the warm-up, which then measures.
 """
 
 from __future__ import annotations
@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.optimize import minimize
 
-from quarterturn.sampling.points import PointAction
+from quarterturn.sampling.points import PointAction, lowest_frequency_squared
 
 Floats = NDArray[np.float64]
 NODES = 24
@@ -31,24 +31,24 @@ def _directions(components: int) -> tuple[Floats, Floats]:
 
 
 def gaussian_reference(points: PointAction) -> tuple[Floats, Floats]:
-    """(Omega^2, centre), each (C,), of the variational Gaussian of a potential.
-
-    Omega is bounded below by 1/beta, the slowest thing that a periodic path of this extent can feel.
-    """
-    components = points.target.components
+    """(Omega^2, centre), each (C,), of the best Gaussian; one frequency for all variables."""
+    components, beta = points.target.components, points.beta
     nodes, weights = _directions(components)
 
-    def energy(v: Floats) -> float:
+    def bound(v: Floats) -> float:
         omega = math.exp(min(max(v[0], -LOG_LIMIT), LOG_LIMIT))
-        value = points.potential(v[1:, None] + nodes.T / math.sqrt(2 * omega))
+        half = beta * omega / 2
+        spread = 1 / (2 * omega * math.tanh(half))
+        free = (half + math.log1p(-math.exp(-2 * half))) / beta
+        value = points.potential(v[1:, None] + nodes.T * math.sqrt(spread))
         mean = float(np.sum(weights * np.where(np.isfinite(value), np.clip(value, -1e30, 1e30), 1e30)))
-        return components * omega / 4 + mean
+        return mean + components * (free - omega**2 * spread / 2)
 
-    best = min((np.array([s, *c]) for s in np.linspace(-14, 14, 29) for c in _centres(components)), key=energy)
-    found = minimize(energy, best, method="Powell", options={"maxiter": 30, "xtol": 1e-3, "ftol": 1e-6})
-    v = found.x if energy(found.x) <= energy(best) else best
-    omega = max(math.exp(float(np.clip(v[0], -LOG_LIMIT, LOG_LIMIT))), 1 / points.beta)
-    return np.full(components, omega**2), np.asarray(v[1:])
+    best = min((np.array([s, *c]) for s in np.linspace(-14, 14, 29) for c in _centres(components)), key=bound)
+    found = minimize(bound, best, method="Powell", options={"maxiter": 10, "xtol": 1e-2, "ftol": 1e-4})
+    v = found.x if bound(found.x) <= bound(best) else best
+    omega = math.exp(float(np.clip(v[0], -LOG_LIMIT, LOG_LIMIT)))
+    return np.maximum(np.full(components, omega**2), lowest_frequency_squared(points)), np.asarray(v[1:])
 
 
 def _centres(components: int) -> list[Floats]:

@@ -22,7 +22,7 @@ from quarterturn.sampling.integrators.leapfrog import LEAPFROG
 from quarterturn.sampling.integrators.minimum_norm import MINIMUM_NORM
 from quarterturn.sampling.moves.base import TRAJECTORY_LIMIT, Tuning
 from quarterturn.sampling.moves.segment_flip import SegmentFlip
-from quarterturn.sampling.points import PointAction
+from quarterturn.sampling.points import PointAction, lowest_frequency_squared
 from quarterturn.sampling.program import BLOCK, BlockOutput, Program
 
 Floats = NDArray[np.float64]
@@ -30,9 +30,11 @@ FIXED_COST = 2.5  # a draw without kicks, in units of a kick (benchmarks: `sweep
 SEGMENT_COST = 2.0
 QUARTER = 1.5  # angle of a trajectory that forgets the reference paths: pi/2, a little less for the jitter
 SETTLING = (0.6, 0.95)  # acceptance that settling aims at
+STUCK = 0.02  # mean exp(-dH) of a chain over a block below which it has hardly moved
+FEWEST_ACCEPTED = 0.6  # of a recipe that may be frozen, where any was found
 SETTLING_BLOCKS = 24
 RARE_KINKS = 0.9  # share of chains with kinks from which the trajectory may be left to make them
-TRIAL_SAMPLES = 2048  # draws of all chains together that a trial counts
+TRIAL_SAMPLES = 3072  # draws of all chains together that a trial counts
 TRIAL_BLOCKS = 4  # the most blocks of a trial
 INTEGRATORS = {s.name: s for s in (LEAPFROG, MINIMUM_NORM)}
 
@@ -89,7 +91,7 @@ class Trial:
 
     @property
     def score(self) -> float:
-        return self.efficiency / self.recipe.cost
+        return min(1.0, self.acceptance / FEWEST_ACCEPTED) ** 4 * self.efficiency / self.recipe.cost
 
 
 class WarmUp:
@@ -122,42 +124,59 @@ class WarmUp:
         return outputs
 
     def settle(self, recipe: Recipe, fewest: int) -> Recipe:
-        """Equilibrate with a step that follows the acceptance; on until it lies in the range, or the limit is met."""
+        """Equilibrate with a step that follows the acceptance; on until it lies in the range and no chain is stuck.
+
+        A chain that began high on a steep wall would be rejected for ever: it is freed by much shorter steps.
+        """
         low, high = SETTLING
         for round_ in range(SETTLING_BLOCKS):
             out = self.run(recipe, 1)
             if not out:
                 break
-            accepted = float(out[0].accepted[0])
-            if low <= accepted and round_ >= fewest:
+            accepted, stuck = float(out[0].accepted[0]), bool(np.any(out[0].exp_change < STUCK))
+            if accepted >= low and not stuck and round_ >= fewest:
                 break
             if accepted < low:
                 recipe = _shorter(recipe, 2.0 if accepted < low / 3 else 1.4)
+            elif stuck:
+                careful = replace(recipe, angle=recipe.angle / 4, steps=min(2 * recipe.steps, TRAJECTORY_LIMIT // 2))
+                self.run(careful, 1)
             elif accepted > high:
                 recipe = _longer(recipe)
         return recipe
 
     def measure_reference(self, recipe: Recipe) -> Recipe:
-        """Omega^2 = <(x - c) dV/dx> / <(x - c)^2>, the linear force that the samples show, and their centre."""
+        """Omega^2 = <(x - c) dV/dx> / <(x - c)^2>, the linear force that the samples show, and their centre.
+
+        An angle has no centre, and its force no linear part: there the curvature serves.
+        """
         target = self.program.target
         if target.angles:
-            return recipe
-        x = np.moveaxis(np.asarray(self.state.x), 1, 0)
+            return self.local_reference(recipe)
+        x = self._samples()
         mirrored = np.all(np.asarray(target.euclidean.symmetries).reshape(-1, target.components) < 0, axis=1).any()
         centre = np.zeros(target.components) if mirrored else x.mean(axis=(1, 2))
         y = x - centre[:, None, None]
         ratio = (y * self.points.gradient(x)).mean(axis=(1, 2)) / (y * y).mean(axis=(1, 2))
-        return replace(
-            recipe,
-            frequency_squared=_admissible(ratio, recipe, self.points.beta),
-            centre=tuple(float(v) for v in centre),
-        )
+        return replace(self._referring(recipe, ratio), centre=tuple(float(v) for v in centre))
 
     def local_reference(self, recipe: Recipe) -> Recipe:
         """Omega^2 = <d^2 V/dx^2>, how paths vibrate where they are: larger than the linear force in separate wells."""
-        x = np.moveaxis(np.asarray(self.state.x), 1, 0)
-        curvature = self.points.curvature(x).mean(axis=(1, 2))
-        return replace(recipe, frequency_squared=_admissible(curvature, recipe, self.points.beta))
+        return self._referring(recipe, self.points.curvature(self._samples()).mean(axis=(1, 2)))
+
+    def _samples(self) -> Floats:
+        """All points of all whitened paths, ramps included, (C, chains, sites)."""
+        target, state = self.program.target, self.state
+        ramp = np.asarray(state.winding)[..., None] * (target.periods[:, None] * np.arange(target.sites) / target.sites)
+        whitening = np.linalg.inv(self.points.unwhitening)
+        return np.moveaxis(np.asarray(state.x), 1, 0) + np.tensordot(whitening.T, np.moveaxis(ramp, 1, 0), axes=1)
+
+    def _referring(self, recipe: Recipe, measured: Floats) -> Recipe:
+        """The recipe with measured frequencies, not below the lowest useful ones; the old where they aren't positive."""
+        old, lowest = np.array(recipe.frequency_squared), lowest_frequency_squared(self.points)
+        usable = np.isfinite(measured) & ((measured > 0) | (lowest > 0))
+        found = np.where(usable, np.maximum(measured, lowest), old)
+        return replace(recipe, frequency_squared=tuple(float(v) for v in found))
 
     def crossing(self) -> float:
         """Share of chains whose path is on both sides of a sign symmetry: rare where kinks are, which need the flips."""
@@ -190,27 +209,27 @@ class WarmUp:
         return best
 
 
-def _admissible(measured: Floats, recipe: Recipe, beta: float) -> tuple[float, ...]:
-    """Frequencies that a path of this extent can feel; the old ones where the measured ones aren't positive."""
-    old = np.array(recipe.frequency_squared)
-    usable = np.isfinite(measured) & (measured > 0)
-    return tuple(float(v) for v in np.where(usable, np.maximum(measured, beta**-2), old))
-
-
 def _efficiency(series: Floats) -> float:
-    """(1 - rho) / (1 + rho) of the slowest column of (draws, chains, columns), rho the lag-one autocorrelation.
+    """Effective samples per draw, 1 / (2 tau), of the slowest column of (draws, chains, columns).
 
-    What noise alone would give, 1.5 / sqrt(samples), is taken off rho, so that equals are told apart by their cost.
+    tau = 1/2 + sum of the autocorrelations, summed until they fall below what noise gives (1.5 / sqrt(samples)),
+    which is also taken off each, so that equals are told apart by their cost.
     """
     centred = series - series.mean(axis=(0, 1))
     variance = (centred**2).mean(axis=(0, 1))
-    lagged = (centred[1:] * centred[:-1]).mean(axis=(0, 1))
     moving = variance > 1e-24 * (1 + series.mean(axis=(0, 1)) ** 2)
     if not moving.any():
         return 0.0
+    centred = centred[:, :, moving] / np.sqrt(variance[moving])
     noise = 1.5 / np.sqrt(series.shape[0] * series.shape[1])
-    rho = np.clip(lagged[moving] / variance[moving] - noise, 0.0, 1.0)
-    return float(np.min((1 - rho) / (1 + rho)))
+    tau, open_ = np.full(centred.shape[2], 0.5), np.full(centred.shape[2], True)
+    for lag in range(1, len(series) // 2):
+        rho = np.mean(centred[lag:] * centred[:-lag], axis=(0, 1)) - noise
+        open_ &= rho > 0
+        tau += np.where(open_, rho, 0.0)
+        if not open_.any():
+            break
+    return float(np.min(0.5 / tau))
 
 
 def _shorter(recipe: Recipe, factor: float) -> Recipe:

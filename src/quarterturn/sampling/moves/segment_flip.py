@@ -21,7 +21,7 @@ from jax import Array
 from quarterturn.compiled.target import Parameters, PathState, Target, ahead
 from quarterturn.sampling.moves.base import MoveInfo, Tuning
 from quarterturn.sampling.moves.sign_flip import chosen_symmetry, flipped
-from quarterturn.sampling.random import coins_and_uniforms
+from quarterturn.sampling.random import coins_and_uniforms, log
 
 LINKS, CHOICES = 0, 1  # streams of random numbers
 WORD = 32
@@ -35,7 +35,7 @@ def segment_flips(broken: Array, coins: Array, first: Array) -> Array:
     first site, that is the uniform distribution over segment flips. Computed on 32 sites at a time, as bits of words.
     """
     sites = broken.shape[-1]
-    breaks, change = _packed(broken), _packed(broken & coins)
+    breaks, change = _packed(broken, broken & coins)
     place = jnp.where(breaks != 0, jnp.arange(1, breaks.shape[-1] + 1), 0)
     final = (place == jnp.max(place, axis=-1, keepdims=True)) & (breaks != 0)
     last = jnp.where(final, np.uint32(1 << 31) >> jax.lax.clz(breaks), np.uint32(0))
@@ -52,12 +52,13 @@ def segment_flips(broken: Array, coins: Array, first: Array) -> Array:
     return bits.reshape(*bits.shape[:-2], -1)[..., :sites] == 1
 
 
-def _packed(flags: Array) -> Array:
-    """Flags (…, sites) as bits of 32-bit words, lowest first, (…, words)."""
-    rest = -flags.shape[-1] % WORD
-    padded = jnp.pad(flags, [(0, 0)] * (flags.ndim - 1) + [(0, rest)])
-    bits = padded.reshape(*flags.shape[:-1], -1, WORD).astype(jnp.uint32)
-    return jnp.sum(bits << jnp.arange(WORD, dtype=jnp.uint32), axis=-1, dtype=jnp.uint32)
+def _packed(low: Array, high: Array) -> tuple[Array, Array]:
+    """Two arrays of flags (…, sites) as bits of 32-bit words, lowest first, (…, words); in one pass over both."""
+    rest = [(0, 0)] * (low.ndim - 1) + [(0, -low.shape[-1] % WORD)]
+    both = jnp.pad(low.astype(jnp.uint64) | (high.astype(jnp.uint64) << np.uint64(WORD)), rest)
+    bits = both.reshape(*low.shape[:-1], -1, WORD) << jnp.arange(WORD, dtype=jnp.uint64)
+    words = jnp.sum(bits, axis=-1, dtype=jnp.uint64)
+    return words.astype(jnp.uint32), (words >> np.uint64(WORD)).astype(jnp.uint32)
 
 
 @dataclass(frozen=True)
@@ -70,17 +71,28 @@ class SegmentFlip:
     def name(self) -> str:
         return "segment flips"
 
-    def flip(self, key: Array, state: PathState, p: Parameters) -> PathState:
-        chains, _, sites = state.x.shape
-        first, chance = coins_and_uniforms(key, (chains,), CHOICES)
-        coins, uniform = coins_and_uniforms(key, (chains, sites), LINKS)
-        mirror = flipped(self.target, state.x, chosen_symmetry(self.target, chance[0]), p)
-        following = ahead(state.x)
-        cost = jnp.sum((following - mirror) ** 2 - (following - state.x) ** 2, axis=-2) / (2 * p.spacing)
-        turn = segment_flips(uniform < jnp.exp(-jnp.maximum(cost, 0.0)), coins, first)
-        return self.target.state(jnp.where(turn[:, None, :], mirror, state.x), state.winding, p)
+    def links(self, key: Array, x: Array, sigma: Array, p: Parameters) -> Array:
+        """0 for a bonded link, 1 or 2 (the coin) for a broken one, (chains, sites).
+
+        A link is broken with probability exp(-cost): when an exponential variable exceeds its cost.
+        """
+        coins, uniform = coins_and_uniforms(key, (x.shape[0], x.shape[2]), LINKS)
+        following, mirror = ahead(x), flipped(self.target, x, sigma, p)
+        cost = jnp.sum((following - mirror) ** 2 - (following - x) ** 2, axis=-2) / (2 * p.spacing)
+        return jnp.where(-log(uniform) > cost, 1 + coins.astype(jnp.int32), 0)
 
     def step(self, key: Array, state: PathState, p: Parameters, tuning: Tuning) -> tuple[PathState, MoveInfo]:
-        state = jax.lax.cond(tuning.segments, lambda s: self.flip(key, s, p), lambda s: s, state)
-        chains = state.x.shape[0]
+        chains, _, sites = state.x.shape
+        first, chance = coins_and_uniforms(key, (chains,), CHOICES)
+        sigma = chosen_symmetry(self.target, chance[0])
+        none = jnp.zeros((chains, sites), jnp.int32)
+        # two conditions: what the first one makes is finished, site by site at full speed, before the second packs it
+        links = jax.lax.cond(tuning.segments, lambda: self.links(key, state.x, sigma, p), lambda: none)
+
+        def flip() -> PathState:
+            turn = segment_flips(links > 0, links > 1, first)[:, None, :]
+            x = jnp.where(turn, flipped(self.target, state.x, sigma, p), state.x)
+            return self.target.state(x, state.winding, p)
+
+        state = jax.lax.cond(tuning.segments, flip, lambda: state)
         return state, MoveInfo(jnp.ones(chains), jnp.zeros(chains))

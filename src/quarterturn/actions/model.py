@@ -10,7 +10,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from fractions import Fraction
 
-from quarterturn.action.expression import Expression, PathAtom
+from quarterturn.actions.expression import Expression, PathAtom
 from quarterturn.errors import Span
 
 
@@ -85,12 +85,13 @@ class Measurement:
     brackets: tuple[Bracket, ...]
     formula: Expression
     operators: tuple[Expression, ...] = ()
+    source: str = ""  # canonical notation of the whole item, such as G(t) = <q(t) q(0)>
     span: Span | None = field(default=None, compare=False)
 
 
 @dataclass(frozen=True, slots=True)
 class Finding:
-    """Something the turn found out. severity: fatal (the integral diverges) | note."""
+    """Something the turn found out. severity: fatal (the integral diverges) | unconfined (on a periodic lattice) | note."""
 
     severity: str
     topic: str  # kinetic | bounded | phase | couplings | ordering | notation

@@ -1,0 +1,77 @@
+"""What the turn found out about an action, in the trade's words; asked again at every change of couplings."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+from quarterturn.actions.boundedness import confinement
+from quarterturn.actions.expression import Atom, Expression, Symbol
+from quarterturn.actions.model import EuclideanAction, Finding
+from quarterturn.actions.printing import notation
+from quarterturn.actions.turn import velocity
+
+
+def check(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> tuple[Finding, ...]:
+    """Findings that depend on the values of the couplings: kinetic form, boundedness, confinement.
+
+    severity "fatal": the path integral diverges; "unconfined": it diverges on a periodic lattice, though levels below
+    the continuum may exist; "note": worth knowing.
+    """
+    found = list(_kinetic(euclidean, couplings))
+    circles = tuple(p is not None for p in euclidean.periods)
+    verdict = confinement(euclidean.potential, euclidean.variables, circles, couplings)
+    if verdict.verdict == "unbounded":
+        found.append(Finding("fatal", "bounded", f"not bounded below: {verdict.words}"))
+    elif verdict.verdict == "flat":
+        found.append(Finding("unconfined", "bounded", f"not confining: {verdict.words}"))
+    elif verdict.verdict == "undecided":
+        found.append(Finding("note", "bounded", f"boundedness is undecided: {verdict.words}"))
+    return tuple(found)
+
+
+def _kinetic(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> list[Finding]:
+    import numpy as np
+
+    lookup: dict[Atom, float] = {Symbol("coupling", n): v for n, v in couplings.items()}
+    with np.errstate(all="ignore"):
+        mass = np.array([[float(k.evaluate(lookup, np)) for k in row] for row in euclidean.mass])
+    found = []
+    if not np.isfinite(mass).all():
+        return [Finding("fatal", "kinetic", "the mass in the kinetic term is not a finite number at these couplings")]
+    for i, variable in enumerate(euclidean.variables):
+        name = notation(Expression.of(variable))
+        if mass[i, i] == 0:
+            found.append(
+                Finding("fatal", "kinetic", f"{name} has no kinetic term: L needs a term such as 1/2 {name}'^2")
+            )
+        elif mass[i, i] < 0:
+            term = notation(Expression.number(1) * euclidean.mass[i][i] * Expression.of(velocity(variable), 2))
+            found.append(
+                Finding(
+                    "fatal",
+                    "kinetic",
+                    f"kinetic form not positive: after the turn {name} has the kinetic term 1/2 ({term}), which is "
+                    f"negative, so that exp(-S_E) grows with every wiggle of the path; L is kinetic minus potential "
+                    f"energy, + 1/2 {name}'^2, and a change of the overall sign would mend it",
+                )
+            )
+    if not found and np.linalg.eigvalsh(mass).min() <= 0:
+        found.append(
+            Finding("fatal", "kinetic", "kinetic form not positive: a combination of the velocities has no, or a negative, mass")
+        )
+    return found
+
+
+def phase_finding(euclidean: EuclideanAction) -> tuple[Finding, ...]:
+    """The imaginary part of the action, where there is one."""
+    phase = euclidean.phase
+    if phase is None:
+        return ()
+    return (
+        Finding(
+            "note",
+            "phase",
+            f"the weight is complex: L_E has the imaginary term i ({notation(phase)}); averages are taken by reweighting "
+            "with the phase, whose average is measured first",
+        ),
+    )

@@ -1,0 +1,173 @@
+"""From a body of notation to statements: split, tell apart, read the formulas, complain in the trade's words."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from fractions import Fraction
+from functools import cache
+from importlib.resources import files
+from typing import Any
+
+from quarterturn.errors import NotationError
+from quarterturn.notation.complaints import unexpected
+from quarterturn.notation.tokens import Lexeme, Source, lexemes
+from quarterturn.notation.tree import (
+    Average,
+    Call,
+    Component,
+    Dot,
+    Factorial,
+    Mean,
+    Name,
+    Negative,
+    Node,
+    Number,
+    Prime,
+    Product,
+    Quotient,
+    Raised,
+    Sum,
+)
+
+DEEPEST = 60  # brackets inside brackets
+MOST_TOKENS = 4000  # in one formula
+
+
+@cache
+def _parser() -> Any:
+    from lark import Lark
+    from lark.lexer import Lexer, Token
+
+    class Feed(Lexer):
+        """Hands tokens on; the reading has been done."""
+
+        def __init__(self, conf: Any) -> None:
+            pass
+
+        def lex(self, data: Any) -> Any:
+            for number, lexeme in enumerate(data):
+                yield Token(lexeme.kind, lexeme.value, start_pos=number, end_pos=number + 1)
+
+    grammar = files("quarterturn.notation").joinpath("grammar.lark").read_text(encoding="utf-8")
+    return Lark(grammar, parser="lalr", lexer=Feed, start="formula", propagate_positions=True)
+
+
+def read_formula(source: Source, start: int, end: int, is_call: Callable[[str, str], bool]) -> Node:
+    """The syntax tree of source.text[start:end]. Raises NotationError with the place."""
+    from lark.exceptions import UnexpectedInput
+
+    tokens = lexemes(source, start, end, is_call)
+    if not tokens:
+        raise source.error("a formula is missing here", max(start, end - 1), end)
+    _check_size(source, tokens)
+    try:
+        tree = _parser().parse(tokens)
+    except UnexpectedInput as trouble:
+        position = getattr(getattr(trouble, "token", None), "start_pos", None)
+        kind = getattr(getattr(trouble, "token", None), "type", "$END")
+        place = len(tokens) if kind == "$END" or position is None else position
+        raise unexpected(source, tokens, place) from None
+    return _Builder(source, tokens).node(tree)
+
+
+def _check_size(source: Source, tokens: list[Lexeme]) -> None:
+    if len(tokens) > MOST_TOKENS:
+        raise source.error(f"a formula of more than {MOST_TOKENS} signs", tokens[0].start, tokens[0].end)
+    depth = 0
+    for token in tokens:
+        depth += (token.kind.endswith("OPEN")) - (token.kind.endswith("CLOSE") or token.kind == "ANGLE_CONNECTED")
+        if depth > DEEPEST:
+            raise source.error(f"brackets nested deeper than {DEEPEST}", token.start, token.end)
+
+
+class _Builder:
+    """The parser's tree as nodes with places."""
+
+    def __init__(self, source: Source, tokens: list[Lexeme]) -> None:
+        self.source, self.tokens = source, tokens
+
+    def node(self, tree: Any) -> Node:
+        """Iterative where chains are long (sums, products), recursive in depth, which is bounded."""
+        chain: list[Any] = []
+        while tree.data in LEFT_CHAINS and len(tree.children) > 1:
+            chain.append(tree)
+            tree = tree.children[0]
+        result = self.single(tree)
+        for outer in reversed(chain):
+            result = self.extended(outer, result)
+        return result
+
+    def span(self, tree: Any) -> Any:
+        first = self.tokens[tree.meta.start_pos]
+        last = self.tokens[tree.meta.end_pos - 1]
+        return self.source.span(first.start, last.end)
+
+    def extended(self, tree: Any, left: Node) -> Node:
+        kind, span = str(tree.data), self.span(tree)
+        right = self.node(tree.children[-1])
+        if kind == "add":
+            return Sum((*(left.terms if isinstance(left, Sum) else (left,)), right), span)
+        if kind == "subtract":
+            minus = Negative(right, right.span)
+            return Sum((*(left.terms if isinstance(left, Sum) else (left,)), minus), span)
+        if kind == "over":
+            return Quotient(left, right, False, span)
+        if kind == "dot":
+            return Dot(left, right, span)
+        if kind == "juxtaposed" and isinstance(left, Quotient):
+            left = Quotient(left.left, left.right, True, left.span)
+        return Product(left, right, span)
+
+    def single(self, tree: Any) -> Node:
+        kind, span, children = str(tree.data), self.span(tree), tree.children
+        match kind:
+            case "number":
+                return Number(self.number(children[0]), span)
+            case "name":
+                return Name(str(children[0]), span)
+            case "call":
+                inside = [c for c in children[2].children if hasattr(c, "data")]
+                return Call(str(children[0]), tuple(self.node(c) for c in inside), span)
+            case "group":
+                return self.node(children[1])
+            case "positive":
+                return self.node(children[1])
+            case "negative":
+                return Negative(self.node(children[1]), span)
+            case "modulus":
+                return Call("abs", (self.node(children[1]),), span)
+            case "average" | "connected":
+                return Average(self.node(children[1]), kind == "connected", span)
+            case "mean":
+                return Mean(self.node(children[1]), span)
+            case "root":
+                return Call("sqrt", (self.node(children[1]),), span)
+            case "derivative":
+                return Prime(self.node(children[1]), span)
+            case "prime":
+                return Prime(self.node(children[0]), span)
+            case "factorial":
+                return Factorial(self.node(children[0]), span)
+            case "component":
+                return Component(self.node(children[0]), self.whole(children[2], span), span)
+            case "power":
+                return Raised(self.node(children[0]), self.node(children[2]), span)
+            case "superscript":
+                return Raised(self.node(children[0]), Number(Fraction(str(children[1])), span), span)
+        raise AssertionError(kind)
+
+    def number(self, token: Any) -> Fraction:
+        text = str(token)
+        lexeme = self.tokens[token.start_pos]
+        if "e" in text.lower() and abs(int(text.lower().split("e")[1])) > 300:
+            raise self.source.error("an exponent beyond 300", lexeme.start, lexeme.end)
+        return Fraction(text)
+
+    def whole(self, token: Any, span: Any) -> int:
+        value = self.number(token)
+        if value.denominator != 1:
+            raise NotationError("a component is a whole number, as in r[2]", span=span, text=self.source.text)
+        return int(value)
+
+
+LEFT_CHAINS = {"add", "subtract", "juxtaposed", "times", "over", "dot"}

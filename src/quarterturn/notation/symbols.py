@@ -1,0 +1,51 @@
+"""The one table of names: functions, constants, Greek letters, words of the notation.
+
+Parser, printer, help and completion read it, so that they can't drift apart.
+"""
+
+FUNCTIONS: dict[str, str] = {
+    "sqrt": "square root",
+    "exp": "exponential",
+    "log": "natural logarithm",
+    "sin": "sine",
+    "cos": "cosine",
+    "tan": "tangent",
+    "sinh": "hyperbolic sine",
+    "cosh": "hyperbolic cosine",
+    "tanh": "hyperbolic tangent",
+    "abs": "modulus, also |x|",
+}
+
+MEASURES: dict[str, str] = {
+    "gap": "energy of the lowest state that the operators create: gap(q), gap(q, q^3)",
+    "binder": "cumulant 1 - <(mean q)^4>/(3 <(mean q)^2>^2): binder(q)",
+    "charge": "winding number of an angle: <charge(theta)^2>",
+}
+
+LATER: dict[str, str] = {
+    "xi2": "the correlation length is a measurement of fields on space, which are not available yet",
+    "sum_x": "a sum over space needs a field on space, which is not available yet",
+    "sum_mu": "a sum over directions needs a field on space, which is not available yet",
+}
+
+CONSTANTS = ("pi",)
+GEOMETRY = ("vol", "beta")  # in measurements
+WORDS = ("L", "LE", "H", "SE", "lattice", "measure", "metric", "units", "mod", "mean", "energy", "t", "d_t", "d")
+
+# Greek letters: typed letter -> name; several spellings of one name
+LETTERS: dict[str, str] = {
+    "α": "alpha", "β": "beta", "γ": "gamma", "δ": "delta", "ε": "epsilon", "ζ": "zeta", "η": "eta", "θ": "theta",
+    "ϑ": "vartheta", "κ": "kappa", "λ": "lam", "μ": "mu", "ν": "nu", "ξ": "xi", "π": "pi", "ρ": "rho", "σ": "sigma",
+    "τ": "tau", "φ": "phi", "ϕ": "phi", "χ": "chi", "ψ": "psi", "ω": "omega", "Γ": "Gamma", "Δ": "Delta", "Θ": "Theta",
+    "Λ": "Lambda", "Ξ": "Xi", "Π": "Pi", "Σ": "Sigma", "Φ": "Phi", "Ψ": "Psi", "Ω": "Omega",
+}  # fmt: skip
+SPELLINGS = {"lambda": "lam"}  # a word that Python keeps for itself
+LATEX_NAMES = {"lam": r"\lambda", **{n: "\\" + n for n in LETTERS.values() if n != "lam"}}
+SUPERSCRIPTS = {"⁰": "0", "¹": "1", "²": "2", "³": "3", "⁴": "4", "⁵": "5", "⁶": "6", "⁷": "7", "⁸": "8", "⁹": "9"}
+FRACTIONS = {"½": (1, 2), "⅓": (1, 3), "¼": (1, 4), "⅔": (2, 3), "¾": (3, 4), "⅙": (1, 6), "⅛": (1, 8)}
+
+
+def canonical_name(name: str) -> str:
+    """One spelling for a name: Greek letters become words, lambda becomes lam."""
+    spelled = "".join(LETTERS.get(letter, letter) for letter in name)
+    return SPELLINGS.get(spelled, spelled)
