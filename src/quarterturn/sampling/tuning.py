@@ -26,8 +26,8 @@ from quarterturn.sampling.points import PointAction, lowest_frequency_squared
 from quarterturn.sampling.program import BLOCK, BlockOutput, Program
 
 Floats = NDArray[np.float64]
-FIXED_COST = 2.5  # a draw without kicks, in units of a kick (benchmarks: `sweep parts`); only the choice depends on it
-SEGMENT_COST = 2.0
+FIXED_COST = 3.5  # a draw without kicks, in units of a kick (benchmarks: `sweep parts`); only the choice depends on it
+SEGMENT_COST = 2.5
 QUARTER = 1.5  # angle of a trajectory that forgets the reference paths: pi/2, a little less for the jitter
 SETTLING = (0.6, 0.95)  # acceptance that settling aims at
 STUCK = 0.02  # mean exp(-dH) of a chain over a block below which it has hardly moved
@@ -192,7 +192,7 @@ class WarmUp:
         wanted = min(TRIAL_BLOCKS, max(2, -(-TRIAL_SAMPLES // (BLOCK * self.program.chains))))
         start, first = self.state, self.blocks
         kept, used = start, first
-        for candidate in candidates:
+        for candidate in dict.fromkeys(candidates):
             if best is not None and 1 / candidate.cost <= best.score:
                 continue
             self.state, self.blocks = start, first
@@ -274,7 +274,7 @@ def tune(warm_up: WarmUp, first: Recipe) -> Recipe:
     best = warm_up.try_all(references, best) or best
     recipe = best.recipe
     others = [recipe.with_kicks(LEAPFROG.name, recipe.kicks - 1)] if recipe.kicks > 1 else []
-    others += [recipe.with_kicks(MINIMUM_NORM.name, n) for n in {recipe.kicks, recipe.kicks * 2 // 3} if n > 1]
+    others += [recipe.with_kicks(MINIMUM_NORM.name, n) for n in (recipe.kicks + 1, recipe.kicks * 2 // 3) if n > 1]
     others += [replace(recipe, angle=recipe.angle * factor) for factor in (0.75, 1.3)]
     best = warm_up.try_all(others, best) or best
     if segments and warm_up.crossing() > RARE_KINKS:
