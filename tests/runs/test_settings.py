@@ -16,7 +16,7 @@ def quartic() -> DeclaredAction:
 
 def test_couplings_and_lattice_have_the_declared_defaults(quartic: DeclaredAction) -> None:
     settings = resolve(quartic, {})
-    assert settings.couplings == {"w": 1.0, "lam": 0.1}
+    assert settings.couplings == {"lam": 0.1, "w": 1.0}
     assert (settings.sites, settings.spacing) == (200, 0.1)
 
 
@@ -37,7 +37,7 @@ def test_beta_and_sites_give_the_spacing(quartic: DeclaredAction) -> None:
 @pytest.mark.parametrize(
     ("keywords", "words"),
     [
-        ({"lamb": 0.2}, "no coupling lamb; its couplings are w, lam"),
+        ({"lamb": 0.2}, "no coupling lamb; its couplings are lam, w"),
         ({"lam": "big"}, "lam must be a number, got 'big'"),
         ({"lam": float("nan")}, "lam must be finite"),
         ({"a": -0.1}, "a must be positive"),

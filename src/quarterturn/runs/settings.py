@@ -88,10 +88,14 @@ def split(action: Action, keywords: Mapping[str, Any]) -> tuple[dict[str, float]
     return couplings, lattice
 
 
-def examined(action: Action, couplings: Mapping[str, float]) -> tuple[Finding, ...]:
-    """The findings at these couplings. Raises ActionError where one of them makes the integral diverge."""
+DIVERGES = ("fatal", "unconfined")  # on a periodic lattice
+NO_SPECTRUM = ("fatal",)  # in the continuum, where bound states may lie below a threshold
+
+
+def examined(action: Action, couplings: Mapping[str, float], stops: tuple[str, ...] = DIVERGES) -> tuple[Finding, ...]:
+    """The findings at these couplings. Raises ActionError at a finding whose severity is among `stops`."""
     findings = check(action.euclidean, couplings)
-    fatal = [f for f in findings if f.severity == "fatal"]
+    fatal = [f for f in findings if f.severity in stops]
     if fatal:
         raise ActionError(fatal[0].message, span=fatal[0].span, text=action.text if fatal[0].span else None)
     return findings

@@ -25,7 +25,7 @@ from quarterturn.reports.report import Curve, Report, Row
 from quarterturn.reports.text import text as render_text
 from quarterturn.runs.exact import ENERGY, ExactColumn
 from quarterturn.runs.recording import base_record
-from quarterturn.runs.settings import Settings, examined, resolve, split
+from quarterturn.runs.settings import NO_SPECTRUM, Settings, examined, resolve, split
 
 Floats = NDArray[np.float64]
 CURVE_POINTS = 101
@@ -163,7 +163,7 @@ def levels(action: Action, *, count: int = 6, spacing: str | None = None, **keyw
     if spacing == "lattice":
         return _lattice(action, resolve(action, keywords), int(count))
     couplings, lattice = split(action, keywords)
-    examined(action, couplings)
+    examined(action, couplings, NO_SPECTRUM)
     beta = lattice.pop("beta", None)
     if lattice:
         raise RequestError(f"{', '.join(lattice)} has no meaning in the continuum: add spacing='lattice'")
