@@ -31,7 +31,7 @@ SEGMENT_COST = 2.5
 QUARTER = 1.5  # angle of a trajectory that forgets the reference paths: pi/2, a little less for the jitter
 SETTLING = (0.6, 0.95)  # acceptance that settling aims at
 STUCK = 0.02  # mean exp(-dH) of a chain over a block below which it has hardly moved
-FEWEST_ACCEPTED = 0.6  # of a recipe that may be frozen, where any was found
+FEWEST_ACCEPTED = 0.7  # of a recipe that may be frozen, where any was found
 SETTLING_BLOCKS = 24
 RARE_KINKS = 0.9  # share of chains with kinks from which the trajectory may be left to make them
 TRIAL_SAMPLES = 3072  # draws of all chains together that a trial counts
@@ -172,14 +172,14 @@ class WarmUp:
         return np.moveaxis(np.asarray(state.x), 1, 0) + np.tensordot(whitening.T, np.moveaxis(ramp, 1, 0), axes=1)
 
     def _referring(self, recipe: Recipe, measured: Floats) -> Recipe:
-        """The recipe with measured frequencies, not below the lowest useful ones; the old where they aren't positive."""
+        """The recipe with measured frequencies, not below the lowest useful ones; else the old."""
         old, lowest = np.array(recipe.frequency_squared), lowest_frequency_squared(self.points)
         usable = np.isfinite(measured) & ((measured > 0) | (lowest > 0))
         found = np.where(usable, np.maximum(measured, lowest), old)
         return replace(recipe, frequency_squared=tuple(float(v) for v in found))
 
     def crossing(self) -> float:
-        """Share of chains whose path is on both sides of a sign symmetry: rare where kinks are, which need the flips."""
+        """Share of chains whose path is on both sides of a sign symmetry; it is small where kinks are rare."""
         q = np.tensordot(self.points.unwhitening.T, np.moveaxis(np.asarray(self.state.x), 1, 0), axes=1)
         flipping = np.any(np.asarray(self.program.target.euclidean.symmetries) < 0, axis=0)
         return float(np.mean(np.any(q.min(axis=-1) * q.max(axis=-1) < 0, axis=0, where=flipping[:, None])))
