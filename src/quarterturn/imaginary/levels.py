@@ -1,130 +1,71 @@
-"""Levels in the continuum: a sinc basis on the line, plane waves on the circle, enlarged until nothing changes.
+"""Levels in the continuum: bases fitted to the problem, enlarged until the levels asked for stand still.
 
-On the line the kinetic energy of the sinc functions of an equidistant grid is known in closed form (Colbert and Miller,
-J. Chem. Phys. 96 (1992) 1982) and the potential is diagonal; for smooth potentials the error falls exponentially with
-the number of points. Even potentials are split by parity, so that a tunnelling splitting is the difference of two independent
-eigenvalues. On the circle H = (p - A)^2/2m + V in plane waves. The error of a level is its change between two
-bases, and never less than the rounding of the largest matrix element.
+The box ends where the highest level asked for has fallen by exp(-20) (its energy then feels the end by exp(-40)), and
+the step is such that the same holds for its momenta. Whether that is so is read off the wave functions; then the
+levels are computed once more in a smaller box with a longer step, and the change is their error.
 """
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.linalg import eigh
 
 from quarterturn.errors import SpectrumError
+from quarterturn.imaginary.basis import Numbers, diagonalise, eigenvalues
+from quarterturn.imaginary.fitting import (
+    MOST_POINTS,
+    TAIL,
+    Fit,
+    Frame,
+    LineFrame,
+    Tails,
+    around,
+    circle_frame,
+    fit,
+    line_frame,
+)
+from quarterturn.imaginary.landscape import Landscape, survey
+from quarterturn.imaginary.observables import integrated, nodes
 from quarterturn.imaginary.problem import OnePath
-from quarterturn.imaginary.region import DECAY, Well, end_of_decay, extent, find_well
+from quarterturn.imaginary.spectrum import Spectrum
 
 Floats = NDArray[np.float64]
-MOST_POINTS = 3000
-AGREEMENT = 1e-12  # relative change between two bases at which a level counts as converged
-ROUNDING = 4e-16
-KEPT = 24  # levels beyond those asked for that are kept for thermal sums, at least
-THERMAL_RESIDUE = 1e-10  # weight beyond the last kept level at which a thermal sum is refused
-
-
-@dataclass(frozen=True, eq=False)
-class Spectrum:
-    """Levels with errors, wave functions on a grid, and what follows from them. Energies in units of the notation."""
-
-    energies: Floats  # (count,) as asked for, ascending
-    errors: Floats  # (count,)
-    grid: Floats  # (M,)
-    weights: Floats  # (M,) of the quadrature on the grid
-    states: NDArray  # (M, kept), normalised: sum weights |psi|^2 = 1; complex on a circle with flux
-    kept: Floats  # (kept,) all converged levels, the first of which are `energies`
-    facts: dict[str, str] = field(default_factory=dict)
-    complete: bool = True  # whether higher levels exist only above `kept` (False: a continuum follows)
-
-    def matrix(self, f: Callable[[Floats], Floats], count: int | None = None) -> NDArray:
-        """<m|f(q)|n> between the kept levels, (count, count)."""
-        states = self.states[:, :count]
-        values = np.asarray(f(self.grid)) * self.weights
-        return np.asarray(states.conj().T @ (values[:, None] * states))
-
-    def matrix_element(self, f: Callable[[Floats], Floats], m: int, n: int) -> complex:
-        """<m|f(q)|n>."""
-        values = np.asarray(f(self.grid)) * self.weights
-        element = np.sum(self.states[:, m].conj() * values * self.states[:, n])
-        return complex(element) if np.iscomplexobj(self.states) else float(element)
-
-    def expectation(self, f: Callable[[Floats], Floats], beta: float | None = None) -> float:
-        """<f(q)> in the vacuum, or at inverse temperature beta. Raises SpectrumError as `probabilities`."""
-        p = self.probabilities(beta)
-        density = (np.abs(self.states[:, : len(p)]) ** 2) @ p
-        return float(np.sum(np.asarray(f(self.grid)) * self.weights * density))
-
-    def correlator(
-        self, f: Callable[[Floats], Floats], g: Callable[[Floats], Floats], t: Floats, beta: float | None = None
-    ) -> Floats:
-        """Euclidean time-ordered <f(t) g(0)>, vacuum or thermal, (T,); real for real f, g after folding t and -t."""
-        p = self.probabilities(beta)
-        a, b = self.matrix(f), self.matrix(g)
-        gaps = self.kept[None, :] - self.kept[: len(p), None]
-        product = a[: len(p)] * b.T[: len(p)]
-        times = np.abs(np.atleast_1d(np.asarray(t, dtype=np.float64)))
-        if beta is not None and (times > beta).any():
-            raise SpectrumError(f"a time beyond beta = {beta:g}")
-        if beta is None:
-            decays = np.exp(-gaps[None] * times[:, None, None])
-            return np.real(np.einsum("tmn,mn->t", decays, product * p[:, None]))
-        log_p = -beta * (self.kept - self.kept[0])
-        scale = np.sum(np.exp(log_p))
-        exponent = log_p[None, :, None] - (self.kept[None, :] - self.kept[:, None])[None] * times[:, None, None]
-        return np.real(np.einsum("tmn,mn->t", np.exp(exponent), a * b.T)) / scale
-
-    # --- thermal sums ---------------------------------------------------------------------------------------
-    def probabilities(self, beta: float | None) -> Floats:
-        """Boltzmann weights of the kept levels; the vacuum alone for beta None.
-
-        Raises SpectrumError where the levels kept do not suffice for so high a temperature.
-        """
-        if beta is None:
-            return np.ones(1)
-        if not beta > 0:
-            raise SpectrumError(f"beta must be positive, got {beta}")
-        p = np.exp(-beta * (self.kept - self.kept[0]))
-        if p[-1] > THERMAL_RESIDUE * p.sum():
-            limit = -np.log(THERMAL_RESIDUE) / (self.kept[-1] - self.kept[0])
-            raise SpectrumError(
-                f"beta = {beta:g} is too high a temperature for the {len(p)} levels found: "
-                f"they suffice down to beta = {limit:.3g}"
-            )
-        return np.asarray(p / p.sum())
-
-    def partition(self, beta: float) -> float:
-        """Z = sum exp(-beta E_n)."""
-        self.probabilities(beta)
-        return float(np.sum(np.exp(-beta * self.kept)))
-
-    def free_energy(self, beta: float) -> float:
-        """-ln Z / beta."""
-        self.probabilities(beta)
-        return float(self.kept[0] - np.log(np.sum(np.exp(-beta * (self.kept - self.kept[0])))) / beta)
-
-    def energy(self, beta: float) -> float:
-        """<H> at inverse temperature beta."""
-        return float(self.probabilities(beta) @ self.kept)
-
-    def heat_capacity(self, beta: float) -> float:
-        """beta^2 (<H^2> - <H>^2)."""
-        p = self.probabilities(beta)
-        mean = p @ self.kept
-        return float(beta**2 * (p @ (self.kept - mean) ** 2))
+AGREEMENT = 3e-13  # change between two bases, relative to the spread of the levels, that counts as none
+TOLERATED = 1e-6  # the largest error that is reported as one; beyond it the solution is refused
+CONVERGED = 1e-9  # the same below which a level may enter sums
+ROUNDING = 2.3e-16
+MOST_ROUGH = 420  # points for potentials with kinks or steps
+DEEP = 8  # halvings of a cell, more than which mean a kink
 
 
 def levels(problem: OnePath, count: int) -> Spectrum:
-    """The lowest `count` levels in the continuum, with error estimates.
+    """The lowest `count` levels in the continuum.
 
-    Raises SpectrumError where fewer are bound, the potential confines nothing, or no basis of moderate size converges.
+    Parameters
+    ----------
+    problem
+        One degree of freedom on the line or on a circle.
+    count
+        Number of levels, at least 1.
+
+    Returns
+    -------
+    Spectrum
+        Energies, shape (count,), ascending, each with an error estimate: its change between two bases and the rounding
+        of the largest matrix element.
+
+    Raises
+    ------
+    SpectrumError
+        The potential falls without limit, is not a number where wave functions reach, binds fewer levels, or is so
+        rough or wide that no basis of moderate size converges.
     """
     if count < 1:
-        raise SpectrumError(f"at least one level, not {count}")
+        raise SpectrumError(f"at least one level must be asked for, not {count}")
     if problem.period is not None:
         return _on_the_circle(problem, count)
     return _on_the_line(problem, count)
@@ -132,188 +73,165 @@ def levels(problem: OnePath, count: int) -> Spectrum:
 
 # --- the line ---------------------------------------------------------------------------------------------------
 def _on_the_line(problem: OnePath, count: int) -> Spectrum:
-    well = find_well(problem)
-    wanted = count + KEPT
-    confined = not np.isfinite(well.threshold)
-    top = _energy_of_level(problem, well, wanted) if confined else well.threshold
-    if not confined:
-        return _bound_states(problem, well, count)
-    low, high = extent(problem, well, top)
-    points = _first_points(problem, well, top, low, high)
-    previous: Floats | None = None
-    for _ in range(12):
-        values, grid, states = _solve(problem, low, high, points, wanted)
-        change = np.full(wanted, np.inf) if previous is None else np.abs(values - previous)
-        scale = np.maximum(np.abs(values), values[-1] - values[0])
-        if previous is not None and np.all(change[:count] <= AGREEMENT * scale[:count]):
-            return _spectrum(problem, well, count, values, change, grid, states, "sinc functions", True)
-        previous = values
-        wider = 0.03 * (high - low)
-        low, high, points = low - wider, high + wider, int(points * 1.3) + 2
-        if points > MOST_POINTS:
-            break
-    raise SpectrumError(f"the levels did not converge with {points} points: the potential is too rough or singular")
+    landscape = survey(problem)
+    energy = _highest(landscape, count)
+    landscape = landscape.refined(*landscape.ends(energy, 10.0))
+    energy = _highest(landscape, count)
+    frame = line_frame(landscape, energy)
+    if frame.points > MOST_POINTS:
+        raise SpectrumError(
+            f"{count} levels of this potential need {frame.points} points between q = {frame.low:.4g} and "
+            f"{frame.high:.4g}, more than {MOST_POINTS}"
+        )
+    hamiltonian = _Hamiltonian(problem, landscape.bottom)
+    found = fit(frame, hamiltonian.solve, lambda values: min(count, len(values)))
+    if landscape.level and found.values[min(count, len(found.values)) - 1] + landscape.bottom >= landscape.threshold:
+        raise _too_few(found, landscape, count)
+    threshold = landscape.threshold if landscape.level else np.inf
+    return _spectrum(hamiltonian, found, count, threshold, landscape.number)
 
 
-def _bound_states(problem: OnePath, well: Well, count: int) -> Spectrum:
-    """Levels below a continuum: boxes grow until the tail of the highest bound state fits in."""
-    reach, density = 16 * well.width, 1.5
-    previous: Floats | None = None
-    for _ in range(24):
-        low, high = well.centre - reach, well.centre + reach
-        low, high = _trimmed(problem, well, low, high)
-        top = well.threshold + well.energy_scale(problem.mass)
-        points = int(density * _first_points(problem, well, top, low, high))
-        if points > MOST_POINTS:
-            break
-        values, grid, states = _solve(problem, low, high, points, min(points - 2, count + KEPT))
-        bound = values[values < well.threshold - 1e-9 * abs(well.threshold - well.bottom)]
-        same = previous is not None and len(previous) == len(bound)
-        if same and np.all(np.abs(bound - previous) <= AGREEMENT * (well.threshold - well.bottom)):
-            if len(bound) < count:
-                raise SpectrumError(
-                    f"{len(bound)} levels are bound, {count} were asked for: "
-                    f"above V = {well.threshold:.6g} is the continuum"
-                )
-            change = np.abs(bound - previous)
-            return _spectrum(
-                problem, well, count, bound, change, grid, states[:, : len(bound)], "sinc functions", False
-            )
-        previous, reach, density = bound, reach * 1.3, density * 1.12
-    if previous is not None and len(previous) == 0:
-        raise SpectrumError(f"no level is bound below V = {well.threshold:.6g}")
-    raise SpectrumError("a level lies too close to the continuum to be told from it")
+def _highest(landscape: Landscape, count: int) -> float:
+    """An energy above level `count`, or one close to where the continuum begins."""
+    energy = landscape.energy_of(count + 0.5)
+    return energy if energy < landscape.threshold else landscape.threshold - 0.1 * (energy - landscape.bottom)
 
 
-def _trimmed(problem: OnePath, well: Well, low: float, high: float) -> tuple[float, float]:
-    """Cut off what lies behind a steep wall, where the decay is complete."""
-    ends = []
-    for side, end in ((-1.0, low), (1.0, high)):
-        try:
-            wall = end_of_decay(problem, well, well.threshold, side, DECAY)
-        except SpectrumError:
-            wall = end
-        ends.append(max(end, wall) if side < 0 else min(end, wall))
-    return ends[0], ends[1]
-
-
-def _energy_of_level(problem: OnePath, well: Well, number: int) -> float:
-    """Energy below which about `number` levels lie, by counting cells of phase space."""
-    energy = well.bottom + well.energy_scale(problem.mass)
-    for _ in range(400):
-        low, high = extent(problem, well, energy, 3.0)
-        q = np.linspace(low, high, 2000)
-        momentum = np.sqrt(2 * problem.mass * np.clip(energy - problem.values_or_wall(q), 0.0, None))
-        if np.sum(momentum) * (q[1] - q[0]) / np.pi > number + 1:
-            return float(energy)
-        energy = well.bottom + 1.15 * (energy - well.bottom)
-    raise SpectrumError("the potential is too flat to count its levels")
-
-
-def _first_points(problem: OnePath, well: Well, top: float, low: float, high: float) -> int:
-    """Points for momenta half as large again as the classical ones, and no fewer than sixty."""
-    momentum = np.sqrt(2 * problem.mass * max(top - well.bottom, well.energy_scale(problem.mass)))
-    return int(max(60, 1.7 * momentum * (high - low) / np.pi))
-
-
-def _solve(problem: OnePath, low: float, high: float, points: int, count: int) -> tuple[Floats, Floats, Floats]:
-    """Lowest levels in sinc functions on an equidistant grid; split by parity where the potential is even."""
-    if problem.even:
-        return _solve_even(problem, max(-low, high), points, count)
-    q, h = np.linspace(low, high, points, retstep=True)
-    hamiltonian = _kinetic(q, q, h, problem.mass)
-    v = np.minimum(problem.values_or_wall(q), _wall(problem, h, q))
-    hamiltonian[np.diag_indices(points)] += v
-    values, states = eigh(hamiltonian, subset_by_index=(0, count - 1))
-    return values, q, states / np.sqrt(h)
-
-
-def _wall(problem: OnePath, h: float, q: Floats) -> float:
-    """A height at which a potential may be cut off without effect: a thousand times the largest kinetic energy."""
-    v = problem.values_or_wall(q)
-    return float(np.min(v) + 1000 * (np.pi / h) ** 2 / (2 * problem.mass))
-
-
-def _kinetic(left: Floats, right: Floats, h: float, mass: float) -> Floats:
-    n = np.round((left[:, None] - right[None, :]) / h)
-    with np.errstate(divide="ignore", invalid="ignore"):
-        t = np.where(n == 0, np.pi**2 / 3, 2 * (-1.0) ** np.abs(n) / n**2)
-    return np.asarray(t / (2 * mass * h**2))
-
-
-def _solve_even(problem: OnePath, reach: float, points: int, count: int) -> tuple[Floats, Floats, Floats]:
-    half = points // 2 + 1
-    h = reach / half
-    q = (np.arange(half) + 0.5) * h
-    near, far = _kinetic(q, q, h, problem.mass), _kinetic(q, -q, h, problem.mass)
-    v = np.minimum(problem.values_or_wall(q), _wall(problem, h, q))
-    found = []
-    for sign, share in ((1.0, (count + 1) // 2), (-1.0, count // 2)):
-        values, states = eigh(near + sign * far + np.diag(v), subset_by_index=(0, max(share, 1) - 1))
-        whole = np.concatenate([sign * states[::-1], states]) / np.sqrt(2 * h)
-        found += [(value, whole[:, i]) for i, value in enumerate(values)]
-    found.sort(key=lambda item: item[0])
-    values = np.array([value for value, _ in found[:count]])
-    return values, np.concatenate([-q[::-1], q]), np.stack([state for _, state in found[:count]], axis=1)
-
-
-def _spectrum(
-    problem: OnePath, well: Well, count: int, values: Floats, change: Floats, grid: Floats, states: Floats,
-    basis: str, complete: bool,
-) -> Spectrum:  # fmt: skip
-    h = float(grid[1] - grid[0])
-    top = (np.pi / h) ** 2 / (2 * problem.mass) + abs(well.bottom)
-    good = change <= 1e-9 * np.maximum(np.abs(values), values[-1] - values[0] + 1e-300)
-    kept = len(values) if good.all() else max(count, int(np.argmin(good)))
-    facts = {
-        "basis": f"{basis}, {len(grid)} points" + (", split by parity" if problem.even else ""),
-        "box": f"{grid[0]:.4g} to {grid[-1]:.4g}",
-    }
-    errors = change[:count] + ROUNDING * top
-    return Spectrum(
-        values[:count], errors, grid, np.full(len(grid), h), states[:, :kept], values[:kept], facts, complete
+def _too_few(found: Fit, landscape: Landscape, count: int) -> SpectrumError:
+    frame = found.frame
+    assert isinstance(frame, LineFrame)
+    bound = int(np.count_nonzero(found.values + landscape.bottom < landscape.threshold))
+    resolution = (np.pi / (frame.high - frame.low)) ** 2 / (2 * landscape.problem.mass)
+    many = {0: "no level is bound", 1: "one level is bound"}.get(bound, f"{bound} levels are bound")
+    return SpectrumError(
+        f"{many}, {count} were asked for: above V = {landscape.threshold:.6g} is the continuum "
+        f"(a level less than about {resolution:.1g} below it would not be seen)"
     )
 
 
 # --- the circle -------------------------------------------------------------------------------------------------
 def _on_the_circle(problem: OnePath, count: int) -> Spectrum:
-    wanted = count + KEPT
-    size = 2 * wanted + 33
-    previous: Floats | None = None
-    while size <= MOST_POINTS:
-        values, grid, states = _plane_waves(problem, size, wanted)
-        if previous is not None:
-            change = np.abs(values - previous)
-            scale = np.maximum(np.abs(values), values[-1] - values[0])
-            if np.all(change[:count] <= AGREEMENT * scale[:count]):
-                h = float(grid[1] - grid[0])
-                top = (np.pi / h) ** 2 / (2 * problem.mass)
-                facts = {"basis": f"{size} plane waves", "circle": f"circumference {problem.period:.6g}"}
-                errors = change[:count] + ROUNDING * top
-                good = change <= 1e-9 * scale
-                kept = wanted if good.all() else max(count, int(np.argmin(good)))
-                weights = np.full(len(grid), h)
-                return Spectrum(values[:count], errors, grid, weights, states[:, :kept], values[:kept], facts)
-        previous, size = values, int(size * 1.4) | 1
-    raise SpectrumError(f"the levels did not converge with {size} plane waves: the potential is too rough")
+    v, number, period = around(problem)
+    bottom, mean = float(v.min()), float(v.mean())
+    free = ((count + 1.5) * np.pi / period) ** 2 / (2 * problem.mass)
+    frame = circle_frame(problem, free + (mean - bottom), count + 1.5)
+    hamiltonian = _Hamiltonian(problem, bottom)
+    if frame.points > MOST_POINTS:
+        raise SpectrumError(f"{count} levels on this circle need {frame.points} plane waves, more than {MOST_POINTS}")
+    found = fit(frame, hamiltonian.solve, lambda values: min(count, len(values)))
+    return _spectrum(hamiltonian, found, count, np.inf, number)
 
 
-def _plane_waves(problem: OnePath, size: int, count: int) -> tuple[Floats, Floats, NDArray]:
-    """Lowest levels in `size` (odd) plane waves; wave functions on 2 size points of the circle."""
-    assert problem.period is not None
-    half = size // 2
-    points = 2 * size
-    grid = np.arange(points) * problem.period / points
-    fourier = np.fft.fft(problem.values(grid)) / points
-    k = np.arange(-half, half + 1)
-    # centred on the flux, so that the truncation treats both directions alike
-    k = k + int(np.round(problem.flux * problem.period / (2 * np.pi)))
-    momenta = 2 * np.pi * k / problem.period - problem.flux
-    hamiltonian = fourier[(k[:, None] - k[None, :]) % points]
-    hamiltonian = (hamiltonian + hamiltonian.conj().T) / 2
-    if np.abs(hamiltonian.imag).max() <= 1e-15 * max(np.abs(hamiltonian).max(), 1e-300):
-        hamiltonian = hamiltonian.real
-    hamiltonian[np.diag_indices(size)] += momenta**2 / (2 * problem.mass)
-    values, coefficients = eigh(hamiltonian, subset_by_index=(0, count - 1))
-    waves = np.exp(2j * np.pi * np.outer(grid, k) / problem.period) / np.sqrt(problem.period)
-    return values, grid, waves @ coefficients
+# --- both -------------------------------------------------------------------------------------------------------
+@dataclass(frozen=True)
+class _Hamiltonian:
+    """H - bottom in a frame, the potential diagonal on the grid."""
+
+    problem: OnePath
+    bottom: float
+
+    def matrix(self, frame: Frame) -> Numbers:
+        basis = frame.basis
+        matrix = basis.operator(basis.momenta**2 / (2 * self.problem.mass))
+        return self._with_potential(matrix, frame)
+
+    def _with_potential(self, matrix: Numbers, frame: Frame) -> Numbers:
+        matrix[np.diag_indices(len(matrix))] += self.potential(frame, frame.basis.grid)
+        return matrix
+
+    def potential(self, frame: Frame, q: Floats) -> Floats:
+        """V - bottom, cut off far above every kinetic energy of the basis (poles, overflow)."""
+        ceiling = 1e4 * np.max(frame.basis.momenta**2) / (2 * self.problem.mass)
+        return np.minimum(self.problem.values(q) - self.bottom, ceiling)
+
+    def solve(self, frame: Frame) -> tuple[Floats, Numbers]:
+        return diagonalise(self.matrix(frame), frame.mirrored)
+
+    def rounding(self, frame: Frame) -> float:
+        """Of one eigenvalue: the precision times the largest matrix element, and what it does to the grid points."""
+        basis = frame.basis
+        v = self.potential(frame, basis.grid)
+        largest = np.max(basis.momenta**2) / (2 * self.problem.mass) + np.max(v) + abs(self.bottom)
+        slope = np.median(np.abs(np.diff(v))) / basis.step
+        return float(ROUNDING * (largest + slope * np.max(np.abs(basis.grid))))
+
+
+class _RoughHamiltonian(_Hamiltonian):
+    """The same with integrals over the potential done exactly, for one with kinks or steps."""
+
+    def _with_potential(self, matrix: Numbers, frame: Frame) -> Numbers:
+        uniform = np.full(len(matrix), 1 / len(matrix))
+        return np.asarray(matrix + integrated(lambda q: self.potential(frame, q), frame.basis, uniform))
+
+
+def _is_rough(hamiltonian: _Hamiltonian, frame: Frame) -> bool:
+    uniform = np.full(len(frame.basis.grid), 1 / len(frame.basis.grid))
+    return nodes(lambda q: hamiltonian.potential(frame, q), frame.basis, uniform)[2] > DEEP
+
+
+def _spectrum(
+    hamiltonian: _Hamiltonian, found: Fit, count: int, threshold: float, number: Callable[[float], float]
+) -> Spectrum:
+    """Test a fit against a second basis, enlarge it while they differ, and report it with the difference."""
+    problem, bottom = hamiltonian.problem, hamiltonian.bottom
+    if found.tails.fast > TAIL and _is_rough(hamiltonian, found.frame):
+        hamiltonian = _RoughHamiltonian(problem, bottom)
+        frame = found.frame.finer(max(1.0, MOST_ROUGH / found.frame.points))
+        found = Fit(frame, *hamiltonian.solve(frame), found.tails)
+        change = _change(hamiltonian, found, frame.finer(0.7))
+    else:
+        found, change = _settled(hamiltonian, found, count)
+    rounding = hamiltonian.rounding(found.frame)
+    errors = change + rounding
+    height = found.values[count - 1]
+    if not np.all(errors[:count] <= TOLERATED * height + 10 * rounding):
+        raise SpectrumError(
+            f"the levels do not settle: {len(found.values)} points still change them by {np.max(change[:count]):.2g}; "
+            "the potential is too rough, or singular"
+        )
+    settled = errors <= CONVERGED * (found.values[: len(errors)] + height)
+    return Spectrum(
+        energies=found.values[:count] + bottom,
+        errors=errors[:count],
+        basis=found.frame.basis,
+        mass=problem.mass,
+        values=found.values + bottom,
+        vectors=found.vectors,
+        reliable=max(count, len(settled) if settled.all() else int(np.argmin(settled))),
+        threshold=threshold,
+        facts=_facts(found, hamiltonian),
+        extend=lambda energy: levels(problem, math.ceil(number(energy)) + 2),
+    )
+
+
+def _settled(hamiltonian: _Hamiltonian, found: Fit, count: int) -> tuple[Fit, Floats]:
+    """Enlarge until the first `count` levels agree with those of a smaller basis; and the change of all of them."""
+    everywhere = Tails(1e-6, 1e-6, 1e-6)
+    while True:
+        change = _change(hamiltonian, found, found.frame.smaller())
+        worst = float(np.max(change[:count]))
+        larger = found.frame.enlarged(everywhere)
+        if worst <= AGREEMENT * found.values[count - 1] + 2 * hamiltonian.rounding(found.frame):
+            return found, change
+        if larger.points > MOST_POINTS or not found.resolved:
+            return found, change
+        found = Fit(larger, *hamiltonian.solve(larger), found.tails)
+
+
+def _change(hamiltonian: _Hamiltonian, found: Fit, other: Frame) -> Floats:
+    values = eigenvalues(hamiltonian.matrix(other), other.mirrored)
+    size = min(len(values), len(found.values))
+    return np.asarray(np.abs(values[:size] - found.values[:size]))
+
+
+def _facts(found: Fit, hamiltonian: _Hamiltonian) -> dict[str, str]:
+    frame = found.frame
+    if isinstance(frame, LineFrame):
+        basis = f"{len(found.values)} sine functions"
+        where = ("box", f"q = {frame.low:.4g} … {frame.high:.4g}")
+    else:
+        basis = f"{len(found.values)} plane waves"
+        where = ("circle", f"circumference {hamiltonian.problem.period:.6g}")
+    parity = ", split by parity" if frame.mirrored else ""
+    kinks = ", kinks of the potential integrated" if isinstance(hamiltonian, _RoughHamiltonian) else ""
+    return {"basis": basis + parity + kinks, where[0]: where[1]}

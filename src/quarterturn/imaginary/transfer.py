@@ -1,29 +1,37 @@
 """The lattice's own answer: the transfer matrix at the action's spacing, traced over its number of sites.
 
-T = e^{-aV/2} K e^{-aV/2} with K the kernel of one link; averages over N periodic sites are traces of T^N. On the line
-K(q, q') = sqrt(m/2 pi a) exp(-m (q - q')^2 / 2a) by the trapezoidal rule, which converges faster than any power for
-these analytic kernels (Trefethen and Weideman, SIAM Rev. 56 (2014) 385); on the circle the sum over windings of each
-link makes K = exp(-a (p - A)^2 / 2m) exactly. Creutz and Freedman, Ann. Phys. 132 (1981) 427, section 3.
+The weight exp(-sum a [m/2 ((q_{i+1} - q_i)/a)^2 + V(q_i)]) of N periodic sites is the trace of T^N with
+T = e^{-aV/2} e^{-a p^2/2m} e^{-aV/2}: the Gaussian of one link is exp(-a p^2/2m) exactly, on the circle too, where the
+sum over windings of each link leaves integer momenta (Creutz and Freedman, Ann. Phys. 132 (1981) 427, section 3).
+In the bases of this room both factors are closed forms. At equal times sums over states are complete.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
 
 from quarterturn.errors import SpectrumError
-from quarterturn.imaginary.problem import OnePath
-from quarterturn.imaginary.region import Well, extent, find_well
+from quarterturn.imaginary.basis import Basis, Numbers, diagonalise, eigenvalues
+from quarterturn.imaginary.fitting import MOST_POINTS, TAIL, Fit, Frame, Tails, around, circle_frame, fit, line_frame
+from quarterturn.imaginary.landscape import survey
+from quarterturn.imaginary.observables import Diagonal, Observer, integrated, nodes
+from quarterturn.imaginary.problem import Local, OnePath
 
 Floats = NDArray[np.float64]
-Local = Callable[[Floats], Floats]
-MOST_POINTS = 2400
 RESOLVED = 1e-13  # eigenvalues smaller than this share of the largest are rounding
-STEP = 0.42  # grid step in units of the width of the kernel sqrt(a/m)
-ZERO_ELEMENT = 1e-7  # of the operator's size, below which a matrix element counts as zero
+THERMAL_RESIDUE = 34.0  # states suppressed by exp(-34) = 2e-15 carry nothing in a trace
+ZERO_ELEMENT = 1e-8  # of all that an operator makes of the vacuum, the part below which a level counts as not created
+ROUNDING = 2.3e-16
+AGREEMENT = 2e-13  # change of ln Z and of the lowest energies times beta between two bases that counts as none
+TOLERATED = 1e-6
+LEVELS = 8  # that the basis is made for, beside those that carry the trace
+MOST_ROUGH = 420  # points for potentials with kinks or steps
+DEEP = 8  # halvings of a cell, more than which mean a kink
 
 
 @dataclass(frozen=True, eq=False)
@@ -33,206 +41,298 @@ class Transfer:
     problem: OnePath
     spacing: float
     sites: int
-    grid: Floats  # (M,)
-    step: float
-    eigenvalues: Floats  # (kept,) descending, those above rounding, in units of exp(shift)
-    vectors: NDArray  # (M, kept), orthonormal
+    basis: Basis
+    eigenvalues: Floats  # (M,) descending, in units of exp(shift); clipped at zero
+    vectors: Numbers  # (M, M) orthonormal
     shift: float  # log of the factor taken out of T
-    error: float  # relative, from two grids
+    half: Diagonal | Numbers  # exp(-aV/2) on the grid, times exp(-shift/2)
+    log_partition_error: float
+    error: Floats  # (kept,) of `energies`: the change between two bases, and rounding
 
     @property
+    def grid(self) -> Floats:
+        """(M,)."""
+        return self.basis.grid
+
+    @cached_property
     def energies(self) -> Floats:
-        """-ln(lambda_n)/a, ascending, (kept,)."""
-        return np.asarray(-(np.log(self.eigenvalues) + self.shift) / self.spacing)
+        """-ln(lambda_n)/a, ascending, of the eigenvalues above rounding, (kept,)."""
+        kept = self.eigenvalues[: len(self.error)]
+        return np.asarray(-(np.log(kept) + self.shift) / self.spacing)
 
-    @property
+    @cached_property
     def _ratios(self) -> Floats:
         return self.eigenvalues / self.eigenvalues[0]
 
+    @cached_property
+    def probabilities(self) -> Floats:
+        """(M,) lambda_n^N / Z."""
+        p = self._ratios**self.sites
+        return np.asarray(p / p.sum())
+
+    @cached_property
+    def _observer(self) -> Observer:
+        carried = self.probabilities > 1e-17
+        return Observer(self.basis, self.vectors[:, carried], self.probabilities[carried])
+
     @property
     def log_partition(self) -> float:
-        """ln Z with the measure prod dq sqrt(m/2 pi a)."""
-        largest = self.sites * (np.log(self.eigenvalues[0]) + self.shift)
-        return float(largest + np.log(np.sum(self._ratios**self.sites)))
+        """ln Z with the measure prod dq sqrt(m / 2 pi a)."""
+        return float(self.sites * (np.log(self.eigenvalues[0]) + self.shift) - np.log(self.probabilities[0]))
 
-    def matrix(self, f: Local) -> NDArray:
-        """<m|f(q)|n>."""
-        return np.asarray(self.vectors.conj().T @ (np.asarray(f(self.grid))[:, None] * self.vectors))
+    # --- averages -------------------------------------------------------------------------------------------
+    def matrix(self, f: Local) -> Numbers:
+        """<m|f(q)|n> between the eigenvectors of T, (M, M)."""
+        return np.asarray(self.vectors.conj().T @ (self._observer.operator(f) @ self.vectors))
 
     def expectation(self, f: Local) -> float:
         """Tr(T^N f) / Tr T^N."""
-        p = self._ratios**self.sites
-        density = (np.abs(self.vectors) ** 2) @ (p / p.sum())
-        return float(np.sum(np.asarray(f(self.grid)) * density))
+        states, p = self._observer.states, self._observer.weights
+        diagonal = np.sum(states.conj() * (self._observer.operator(f) @ states), axis=0)
+        return float(np.real(diagonal) @ p / p.sum())
 
-    def correlator(self, f: Local, g: Local, steps: NDArray[np.int_]) -> Floats:
-        """Tr(T^{N-n} f T^n g) / Tr T^N at the separations `steps`, (T,), the part even in n."""
-        a, b = self.matrix(f), self.matrix(g)
-        product = a * b.T
-        r, total = self._ratios, np.sum(self._ratios**self.sites)
-        n = np.abs(np.asarray(steps))
-        if (n > self.sites).any():
-            raise SpectrumError(f"a separation beyond the {self.sites} sites")
-        outer, inner = r[None, :] ** (self.sites - n[:, None]), r[None, :] ** n[:, None]
-        return np.real(np.einsum("tm,mn,tn->t", outer, product, inner)) / total
+    def correlator(self, f: Local, g: Local, steps: NDArray[np.int_]) -> Numbers:
+        """Tr(T^{N-n} f T^n g) / Tr T^N at the separations `steps`, (T,); complex with flux.
 
-    def product(self, groups: Sequence[tuple[int, Local]]) -> float:
-        """<prod_k f_k(q_{n_k})> for any set of site offsets."""
-        placed = sorted(((n % self.sites, f) for n, f in groups), key=lambda item: item[0])
+        A negative separation is the same one counted from the other side of the periodic lattice.
+        """
+        n = np.atleast_1d(np.asarray(steps, dtype=np.int64)) % self.sites
+        product = self.matrix(f) * self.matrix(g).T
         r = self._ratios
-        start, chain = placed[0][0], self.matrix(placed[0][1])
-        last = start
+        before, after = r ** (self.sites - n)[:, None], r ** n[:, None]
+        result = np.sum((before @ product) * after, axis=1) * self.probabilities[0]
+        if (n == 0).any():
+            result[n == 0] = self.expectation(lambda q: f(q) * g(q))
+        return np.asarray(result)
+
+    def product(self, groups: Sequence[tuple[int, Local]]) -> float | complex:
+        """<prod_k f_k(q_{n_k})> at any site offsets n_k; complex with flux."""
+        at: dict[int, list[Local]] = {}
+        for n, f in groups:
+            at.setdefault(n % self.sites, []).append(f)
+        if not at:
+            return 1.0
+        placed = [(n, _together(at[n])) for n in sorted(at)]
+        if len(placed) == 1:
+            return self.expectation(placed[0][1])
+        r, (first, f) = self._ratios, placed[0]
+        chain, last = self.matrix(f), first
         for n, f in placed[1:]:
-            chain = (chain * r[None, :] ** (n - last)) @ self.matrix(f)
-            last = n
-        closing = r ** (self.sites - (last - start))
-        return float(np.real(np.sum(np.diag(chain) * closing)) / np.sum(r**self.sites))
+            chain, last = (chain * r[None, :] ** (n - last)) @ self.matrix(f), n
+        value = np.sum(np.diag(chain) * r ** (self.sites - (last - first))) * self.probabilities[0]
+        return complex(value) if np.iscomplexobj(value) else float(value)
 
     def energy(self) -> float:
-        """-d ln Z / d beta at fixed N: the thermodynamic energy, equal to the virial one on the line."""
-        if self.problem.period is None:
-            return self.expectation(self._virial)
-        p = self._ratios ** (self.sites - 1)
-        kinetic = np.sum(p * np.real(np.diag(self._between("energy")))) / self.eigenvalues[0]
-        return float(kinetic / np.sum(self._ratios**self.sites)) + self.expectation(self.problem.values)
+        """-d ln Z / d beta at fixed N: the thermodynamic energy; on the line the virial one is equal to it."""
+        kinetic = self.basis.momenta**2 / (2 * self.problem.mass)
+        moved = self._ratios ** (self.sites - 1) @ np.real(np.diag(self._between(kinetic)))
+        return float(moved * self.probabilities[0] / self.eigenvalues[0]) + self.expectation(self._potential)
 
-    def _virial(self, q: Floats) -> Floats:
-        """V + q V'/2, the derivative by differences of the highest order that rounding allows."""
-        h = 1e-3 * max(1e-12, float(self.grid[-1] - self.grid[0]) / 20)
-        v = self.problem.values_or_wall
-        slope = (
-            sum(c * (v(q + k * h) - v(q - k * h)) for k, c in ((1, 4 / 5), (2, -1 / 5), (3, 4 / 105), (4, -1 / 280)))
-            / h
-        )
-        value = v(q) + q * slope / 2
-        return np.where(np.abs(v(q)) > 1e100, 0.0, value)
+    def _potential(self, q: Floats) -> Floats:
+        """V, cut off where exp(-aV) is zero in any case (poles, overflow)."""
+        return np.minimum(self.problem.values(q), (800.0 - self.shift) / self.spacing)
 
     def gap(self, operators: Sequence[Local]) -> float:
-        """Lowest level above the vacuum that one of the operators creates.
+        """Lowest level above the vacuum that one of the operators creates from it.
 
         Raises SpectrumError where none of the resolved levels has a matrix element with the vacuum.
         """
+        vacuum = self.vectors[:, :1]
+        observer = Observer(self.basis, vacuum, np.ones(1))
+        created = np.zeros(len(self.energies), dtype=bool)
         for f in operators:
-            if not np.isfinite(np.asarray(f(self.grid))).all():
-                raise SpectrumError("an operator is not finite on the grid")
-        elements = [np.abs(self.matrix(f)[0]) for f in operators]
-        sizes = [np.sqrt(np.sum(e**2)) for e in elements]
-        for n in range(1, len(self.eigenvalues)):
-            if any(e[n] > ZERO_ELEMENT * size for e, size in zip(elements, sizes, strict=True)):
-                return float(self.energies[n] - self.energies[0])
-        raise SpectrumError("the operators create no state above the vacuum that the lattice resolves")
+            made = observer.operator(f) @ vacuum
+            elements = np.abs(self.vectors.conj().T @ made)[:, 0]
+            least = max(ZERO_ELEMENT * np.linalg.norm(elements[1:]), 64 * ROUNDING * np.linalg.norm(made))
+            created |= elements[: len(created)] > least
+        levels = np.flatnonzero(created[1:]) + 1
+        if not len(levels):
+            raise SpectrumError("the operators create no state above the vacuum that this spacing resolves")
+        return float(self.energies[levels[0]] - self.energies[0])
 
     # --- winding --------------------------------------------------------------------------------------------
     def average_phase(self) -> float:
-        """Z(flux) / Z(0)."""
+        """Z(flux) / Z(0): the average of exp(i A int q') in the ensemble without flux."""
         if self.problem.flux == 0 or self.problem.period is None:
             return 1.0
-        without = transfer(_with_flux(self.problem, 0.0), self.spacing, self.sites)
+        without = transfer(replace(self.problem, flux=0.0), self.spacing, self.sites)
         return float(np.exp(self.log_partition - without.log_partition))
 
     def winding_second_moment(self) -> float:
         """<Q^2> of the winding number, -Z''(theta)/Z(theta) with theta = flux times period, in closed form.
 
-        Z'' = N Tr(T^{N-1} T'') + N sum_k Tr(T^k T' T^{N-2-k} T'), evaluated between eigenvectors.
+        Z'' = N Tr(T^{N-1} T'') + N sum_k Tr(T^k T' T^{N-2-k} T'), evaluated between eigenvectors. Absolute precision
+        is that of its terms: <Q^2> below 1e-12 is rounding. Raises SpectrumError on the line.
         """
         if self.problem.period is None:
             raise SpectrumError("a path on the line has no winding number")
-        first, second = (self._between(weight) for weight in ("first", "second"))
-        r, n = self._ratios, self.sites
-        powers = r[:, None] ** np.arange(n - 1)[None, :]
-        both = np.real(first * first.T) * (powers @ powers[:, ::-1].T) / self.eigenvalues[0]
-        single = r ** (n - 1) * np.real(np.diag(second))
-        z2 = n * (np.sum(single) + np.sum(both)) / self.eigenvalues[0] / np.sum(r**n)
-        return float(-z2 / self.problem.period**2)
+        speed = self.spacing * self.basis.momenta / self.problem.mass
+        first, second = self._between(speed), self._between(speed**2 - self.spacing / self.problem.mass)
+        r = self._ratios
+        one = np.sum(r ** (self.sites - 1) * np.real(np.diag(second)))
+        powers = r[:, None] ** np.arange(self.sites - 1)[None, :]
+        two = np.sum(np.abs(first) ** 2 * (powers @ powers[:, ::-1].T)) / self.eigenvalues[0]
+        curvature = self.sites * (one + two) * self.probabilities[0] / self.eigenvalues[0]
+        return float(-curvature / self.problem.period**2)
 
-    def _between(self, weight: str) -> NDArray:
-        """A derivative of T by its link, between the eigenvectors, in the units of `eigenvalues`."""
-        link = _circle_link(self.problem, self.spacing, len(self.grid), weight)
-        half = np.exp(-self.spacing * self.problem.values(self.grid) / 2 - self.shift / 2)
-        return np.asarray(self.vectors.conj().T @ (half[:, None] * link * half[None, :]) @ self.vectors)
-
-
-def _with_flux(problem: OnePath, flux: float) -> OnePath:
-    return OnePath(problem.mass, problem.potential, problem.period, flux, problem.even)
+    def _between(self, weight: Floats) -> Numbers:
+        """T with each momentum weighted, between the eigenvectors, (M, M), in the units of `eigenvalues`."""
+        link = self.basis.operator(weight * np.exp(-self.spacing * self.basis.momenta**2 / (2 * self.problem.mass)))
+        outer = self.half @ self.vectors
+        return np.asarray(outer.conj().T @ (link @ outer))
 
 
+def _together(functions: Sequence[Local]) -> Local:
+    def product(q: Floats) -> Floats:
+        value = functions[0](q)
+        for f in functions[1:]:
+            value = value * f(q)
+        return value
+
+    return product
+
+
+# --- solving ----------------------------------------------------------------------------------------------------
 def transfer(problem: OnePath, spacing: float, sites: int) -> Transfer:
-    """Solve the transfer matrix of one path at `spacing` on `sites` periodic sites.
+    """Solve the transfer matrix of one path.
 
-    Raises SpectrumError where the potential confines nothing or the grid would be too large.
+    Parameters
+    ----------
+    problem
+        One degree of freedom on the line or on a circle.
+    spacing
+        Of the lattice, in units of the notation.
+    sites
+        Number N of periodic sites, at least 1; beta = N times the spacing.
+
+    Raises
+    ------
+    SpectrumError
+        The potential does not confine (the trace grows with the box), is not a number where the path goes, or so
+        rough that no basis of moderate size converges.
     """
-    if problem.period is not None:
-        return _circle(problem, spacing, sites)
-    well = find_well(problem)
-    # the discretised weight confines wherever e^{-aV} does; where V has a finite limit it does not
-    if np.isfinite(well.threshold):
-        raise SpectrumError("the potential does not confine: on a finite lattice the trace diverges with the box")
-    beta = spacing * sites
-    thermal = max(32.0 / beta, 12 * well.energy_scale(problem.mass), 3.0 / spacing)
-    low, high = _box(problem, well, well.bottom + thermal, spacing)
-    return _line(problem, spacing, sites, low, high)
+    if not (spacing > 0 and np.isfinite(spacing)) or sites < 1:
+        raise SpectrumError(f"a lattice needs a positive spacing and at least one site, got {spacing} and {sites}")
+    start = _on_the_line if problem.period is None else _on_the_circle
+    link, frame = start(problem, spacing, sites)
+    if frame.points > MOST_POINTS:
+        raise SpectrumError(
+            f"the transfer matrix at spacing {spacing:g} needs {frame.points} points, more than {MOST_POINTS}: "
+            "the temperature is too high, or the potential too wide"
+        )
+    found = fit(frame, link.solve, link.carried)
+    if found.tails.fast > TAIL and link.is_rough(found.frame):
+        link = _RoughLink(problem, spacing, sites, link.bottom)
+        frame = found.frame.finer(max(1.0, MOST_ROUGH / found.frame.points))
+        found = Fit(frame, *link.solve(frame), found.tails)
+        change = link.change(found, frame.finer(0.7))
+    else:
+        found, change = _settled(link, found)
+    return _reported(link, found, *change)
 
 
-def _box(problem: OnePath, well: Well, energy: float, spacing: float) -> tuple[float, float]:
-    low, high = extent(problem, well, energy, 22.0)
-    # where a V is large the factor e^{-aV} alone ends the path
-    q = np.linspace(low, high, 4001)
-    inside = np.flatnonzero(spacing * (problem.values_or_wall(q) - well.bottom) < 90.0)
-    return float(q[max(inside[0] - 1, 0)]), float(q[min(inside[-1] + 1, 4000)])
+def _on_the_line(problem: OnePath, spacing: float, sites: int) -> tuple[_Link, Frame]:
+    landscape = survey(problem)
+    if landscape.level:
+        raise SpectrumError(
+            f"the potential does not confine (V = {landscape.threshold:.6g} far away): "
+            "the trace over periodic paths grows with the size of the box"
+        )
+    above = THERMAL_RESIDUE / (spacing * sites)
+    landscape = landscape.refined(*landscape.ends(landscape.energy_of(LEVELS + 0.5) + above, 10.0))
+    frame = line_frame(landscape, landscape.energy_of(LEVELS + 0.5) + above)
+    return _Link(problem, spacing, sites, landscape.bottom), frame
 
 
-def _line(problem: OnePath, spacing: float, sites: int, low: float, high: float) -> Transfer:
-    points = int((high - low) / (STEP * np.sqrt(spacing / problem.mass))) + 40
-    if points > MOST_POINTS:
-        raise SpectrumError(f"the transfer matrix would need {points} points at this spacing, more than {MOST_POINTS}")
-    q, h = np.linspace(low, high, points, retstep=True)
-    v = problem.values_or_wall(q)
-    bottom = float(v.min())
-    half = np.exp(-np.minimum(spacing * (v - bottom) / 2, 700.0))
-    kernel = np.exp(-np.minimum(problem.mass * (q[:, None] - q[None, :]) ** 2 / (2 * spacing), 700.0))
-    matrix = half[:, None] * kernel * half[None, :] * (np.sqrt(problem.mass / (2 * np.pi * spacing)) * h)
-    return _solved(problem, spacing, sites, q, float(h), matrix, -spacing * bottom)
+def _on_the_circle(problem: OnePath, spacing: float, sites: int) -> tuple[_Link, Frame]:
+    v, number, period = around(problem)
+    above = ((LEVELS + 1.5) * np.pi / period) ** 2 / (2 * problem.mass) + THERMAL_RESIDUE / (spacing * sites)
+    energy = float(v.mean()) + above
+    frame = circle_frame(problem, energy - float(v.min()), number(energy))
+    return _Link(problem, spacing, sites, float(v.min())), frame
 
 
-def _circle(problem: OnePath, spacing: float, sites: int) -> Transfer:
-    assert problem.period is not None
-    width = np.sqrt(spacing / problem.mass)
-    points = max(64, int(problem.period / (STEP * width)) + 40) | 1
-    if points > MOST_POINTS:
-        raise SpectrumError(f"the transfer matrix would need {points} points at this spacing, more than {MOST_POINTS}")
-    q = np.arange(points) * problem.period / points
-    v = problem.values(q)
-    bottom = float(v.min())
-    half = np.exp(-spacing * (v - bottom) / 2)
-    matrix = half[:, None] * _circle_link(problem, spacing, points, "one") * half[None, :]
-    return _solved(problem, spacing, sites, q, problem.period / points, matrix, -spacing * bottom)
+@dataclass(frozen=True)
+class _Link:
+    """T exp(a bottom) in a frame, exp(-aV/2) diagonal on the grid."""
+
+    problem: OnePath
+    spacing: float
+    sites: int
+    bottom: float
+
+    def half(self, frame: Frame) -> Diagonal | Numbers:
+        return Diagonal(self.root(frame.basis.grid))
+
+    def root(self, q: Floats) -> Floats:
+        """exp(-a (V - bottom)/2)."""
+        return np.exp(-self.spacing * (self.problem.values(q) - self.bottom) / 2)
+
+    def matrix(self, frame: Frame) -> Numbers:
+        basis, half = frame.basis, self.half(frame)
+        link = basis.operator(np.exp(-self.spacing * basis.momenta**2 / (2 * self.problem.mass)))
+        return np.asarray(half @ np.asarray(half @ link).conj().T)
+
+    def solve(self, frame: Frame) -> tuple[Floats, Numbers]:
+        """Eigenvalues, descending, and eigenvectors."""
+        values, vectors = diagonalise(self.matrix(frame), frame.mirrored)
+        return np.maximum(values[::-1], 0.0), vectors[:, ::-1]
+
+    def carried(self, values: Floats) -> int:
+        """How many eigenvectors matter: those that carry the trace, and a few levels where they are resolved."""
+        thermal = int(np.count_nonzero(values**self.sites > np.exp(-THERMAL_RESIDUE) * values[0] ** self.sites))
+        return max(thermal, int(np.count_nonzero(values[:LEVELS] > 1e-9 * values[0])))
+
+    def is_rough(self, frame: Frame) -> bool:
+        uniform = np.full(len(frame.basis.grid), 1 / len(frame.basis.grid))
+        return nodes(self.root, frame.basis, uniform)[2] > DEEP
+
+    def change(self, found: Fit, other: Frame) -> tuple[float, Floats]:
+        """Of ln Z, and of the resolved ln lambda_n, towards another frame."""
+        values = np.maximum(eigenvalues(self.matrix(other), other.mirrored)[::-1], 0.0)
+        size = min(len(values), int(np.count_nonzero(found.values > RESOLVED * found.values[0])))
+        mine, others = found.values[:size], np.maximum(values[:size], 1e-300)
+        return abs(self._log_trace(found.values) - self._log_trace(values)), np.abs(np.log(mine / others))
+
+    def _log_trace(self, values: Floats) -> float:
+        return float(self.sites * np.log(values[0]) + np.log(np.sum((values / values[0]) ** self.sites)))
 
 
-def _circle_link(problem: OnePath, spacing: float, points: int, weight: str) -> NDArray:
-    """The kernel of one link on the grid of the circle.
+class _RoughLink(_Link):
+    """The same with the integrals over exp(-aV/2) done exactly, for a potential with kinks or steps."""
 
-    weight: one; energy (each wave times its kinetic energy); first, second (derivatives by the flux A).
-    """
-    assert problem.period is not None
-    shift = int(np.round(problem.flux * problem.period / (2 * np.pi)))
-    k = np.arange(-(points // 2), points // 2 + 1) + shift
-    momenta = 2 * np.pi * k / problem.period - problem.flux
-    kinetic = momenta**2 / (2 * problem.mass)
-    speed = spacing * momenta / problem.mass
-    weights = {"one": 1.0, "energy": kinetic, "first": speed, "second": speed**2 - spacing / problem.mass}
-    factor = np.exp(-spacing * kinetic) * weights[weight]
-    separation = np.arange(points) * problem.period / points
-    row = np.exp(2j * np.pi * np.outer(separation, k) / problem.period) @ factor / points
-    index = (np.arange(points)[:, None] - np.arange(points)[None, :]) % points
-    link = row[index]
-    return link.real if problem.flux == 0 and weight != "first" else link
+    def half(self, frame: Frame) -> Diagonal | Numbers:
+        uniform = np.full(len(frame.basis.grid), 1 / len(frame.basis.grid))
+        return integrated(self.root, frame.basis, uniform)
 
 
-def _solved(
-    problem: OnePath, spacing: float, sites: int, q: Floats, h: float, matrix: NDArray, shift: float
-) -> Transfer:
-    values, vectors = np.linalg.eigh((matrix + matrix.conj().T) / 2)
-    order = np.argsort(-values)
-    values, vectors = values[order], vectors[:, order]
-    kept = int(np.count_nonzero(values > RESOLVED * values[0]))
-    return Transfer(problem, spacing, sites, q, h, values[:kept], vectors[:, :kept], shift, 1e-13)
+def _settled(link: _Link, found: Fit) -> tuple[Fit, tuple[float, Floats]]:
+    """Enlarge until ln Z and the vacuum agree with those of a smaller basis."""
+    while True:
+        trace, logs = change = link.change(found, found.frame.smaller())
+        larger = found.frame.enlarged(Tails(1e-6, 1e-6, 1e-6))
+        agreed = trace <= AGREEMENT + 8 * ROUNDING * link.sites and logs[0] <= AGREEMENT
+        if agreed or larger.points > MOST_POINTS or not found.resolved:
+            return found, change
+        found = Fit(larger, *link.solve(larger), found.tails)
+
+
+def _reported(link: _Link, found: Fit, trace: float, logs: Floats) -> Transfer:
+    if not logs[0] <= TOLERATED:
+        raise SpectrumError(
+            f"the transfer matrix does not settle: {len(found.values)} points still change it by {logs[0]:.2g}; "
+            "the potential is too rough, or singular"
+        )
+    rounding = 4 * ROUNDING * found.values[0] / found.values[: len(logs)]
+    return Transfer(
+        problem=link.problem,
+        spacing=link.spacing,
+        sites=link.sites,
+        basis=found.frame.basis,
+        eigenvalues=found.values,
+        vectors=found.vectors,
+        shift=-link.spacing * link.bottom,
+        half=link.half(found.frame),
+        log_partition_error=trace + 4 * ROUNDING * link.sites,
+        error=(logs + rounding) / link.spacing + ROUNDING * abs(link.bottom),
+    )
