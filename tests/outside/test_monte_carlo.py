@@ -18,7 +18,9 @@ OSCILLATOR = "q(t)\nL = 1/2 m q'^2 - 1/2 m w^2 q^2\nm = 1, w = 1\nlattice 20, a 
 QUARTIC = "q(t)\nL = 1/2 q'^2 - 1/2 w2 q^2 - lam q^4\nw2 = 1, lam = 1\nlattice 40, a = 0.2\nmeasure <q^2>"
 WELL = "q(t)\nL = 1/2 q'^2 - lam (q^2 - v2)^2\nlam = 1, v2 = 1\nlattice 40, a = 0.2\nmeasure <q^2>"
 SKEW = "q(t)\nL = 1/2 q'^2 - 1/2 q^2 - g q^3 - h q^4\ng = 0.2, h = 0.1\nlattice 32, a = 0.25\nmeasure <q>"
-PENDULUM = "theta(t) mod 2 pi\nL = 1/2 I theta'^2 + g cos(theta)\nI = 1, g = 1\nlattice 24, a = 0.25\nmeasure <cos(theta)>"
+PENDULUM = (
+    "theta(t) mod 2 pi\nL = 1/2 I theta'^2 + g cos(theta)\nI = 1, g = 1\nlattice 24, a = 0.25\nmeasure <cos(theta)>"
+)
 
 SETTINGS = [
     *((OSCILLATOR, {"w": w, "m": m}) for w, m in ((1, 1), (0.5, 1), (2, 0.5), (1, 3), (3, 1))),

@@ -171,7 +171,8 @@ def test_two_coupled_paths_agree_with_the_normal_modes() -> None:
     Closed form of Creutz and Freedman, Ann. Phys. 132 (1981) 427; false alarm rate 1e-4 (4 sigma).
     """
     pair = action(
-        "x(t), y(t)\nL = 1/2 x'^2 + 1/2 y'^2 - 1/2 x^2 - 1/2 y^2 - c x y\nc = 0.4\nlattice 40, a = 0.25\nmeasure <x y>, <x^2>"
+        "x(t), y(t)\nL = 1/2 x'^2 + 1/2 y'^2 - 1/2 x^2 - 1/2 y^2 - c x y\nc = 0.4\n"
+        "lattice 40, a = 0.25\nmeasure <x y>, <x^2>"
     )
     run = sample(pair, draws=320, seed=6)
 

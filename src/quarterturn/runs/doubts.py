@@ -6,7 +6,7 @@ Each function returns sentences; a `Stuck` verdict also marks the numbers as unr
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -53,9 +53,13 @@ def find_basins(euclidean: EuclideanAction, couplings: Mapping[str, float], tran
     edges = grid[tops]
     weights = []
     for low, high in zip([-np.inf, *edges], [*edges, np.inf], strict=True):
-        inside = transfer.expectation(lambda q, a=low, b=high: ((q >= a) & (q < b)).astype(float))
-        weights.append(float(inside))
+        weights.append(float(transfer.expectation(_indicator(low, high))))
     return Basins(edges, tuple(weights))
+
+
+def _indicator(low: float, high: float) -> Callable[[Floats], Floats]:
+    """1 in [low, high), 0 outside."""
+    return lambda q: ((q >= low) & (q < high)).astype(np.float64)
 
 
 def stuck_sectors(

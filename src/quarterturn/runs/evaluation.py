@@ -40,7 +40,7 @@ class Evaluator:
 
     @property
     def times(self) -> Floats:
-        return np.arange(self.layout.steps) * self.spacing
+        return np.arange(self.layout.steps, dtype=np.float64) * self.spacing
 
     def phase(self) -> Estimate | None:
         """The average phase, or None where the weight is real."""
@@ -143,7 +143,7 @@ class Evaluator:
 def is_odd(expression: Expression, euclidean: EuclideanAction) -> bool:
     """Whether a sign symmetry of the action reverses the expression, so that its expectation value vanishes."""
     for signs in euclidean.symmetries:
-        sign = dict(zip(euclidean.variables, signs, strict=True))
+        sign: dict[Atom, int] = dict(zip(euclidean.variables, signs, strict=True))
         turned = expression.substitute(lambda atom: _signed(atom, sign))  # noqa: B023 - used at once
         if turned == -expression:
             return True

@@ -147,7 +147,7 @@ class _Session:
         euclidean = self.action.euclidean
         self.basins = doubts.find_basins(euclidean, self.settings.couplings, self.exact.transfer)
         if self.basins is not None:
-            scalars = {Symbol("coupling", n): v for n, v in self.settings.couplings.items()}
+            scalars: dict[Atom, float] = {Symbol("coupling", n): v for n, v in self.settings.couplings.items()}
             mass = float(euclidean.mass[0][0].evaluate(scalars, np))
             return (self.basins.edges * np.sqrt(mass),)
         flipped = np.any(np.array(euclidean.symmetries).reshape(-1, len(euclidean.variables)) < 0, axis=0)

@@ -297,7 +297,7 @@ def _lattice(action: Action, settings: Settings, count: int) -> Levels:
         if m.kind == "curve":
             curve = exact.curve(m, constants, steps)
             if curve is not None:
-                curves[m.label] = _bare(np.arange(steps) * settings.spacing, curve, m.label)
+                curves[m.label] = _bare(np.arange(steps, dtype=np.float64) * settings.spacing, curve, m.label)
         else:
             number = exact.number(m, constants)
             if number is not None:
