@@ -16,7 +16,7 @@ from quarterturn.sampling.points import PointAction, lowest_frequency_squared
 
 Floats = NDArray[np.float64]
 NODES = 24
-CLOUD = 256  # points of the average for several variables, and as many mirrored ones
+CLOUD = 128  # points of the average for several variables, and as many mirrored ones
 LOG_LIMIT = 30.0
 
 
@@ -41,14 +41,22 @@ def gaussian_reference(points: PointAction) -> tuple[Floats, Floats]:
         spread = 1 / (2 * omega * math.tanh(half))
         free = (half + math.log1p(-math.exp(-2 * half))) / beta
         value = points.potential(v[1:, None] + nodes.T * math.sqrt(spread))
-        mean = float(np.sum(weights * np.where(np.isfinite(value), np.clip(value, -1e30, 1e30), 1e30)))
+        mean = float(np.sum(weights * _finite(value)))
         return mean + components * (free - omega**2 * spread / 2)
 
-    best = min((np.array([s, *c]) for s in np.linspace(-14, 14, 29) for c in _centres(components)), key=bound)
+    centres = _centres(components)
+    deepest = centres[int(np.argmin([_finite(points.potential(c)) for c in centres]))]
+    sizes = np.linspace(-14, 14, 29)
+    best = min((np.array([s, *c]) for s in sizes for c in (centres[0], deepest)), key=bound)
     found = minimize(bound, best, method="Powell", options={"maxiter": 10, "xtol": 1e-2, "ftol": 1e-4})
     v = found.x if bound(found.x) <= bound(best) else best
     omega = math.exp(float(np.clip(v[0], -LOG_LIMIT, LOG_LIMIT)))
     return np.maximum(np.full(components, omega**2), lowest_frequency_squared(points)), np.asarray(v[1:])
+
+
+def _finite(value: Floats) -> Floats:
+    """What is not a number, or beyond all numbers, is very high."""
+    return np.where(np.isfinite(value), np.clip(value, -1e30, 1e30), 1e30)
 
 
 def _centres(components: int) -> list[Floats]:

@@ -31,7 +31,7 @@ SEGMENT_COST = 2.5
 QUARTER = 1.5  # angle of a trajectory that forgets the reference paths: pi/2, a little less for the jitter
 SETTLING = (0.6, 0.95)  # acceptance that settling aims at
 STUCK = 0.02  # mean exp(-dH) of a chain over a block below which it has hardly moved
-FEWEST_ACCEPTED = 0.7  # of a recipe that may be frozen, where any was found
+FEWEST_ACCEPTED = 0.8  # below it a score falls steeply: rare large dH then make chains stick and <exp(-dH)> hard to check
 SETTLING_BLOCKS = 24
 RARE_KINKS = 0.9  # share of chains with kinks from which the trajectory may be left to make them
 TRIAL_SAMPLES = 3072  # draws of all chains together that a trial counts
@@ -91,7 +91,7 @@ class Trial:
 
     @property
     def score(self) -> float:
-        return min(1.0, self.acceptance / FEWEST_ACCEPTED) ** 4 * self.efficiency / self.recipe.cost
+        return min(1.0, self.acceptance / FEWEST_ACCEPTED) ** 8 * self.efficiency / self.recipe.cost
 
 
 class WarmUp:
@@ -268,12 +268,13 @@ def tune(warm_up: WarmUp, first: Recipe) -> Recipe:
     if best is None:  # interrupted
         return recipe
     recipe = best.recipe
-    local = warm_up.local_reference(recipe)
-    references = [local] if _differ(local, recipe) else []
-    references += [recipe.scaled(factor) for factor in (1.3, 0.8)]
+    again, local = warm_up.measure_reference(recipe), warm_up.local_reference(recipe)
+    references = [again.with_kicks(again.integrator, again.kicks - 1), again]
+    references += [local] if _differ(local, recipe) else []
+    references += [again.scaled(factor) for factor in (1.3, 0.8)]
     best = warm_up.try_all(references, best) or best
     recipe = best.recipe
-    others = [recipe.with_kicks(LEAPFROG.name, recipe.kicks - 1)] if recipe.kicks > 1 else []
+    others = [recipe.with_kicks(LEAPFROG.name, recipe.kicks - 1)]
     others += [recipe.with_kicks(MINIMUM_NORM.name, n) for n in (recipe.kicks + 1, recipe.kicks * 2 // 3) if n > 1]
     others += [replace(recipe, angle=recipe.angle * factor) for factor in (0.75, 1.3)]
     best = warm_up.try_all(others, best) or best
