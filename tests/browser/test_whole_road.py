@@ -35,11 +35,10 @@ def test_an_action_is_declared_sampled_and_solved(open_notebook: Callable[[list[
     expect(sampled).to_contain_text("<q^2>", timeout=90_000)  # a refused cell ends "run all" early
     expect(sampled.locator("svg").first).to_be_visible()
     solved = notebook.result(4)
-    expect(solved).to_contain_text(
-        "0.559146327183", timeout=30_000
-    )  # E_0: Hioe and Montroll's convention, see tests/outside
-    for theme in ("light", "dark"):
+    ground_state = "0.559146327183"  # E_0 in Hioe and Montroll's convention, see qm-aho-levels-lam0.1 in tests/outside
+    expect(solved).to_contain_text(ground_state, timeout=30_000)
+    for theme in ("JupyterLab Light", "JupyterLab Dark"):
         notebook.wear(theme)
-        picture = tmp_path / f"road-{theme}.png"
+        picture = tmp_path / f"road-{theme[-5:].strip()}.png"
         notebook.picture(picture)
         assert picture.stat().st_size > 10_000
