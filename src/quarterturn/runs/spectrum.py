@@ -186,7 +186,8 @@ def _continuum(
 ) -> Levels:
     if beta is not None and not beta > 0:
         raise RequestError(f"beta must be positive, got {beta:g}")
-    times = np.linspace(0, action.geometry.beta / 2 if action.geometry else 10.0, CURVE_POINTS)
+    longest = beta or (action.geometry.beta if action.geometry else 20.0)
+    times = np.linspace(0, longest / 2, CURVE_POINTS)
     view = _View(action, couplings, spectrum, beta, times)
     numbers, curves = {}, {}
     for m in action.measurements:
