@@ -21,7 +21,7 @@ from quarterturn.imaginary.problem import OnePath
 
 Floats = NDArray[np.float64]
 DECAY = 20.0  # exponent by which wave functions fall towards the ends of the first frame
-MARGIN = 1.12  # potentials steeper than harmonic ones have slower decay in momentum
+MARGIN = 1.04  # on the fastest momentum
 TAIL = 3e-8  # size of a wave function at an end, relative to its largest, that counts as nothing
 GROWTH = 1.5  # largest enlargement at once
 ATTEMPTS = 14
@@ -84,6 +84,12 @@ class LineFrame:
     def finer(self, ratio: float) -> LineFrame:
         return replace(self, points=math.ceil(self.points * ratio))
 
+    def widened(self) -> LineFrame:
+        """By one step at each end, so that the last grid points lie where the ends were."""
+        step = (self.high - self.low) / (self.points + 1)
+        low, high = (0.0 if wall else step for wall in self.walls)
+        return replace(self, low=self.low - low, high=self.high + high, points=self.points + (low > 0) + (high > 0))
+
     def _scaled(self, left: float, right: float, density: float) -> LineFrame:
         if self.mirrored:
             left = right = max(left, right)
@@ -117,7 +123,7 @@ class CircleFrame:
         return self.finer(_growth(tails.fast))
 
     def smaller(self) -> CircleFrame:
-        return self.finer(0.94)
+        return replace(self, points=max(3, (self.points | 1) - 2 * math.ceil(0.03 * self.points)))
 
     def finer(self, ratio: float) -> CircleFrame:
         return replace(self, points=math.ceil(self.points * ratio))
@@ -135,21 +141,34 @@ def _growth(tail: float) -> float:
 def line_frame(landscape: Landscape, energy: float) -> LineFrame:
     """The first guess for wave functions up to `energy`."""
     problem = landscape.problem
-    low, high = landscape.ends(energy, DECAY)
-    centre = sum(landscape.allowed(energy)) / 2
-    walls = landscape.is_wall(low, -1.0), landscape.is_wall(high, 1.0)
+    left, right = landscape.ends(energy, DECAY)
+    low, high, centre, walls = left.q, right.q, sum(landscape.allowed(energy)) / 2, (left.wall, right.wall)
     if problem.even and not any(walls):
         low, high, centre = -max(-low, high), max(-low, high), 0.0
-    fastest = np.sqrt(2 * problem.mass * (energy - landscape.bottom))
-    fastest *= _radius(2 * DECAY / (2 * max(landscape.number_in_well(energy), 0.3))) * MARGIN
-    return LineFrame(problem, low, high, max(12, math.ceil((high - low) * fastest / np.pi)), centre, walls)
+    height = energy - landscape.bottom
+    exponent = DECAY / max(landscape.number_in_well(energy), 0.3) / _slowness(landscape, height)
+    fastest = np.sqrt(2 * problem.mass * height) * _radius(exponent) * MARGIN
+    points = 4 + max(12, math.ceil((high - low) * fastest / np.pi))
+    return LineFrame(problem, low, high, points, centre, walls).widened()
 
 
-def circle_frame(problem: OnePath, kinetic: float, cells: float) -> CircleFrame:
-    """The first guess for kinetic energies up to `kinetic` in `cells` of phase space."""
-    assert problem.period is not None
-    fastest = np.sqrt(2 * problem.mass * kinetic) * _radius(DECAY / max(cells, 0.3)) * MARGIN
-    return CircleFrame(problem, max(11, math.ceil(fastest * problem.period / np.pi)))
+def _slowness(landscape: Landscape, height: float) -> float:
+    """How much slower than an oscillator's wave functions fall in momentum: sin(pi/n) where V grows like q^n.
+
+    For such V the momentum-space exponent is int |Im q| dp with q^n < 0, and n follows from the number of levels,
+    which grows like E^(1/2 + 1/n).
+    """
+    if landscape.bottom + 2 * height >= landscape.threshold:
+        return 0.8
+    growth = np.log2(landscape.number(landscape.bottom + 2 * height) / landscape.number(landscape.bottom + height))
+    return float(np.sin(np.pi / np.clip(1 / max(growth - 0.5, 0.01), 2.0, 8.0)))
+
+
+def circle_frame(problem: OnePath, energy: float) -> CircleFrame:
+    """The first guess for wave functions up to `energy`."""
+    v, number, period = around(problem)
+    fastest = np.sqrt(2 * problem.mass * (energy - v.min())) * _radius(DECAY / max(number(energy), 0.3)) * MARGIN
+    return CircleFrame(problem, max(11, math.ceil(fastest * period / np.pi)))
 
 
 def around(problem: OnePath) -> tuple[Floats, Callable[[float], float], float]:
@@ -159,7 +178,7 @@ def around(problem: OnePath) -> tuple[Floats, Callable[[float], float], float]:
     """
     assert problem.period is not None
     period = problem.period
-    v = problem.values(np.asarray((np.arange(256) - 128) * (period / 256)))
+    v = problem.values(np.asarray((np.arange(512) - 256) * (period / 512)))
     if not np.isfinite(v).all():
         raise SpectrumError("the potential is infinite somewhere on the circle; a wall there is a box on the line")
 

@@ -18,6 +18,7 @@ from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.basis import Numbers, diagonalise, eigenvalues
 from quarterturn.imaginary.fitting import (
     MOST_POINTS,
+    STALLED,
     TAIL,
     Fit,
     Frame,
@@ -28,18 +29,18 @@ from quarterturn.imaginary.fitting import (
     fit,
     line_frame,
 )
-from quarterturn.imaginary.landscape import Landscape, survey
-from quarterturn.imaginary.observables import integrated, nodes
+from quarterturn.imaginary.landscape import Landscape, energy_below, survey
+from quarterturn.imaginary.observables import integrated
 from quarterturn.imaginary.problem import OnePath
 from quarterturn.imaginary.spectrum import Spectrum
 
 Floats = NDArray[np.float64]
 AGREEMENT = 3e-13  # change between two bases, relative to the spread of the levels, that counts as none
-TOLERATED = 1e-6  # the largest error that is reported as one; beyond it the solution is refused
+TOLERATED = 1e-3  # the largest error that is reported as one; beyond it the solution is refused
 CONVERGED = 1e-9  # the same below which a level may enter sums
 ROUNDING = 2.3e-16
+CEILING = 50.0  # of the largest kinetic energy, above which a potential is cut off
 MOST_ROUGH = 420  # points for potentials with kinks or steps
-DEEP = 8  # halvings of a cell, more than which mean a kink
 
 
 def levels(problem: OnePath, count: int) -> Spectrum:
@@ -74,26 +75,27 @@ def levels(problem: OnePath, count: int) -> Spectrum:
 # --- the line ---------------------------------------------------------------------------------------------------
 def _on_the_line(problem: OnePath, count: int) -> Spectrum:
     landscape = survey(problem)
-    energy = _highest(landscape, count)
-    landscape = landscape.refined(*landscape.ends(energy, 10.0))
-    energy = _highest(landscape, count)
-    frame = line_frame(landscape, energy)
-    if frame.points > MOST_POINTS:
-        raise SpectrumError(
-            f"{count} levels of this potential need {frame.points} points between q = {frame.low:.4g} and "
-            f"{frame.high:.4g}, more than {MOST_POINTS}"
-        )
+    energy = _highest(landscape, count, None)
+    landscape = landscape.refined(energy)
+    frame = line_frame(landscape, _highest(landscape, count, energy))
     hamiltonian = _Hamiltonian(problem, landscape.bottom)
-    found = fit(frame, hamiltonian.solve, lambda values: min(count, len(values)))
-    if landscape.level and found.values[min(count, len(found.values)) - 1] + landscape.bottom >= landscape.threshold:
+    found = fit(_large_enough(frame, count), hamiltonian.solve, lambda _: count)
+    if found.values[count - 1] + landscape.bottom >= landscape.threshold:
         raise _too_few(found, landscape, count)
     threshold = landscape.threshold if landscape.level else np.inf
     return _spectrum(hamiltonian, found, count, threshold, landscape.number)
 
 
-def _highest(landscape: Landscape, count: int) -> float:
+def _large_enough(frame: Frame, count: int) -> Frame:
+    if (points := max(frame.points, math.ceil(1.15 * count) + 12)) > MOST_POINTS:
+        span = f" between q = {frame.low:.4g} and {frame.high:.4g}" if isinstance(frame, LineFrame) else ""
+        raise SpectrumError(f"the levels asked for need {points} points{span}, more than {MOST_POINTS}")
+    return frame.finer(points / frame.points)
+
+
+def _highest(landscape: Landscape, count: int, guess: float | None) -> float:
     """An energy above level `count`, or one close to where the continuum begins."""
-    energy = landscape.energy_of(count + 0.5)
+    energy = landscape.energy_of(count + 0.5, guess)
     return energy if energy < landscape.threshold else landscape.threshold - 0.1 * (energy - landscape.bottom)
 
 
@@ -104,7 +106,7 @@ def _too_few(found: Fit, landscape: Landscape, count: int) -> SpectrumError:
     resolution = (np.pi / (frame.high - frame.low)) ** 2 / (2 * landscape.problem.mass)
     many = {0: "no level is bound", 1: "one level is bound"}.get(bound, f"{bound} levels are bound")
     return SpectrumError(
-        f"{many}, {count} were asked for: above V = {landscape.threshold:.6g} is the continuum "
+        f"{many}, {count} were asked for: above V = {landscape.threshold + 0.0:.6g} is the continuum "
         f"(a level less than about {resolution:.1g} below it would not be seen)"
     )
 
@@ -112,13 +114,10 @@ def _too_few(found: Fit, landscape: Landscape, count: int) -> SpectrumError:
 # --- the circle -------------------------------------------------------------------------------------------------
 def _on_the_circle(problem: OnePath, count: int) -> Spectrum:
     v, number, period = around(problem)
-    bottom, mean = float(v.min()), float(v.mean())
     free = ((count + 1.5) * np.pi / period) ** 2 / (2 * problem.mass)
-    frame = circle_frame(problem, free + (mean - bottom), count + 1.5)
-    hamiltonian = _Hamiltonian(problem, bottom)
-    if frame.points > MOST_POINTS:
-        raise SpectrumError(f"{count} levels on this circle need {frame.points} plane waves, more than {MOST_POINTS}")
-    found = fit(frame, hamiltonian.solve, lambda values: min(count, len(values)))
+    energy = energy_below(number, count + 1.5, float(v.min()), free)
+    hamiltonian = _Hamiltonian(problem, float(v.min()))
+    found = fit(_large_enough(circle_frame(problem, energy), count), hamiltonian.solve, lambda _: count)
     return _spectrum(hamiltonian, found, count, np.inf, number)
 
 
@@ -141,7 +140,7 @@ class _Hamiltonian:
 
     def potential(self, frame: Frame, q: Floats) -> Floats:
         """V - bottom, cut off far above every kinetic energy of the basis (poles, overflow)."""
-        ceiling = 1e4 * np.max(frame.basis.momenta**2) / (2 * self.problem.mass)
+        ceiling = CEILING * np.max(frame.basis.momenta**2) / (2 * self.problem.mass)
         return np.minimum(self.problem.values(q) - self.bottom, ceiling)
 
     def solve(self, frame: Frame) -> tuple[Floats, Numbers]:
@@ -164,23 +163,16 @@ class _RoughHamiltonian(_Hamiltonian):
         return np.asarray(matrix + integrated(lambda q: self.potential(frame, q), frame.basis, uniform))
 
 
-def _is_rough(hamiltonian: _Hamiltonian, frame: Frame) -> bool:
-    uniform = np.full(len(frame.basis.grid), 1 / len(frame.basis.grid))
-    return nodes(lambda q: hamiltonian.potential(frame, q), frame.basis, uniform)[2] > DEEP
-
-
 def _spectrum(
     hamiltonian: _Hamiltonian, found: Fit, count: int, threshold: float, number: Callable[[float], float]
 ) -> Spectrum:
     """Test a fit against a second basis, enlarge it while they differ, and report it with the difference."""
     problem, bottom = hamiltonian.problem, hamiltonian.bottom
-    if found.tails.fast > TAIL and _is_rough(hamiltonian, found.frame):
-        hamiltonian = _RoughHamiltonian(problem, bottom)
-        frame = found.frame.finer(max(1.0, MOST_ROUGH / found.frame.points))
-        found = Fit(frame, *hamiltonian.solve(frame), found.tails)
-        change = _change(hamiltonian, found, frame.finer(0.7))
+    settled = None if found.tails.fast > TAIL else _settled(hamiltonian, found, count)
+    if settled is None:
+        hamiltonian, found, change = _integrated(problem, bottom, found.frame)
     else:
-        found, change = _settled(hamiltonian, found, count)
+        found, change = settled
     rounding = hamiltonian.rounding(found.frame)
     errors = change + rounding
     height = found.values[count - 1]
@@ -189,7 +181,7 @@ def _spectrum(
             f"the levels do not settle: {len(found.values)} points still change them by {np.max(change[:count]):.2g}; "
             "the potential is too rough, or singular"
         )
-    settled = errors <= CONVERGED * (found.values[: len(errors)] + height)
+    converged = errors <= CONVERGED * (found.values[: len(errors)] + height)
     return Spectrum(
         energies=found.values[:count] + bottom,
         errors=errors[:count],
@@ -197,25 +189,37 @@ def _spectrum(
         mass=problem.mass,
         values=found.values + bottom,
         vectors=found.vectors,
-        reliable=max(count, len(settled) if settled.all() else int(np.argmin(settled))),
+        reliable=max(count, len(converged) if converged.all() else int(np.argmin(converged))),
         threshold=threshold,
         facts=_facts(found, hamiltonian),
         extend=lambda energy: levels(problem, math.ceil(number(energy)) + 2),
     )
 
 
-def _settled(hamiltonian: _Hamiltonian, found: Fit, count: int) -> tuple[Fit, Floats]:
-    """Enlarge until the first `count` levels agree with those of a smaller basis; and the change of all of them."""
-    everywhere = Tails(1e-6, 1e-6, 1e-6)
+def _settled(hamiltonian: _Hamiltonian, found: Fit, count: int) -> tuple[Fit, Floats] | None:
+    """Enlarge until the first `count` levels agree with those of a smaller basis; and the change of all of them.
+
+    None where the change falls too slowly to say much about the error.
+    """
+    previous = np.inf
     while True:
         change = _change(hamiltonian, found, found.frame.smaller())
         worst = float(np.max(change[:count]))
-        larger = found.frame.enlarged(everywhere)
         if worst <= AGREEMENT * found.values[count - 1] + 2 * hamiltonian.rounding(found.frame):
             return found, change
-        if larger.points > MOST_POINTS or not found.resolved:
-            return found, change
-        found = Fit(larger, *hamiltonian.solve(larger), found.tails)
+        larger = found.frame.enlarged(Tails(1e-6, 1e-6, 1e-6))
+        if worst > STALLED * previous or larger.points > MOST_POINTS:
+            return None
+        previous, found = worst, Fit(larger, *hamiltonian.solve(larger), found.tails)
+
+
+def _integrated(problem: OnePath, bottom: float, frame: Frame) -> tuple[_Hamiltonian, Fit, Floats]:
+    """With all integrals over the potential, in many functions; and the change from two thirds as many."""
+    hamiltonian = _RoughHamiltonian(problem, bottom)
+    frame = frame.finer(max(1.0, MOST_ROUGH / frame.points))
+    values, vectors = hamiltonian.solve(frame)
+    found = Fit(frame, values, vectors, frame.tails(vectors[:, :1]))
+    return hamiltonian, found, _change(hamiltonian, found, frame.smaller().finer(0.7))
 
 
 def _change(hamiltonian: _Hamiltonian, found: Fit, other: Frame) -> Floats:

@@ -17,21 +17,32 @@ from numpy.typing import NDArray
 
 from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.basis import Basis, Numbers, diagonalise, eigenvalues
-from quarterturn.imaginary.fitting import MOST_POINTS, TAIL, Fit, Frame, Tails, around, circle_frame, fit, line_frame
-from quarterturn.imaginary.landscape import survey
-from quarterturn.imaginary.observables import Diagonal, Observer, integrated, nodes
+from quarterturn.imaginary.fitting import (
+    MOST_POINTS,
+    STALLED,
+    TAIL,
+    Fit,
+    Frame,
+    Tails,
+    around,
+    circle_frame,
+    fit,
+    line_frame,
+)
+from quarterturn.imaginary.landscape import energy_below, survey
+from quarterturn.imaginary.observables import Diagonal, Observer, integrated
 from quarterturn.imaginary.problem import Local, OnePath
 
 Floats = NDArray[np.float64]
+CLEAR = 1e-7  # eigenvectors of smaller ones are disturbed by rounding, more than tails may be
 RESOLVED = 1e-13  # eigenvalues smaller than this share of the largest are rounding
 THERMAL_RESIDUE = 34.0  # states suppressed by exp(-34) = 2e-15 carry nothing in a trace
 ZERO_ELEMENT = 1e-8  # of all that an operator makes of the vacuum, the part below which a level counts as not created
 ROUNDING = 2.3e-16
 AGREEMENT = 2e-13  # change of ln Z and of the lowest energies times beta between two bases that counts as none
-TOLERATED = 1e-6
+TOLERATED = 1e-4
 LEVELS = 8  # that the basis is made for, beside those that carry the trace
 MOST_ROUGH = 420  # points for potentials with kinks or steps
-DEEP = 8  # halvings of a cell, more than which mean a kink
 
 
 @dataclass(frozen=True, eq=False)
@@ -221,13 +232,13 @@ def transfer(problem: OnePath, spacing: float, sites: int) -> Transfer:
             "the temperature is too high, or the potential too wide"
         )
     found = fit(frame, link.solve, link.carried)
-    if found.tails.fast > TAIL and link.is_rough(found.frame):
+    settled = None if found.tails.fast > TAIL else _settled(link, found)
+    if settled is None:
         link = _RoughLink(problem, spacing, sites, link.bottom)
         frame = found.frame.finer(max(1.0, MOST_ROUGH / found.frame.points))
         found = Fit(frame, *link.solve(frame), found.tails)
-        change = link.change(found, frame.finer(0.7))
-    else:
-        found, change = _settled(link, found)
+        settled = found, link.change(found, frame.smaller().finer(0.7))
+    found, change = settled
     return _reported(link, found, *change)
 
 
@@ -238,18 +249,17 @@ def _on_the_line(problem: OnePath, spacing: float, sites: int) -> tuple[_Link, F
             f"the potential does not confine (V = {landscape.threshold:.6g} far away): "
             "the trace over periodic paths grows with the size of the box"
         )
-    above = THERMAL_RESIDUE / (spacing * sites)
-    landscape = landscape.refined(*landscape.ends(landscape.energy_of(LEVELS + 0.5) + above, 10.0))
-    frame = line_frame(landscape, landscape.energy_of(LEVELS + 0.5) + above)
+    energy, above = landscape.energy_of(LEVELS + 0.5), THERMAL_RESIDUE / (spacing * sites)
+    landscape = landscape.refined(energy + above)
+    frame = line_frame(landscape, landscape.energy_of(LEVELS + 0.5, energy) + above)
     return _Link(problem, spacing, sites, landscape.bottom), frame
 
 
 def _on_the_circle(problem: OnePath, spacing: float, sites: int) -> tuple[_Link, Frame]:
     v, number, period = around(problem)
-    above = ((LEVELS + 1.5) * np.pi / period) ** 2 / (2 * problem.mass) + THERMAL_RESIDUE / (spacing * sites)
-    energy = float(v.mean()) + above
-    frame = circle_frame(problem, energy - float(v.min()), number(energy))
-    return _Link(problem, spacing, sites, float(v.min())), frame
+    free = ((LEVELS + 1.5) * np.pi / period) ** 2 / (2 * problem.mass)
+    energy = energy_below(number, LEVELS + 1.5, float(v.min()), free) + THERMAL_RESIDUE / (spacing * sites)
+    return _Link(problem, spacing, sites, float(v.min())), circle_frame(problem, energy)
 
 
 @dataclass(frozen=True)
@@ -280,12 +290,9 @@ class _Link:
 
     def carried(self, values: Floats) -> int:
         """How many eigenvectors matter: those that carry the trace, and a few levels where they are resolved."""
-        thermal = int(np.count_nonzero(values**self.sites > np.exp(-THERMAL_RESIDUE) * values[0] ** self.sites))
-        return max(thermal, int(np.count_nonzero(values[:LEVELS] > 1e-9 * values[0])))
-
-    def is_rough(self, frame: Frame) -> bool:
-        uniform = np.full(len(frame.basis.grid), 1 / len(frame.basis.grid))
-        return nodes(self.root, frame.basis, uniform)[2] > DEEP
+        share = values / values[0]
+        weight = self.sites * np.log(np.maximum(share, 1e-300))
+        return int(np.count_nonzero((share > CLEAR) & ((weight > -THERMAL_RESIDUE) | (np.arange(len(share)) < LEVELS))))
 
     def change(self, found: Fit, other: Frame) -> tuple[float, Floats]:
         """Of ln Z, and of the resolved ln lambda_n, towards another frame."""
@@ -306,15 +313,18 @@ class _RoughLink(_Link):
         return integrated(self.root, frame.basis, uniform)
 
 
-def _settled(link: _Link, found: Fit) -> tuple[Fit, tuple[float, Floats]]:
-    """Enlarge until ln Z and the vacuum agree with those of a smaller basis."""
+def _settled(link: _Link, found: Fit) -> tuple[Fit, tuple[float, Floats]] | None:
+    """Enlarge until ln Z and the vacuum agree with those of a smaller basis; None where they approach too slowly."""
+    previous = np.inf
     while True:
         trace, logs = change = link.change(found, found.frame.smaller())
-        larger = found.frame.enlarged(Tails(1e-6, 1e-6, 1e-6))
-        agreed = trace <= AGREEMENT + 8 * ROUNDING * link.sites and logs[0] <= AGREEMENT
-        if agreed or larger.points > MOST_POINTS or not found.resolved:
+        worst = max(trace / (1 + 40 * link.sites * ROUNDING / AGREEMENT), float(logs[0]))
+        if worst <= AGREEMENT:
             return found, change
-        found = Fit(larger, *link.solve(larger), found.tails)
+        larger = found.frame.enlarged(Tails(1e-6, 1e-6, 1e-6))
+        if worst > STALLED * previous or larger.points > MOST_POINTS:
+            return None
+        previous, found = worst, Fit(larger, *link.solve(larger), found.tails)
 
 
 def _reported(link: _Link, found: Fit, trace: float, logs: Floats) -> Transfer:
