@@ -62,13 +62,14 @@ def shell(tmp_path_factory: pytest.TempPathFactory) -> Iterator[InteractiveShell
 
 
 @pytest.fixture
-def registry() -> Iterator[Registry]:
-    """The session's registry, empty."""
-    session.actions.clear()
-    session.results.clear()
+def registry(shell: InteractiveShell) -> Iterator[Registry]:
+    """The session's registry, empty; what a test leaves there or in variables is taken away."""
+    before = set(shell.user_ns)
     yield session
     session.actions.clear()
     session.results.clear()
+    for name in set(shell.user_ns) - before:
+        del shell.user_ns[name]
 
 
 @pytest.fixture(scope="session")

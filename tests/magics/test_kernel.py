@@ -75,6 +75,24 @@ def test_progress_is_one_display_updated_and_only_the_result_remains(kernel: Ker
     assert not of_kind(messages, "comm_open", "comm_msg", "stream", "error")
 
 
+@pytest.mark.parametrize(
+    ("cell", "cleared"),
+    [
+        ("# first\n\n%sample well draws=64", 1),
+        ("run = %sample well draws=64", 1),
+        ("print('mine')\n%sample well draws=64", 0),
+        ("%sample well draws=64\nprint('mine')\n%sample well draws=64", 1),
+    ],
+)
+def test_the_empty_output_goes_only_where_there_can_be_no_other(kernel: Kernel, cell: str, cleared: int) -> None:
+    messages = kernel.types(cell)
+    clears = of_kind(messages, "clear_output")
+    assert len(clears) == cleared and all(message["content"]["wait"] for message in clears)
+    assert not cleared or messages.index(clears[0]) < min(
+        (messages.index(m) for m in of_kind(messages, "stream", "execute_result")), default=len(messages)
+    )
+
+
 def test_the_stop_button_ends_the_cell_with_a_run_that_is_cut_short(kernel: Kernel) -> None:
     pressed: list[float] = []
 

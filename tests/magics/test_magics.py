@@ -84,6 +84,13 @@ def test_results_are_found_by_variable_action_and_record(person: Any, registry: 
     assert places == sorted(places)
 
 
+def test_a_variable_means_what_it_holds_now(person: Any) -> None:
+    person.gets("%levels well count=2 as spectrum")
+    made = person.gets("import quarterturn as qt; spectrum = qt.levels(spectrum.action, count=3); spectrum")
+    assert person.gets("%record spectrum result") is made
+    assert "a call in Python" in repr(person.gets("%record spectrum"))
+
+
 def test_a_record_is_shown_in_words_and_as_json(person: Any) -> None:
     run = person.gets("%sample well lam=0.2 draws=16 as run")
     sheet = person.gets("%record run")

@@ -22,6 +22,9 @@ class Recorder:
     def clear(self) -> None:
         self.shown.append(None)
 
+    def clear_output(self, wait: bool) -> None:
+        self.shown.append({"cleared": wait})
+
     def publish(self, **message: Any) -> None:
         self.shown.append(message)
 
@@ -67,6 +70,14 @@ def test_a_display_is_made_once_updated_and_emptied() -> None:
     assert [message["update"] for message in publisher.shown] == [False, True, True]
     assert len({message["transient"]["display_id"] for message in publisher.shown}) == 1
     assert publisher.shown[-1]["data"] == {"text/plain": ""}
+
+
+def test_an_output_that_is_alone_is_taken_away_when_the_next_one_comes() -> None:
+    publisher = Recorder()
+    display = NotebookDisplay(type("Shell", (), {"display_pub": publisher})(), alone=True)
+    display.show("a", "<b>a</b>")
+    display.clear()
+    assert publisher.shown[-1] == {"cleared": True}
 
 
 def test_the_page_is_escaped_and_says_how_far_it_is() -> None:

@@ -9,6 +9,7 @@ import re
 from collections.abc import Callable
 
 from IPython.core.completer import CompletionContext, SimpleCompletion, SimpleMatcherResult, context_matcher
+from IPython.core.getipython import get_ipython
 
 from quarterturn.magics.levels import OPTIONS as LEVELS_OPTIONS
 from quarterturn.magics.record import VIEWS
@@ -49,7 +50,7 @@ def _settings(options: tuple[str, ...]) -> Callable[[str], list[str]]:
 
 def _results(before: str) -> list[str]:
     if not before.strip():
-        return [*session.names(), "all"] if session.results else []
+        return [*session.names(get_ipython()), "all"] if session.results else []
     return list(VIEWS) if len(before.split()) == 1 else []
 
 

@@ -1,11 +1,13 @@
 """What a person sees while a run goes on: a table in a notebook, one line in a terminal, nothing in a file.
 
-A notebook gets one display that is updated at most four times a second and emptied at the end, so that only the
-result stays. Nothing is sent on comms: that would hold up the messages of the front end until the cell ends.
+A notebook gets one display that is updated at most four times a second and emptied at the end; where the cell begins
+with the magic, so that nothing else can have been written yet, the empty output goes too. Nothing is sent on comms:
+that would hold up the messages of the front end until the cell ends.
 """
 
 from __future__ import annotations
 
+import re
 import shutil
 import sys
 import time
@@ -21,6 +23,7 @@ if TYPE_CHECKING:
     from quarterturn.runs.progress import Progress
 
 SHORTEST = 0.25  # seconds between updates
+FIRST = re.compile(r"(?:[^\W\d]\w*\s*=\s*)?%(?:sample|verify)\b")
 NARROWEST = 20  # terminal cells
 
 
@@ -34,9 +37,10 @@ class Surface(Protocol):
 
 @dataclass
 class NotebookDisplay:
-    """One output of the running cell, updated in place."""
+    """One output of the running cell, updated in place; `alone` if there can be no other yet."""
 
     shell: Any
+    alone: bool = False
     name: str = field(default_factory=lambda: uuid.uuid4().hex)
     shown: bool = False
 
@@ -46,6 +50,8 @@ class NotebookDisplay:
     def clear(self) -> None:
         if self.shown:
             self._publish({"text/plain": ""})
+            if self.alone:
+                self.shell.display_pub.clear_output(wait=True)  # when the result comes: no flicker
 
     def _publish(self, data: dict[str, str]) -> None:
         self.shell.display_pub.publish(data=data, metadata={}, transient={"display_id": self.name}, update=self.shown)
@@ -159,7 +165,25 @@ def _share(share: float | None) -> str:
     return "" if share is None else f"{min(share, 1.0):.0%} there"
 
 
+_cells_begun: list[str] = []  # the message of the latest cell that began with a magic of ours
+
+
+def _begins_cell(shell: Any) -> bool:
+    """Whether the running magic is the first statement of its cell."""
+    try:
+        message = shell.kernel.get_parent("shell")
+        cell, code = message["header"]["msg_id"], message["content"]["code"]
+    except (AttributeError, KeyError, TypeError):  # a kernel of another make
+        return False
+    lines = (line.strip() for line in code.splitlines())
+    first = next((line for line in lines if line and not line.startswith("#")), "")
+    if not FIRST.match(first) or cell in _cells_begun:
+        return False
+    _cells_begun[:] = [cell]
+    return True
+
+
 def _surface(shell: Any) -> Surface | None:
     if getattr(shell, "kernel", None) is not None:
-        return NotebookDisplay(shell)
+        return NotebookDisplay(shell, _begins_cell(shell))
     return TerminalLine(sys.stdout) if sys.stdout.isatty() else None

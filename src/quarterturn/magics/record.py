@@ -61,8 +61,8 @@ class RecordMagic(Magics):
             %record [NAME] [json | result]
             %record all
 
-        NAME      last (or nothing), a variable given by 'as', an action (its latest result), or the
-                  first letters of a record's name
+        NAME      last (or nothing), a Python variable, an action (its latest result), or the first letters
+                  of a record's name
         json      the record itself, as it travels in the notebook
         result    the result again, as when it was made
         all       every result of this session, most recent first
@@ -78,7 +78,7 @@ class RecordMagic(Magics):
             raise shown.at(names[1], f"after the name of a result stands nothing, {' or '.join(VIEWS)}")
         if view is None and names and names[0].text == "all":
             return Sheet("results of this session", [(kept.short_name, kept.line) for kept in session.results])
-        kept = session.result(shown, names[0] if names else None)
+        kept = session.result(shown, names[0] if names else None, self.shell)
         if view == "result":
             return kept.result
         return Source(kept.result.record) if view == "json" else provenance(kept)
@@ -90,8 +90,7 @@ def provenance(kept: Kept) -> Sheet:
     action, lattice, request = record["action"], record["lattice"], record["request"]
     pairs = [
         ("record", f"{kept.result.record_name}"),
-        ("made by", kept.line),
-        ("variable", kept.variable or ""),
+        ("made by", kept.line or "a call in Python"),
         (
             "action",
             f"{action['name']}, digest {action['digest'][:SHORT_NAME]}, turned {action['turned_digest'][:SHORT_NAME]}",

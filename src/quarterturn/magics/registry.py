@@ -24,21 +24,19 @@ SHORT_NAME = 12  # letters of a record's name that are shown
 
 @dataclass(frozen=True)
 class Kept:
-    """A result, the line that made it, and the variable it was given."""
+    """A result, and the line that made it; empty for one that a call in Python made."""
 
     result: Run | Levels
     line: str
-    variable: str | None
 
     @property
     def short_name(self) -> str:
         return self.result.record_name[:SHORT_NAME]
 
     def answers_to(self, word: str) -> bool:
-        """Whether `word` is its variable, its action, or the beginning of its record's name."""
-        if word in (self.variable, self.result.action.name):
-            return True
-        return len(word) >= FEWEST_LETTERS and self.result.record_name.startswith(word)
+        """Whether `word` is its action or the beginning of its record's name."""
+        begins = len(word) >= FEWEST_LETTERS and self.result.record_name.startswith(word)
+        return begins or word == self.result.action.name
 
 
 @dataclass
@@ -63,28 +61,32 @@ class Registry:
 
     def keep(self, result: Run | Levels, words: Words, shell: Any) -> None:
         """Keep a result, and give it to the variable that the line asks for."""
-        self.results.insert(0, Kept(result, words.line.text, words.variable))
+        self.results.insert(0, Kept(result, words.line.text))
         _assign(result, words, shell)
 
-    def result(self, line: Line, name: Token | None) -> Kept:
-        """The latest result that `name` stands for; the latest of all for None or `last`.
+    def result(self, line: Line, name: Token | None, shell: Any) -> Kept:
+        """The result that `name` stands for, a variable before an action; the latest of all for None or `last`.
 
         Raises RequestError, which lists what there is.
         """
+        if name is not None and hasattr(shell.user_ns.get(name.text), "record_name"):
+            value = shell.user_ns[name.text]
+            return next((kept for kept in self.results if kept.result is value), Kept(value, ""))
         if not self.results:
             raise RequestError("there is no result in this session yet: %sample and %levels make some")
         if name is None or name.text == "last":
             return self.results[0]
         found = next((kept for kept in self.results if kept.answers_to(name.text)), None)
         if found is None:
-            there = self.names()
+            there = self.names(shell)
             near = nearest(name.text, there)
             raise line.at(name, f"no result is called {name.text}; there is {', '.join(there)}", near)
         return found
 
-    def names(self) -> list[str]:
+    def names(self, shell: Any) -> list[str]:
         """Everything that a result can be called by: last, variables, actions, short names of records."""
-        variables = [kept.variable for kept in self.results if kept.variable]
+        values = shell.user_ns.items()
+        variables = [name for name, value in values if name[0] != "_" and hasattr(value, "record_name")]
         actions = [kept.result.action.name for kept in self.results]
         return list(dict.fromkeys(["last", *variables, *actions, *(kept.short_name for kept in self.results)]))
 

@@ -16,7 +16,7 @@ from quarterturn.errors import RequestError, Span, underline
 
 Kind = Literal["word", "label", "="]
 NAME = re.compile(r"[^\W\d][\w.-]*")
-NOT_NAMES = frozenset({"all", "as", "last"})  # words of the magics themselves
+NOT_NAMES = frozenset({"all", "as", "json", "last", "result"})  # words of the magics themselves
 
 
 class LineError(RequestError):
