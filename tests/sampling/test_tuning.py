@@ -53,13 +53,13 @@ def check(chain: Chain, longest: float) -> None:
     ("couplings", "spacing", "longest"),
     [
         ({"c2": 0.5, "c3": 0.5, "c4": 0.3}, 0.25, 1.5),  # skew
-        ({"c1": -100.0, "c2": 0.5}, 0.2, 1.0),  # centred at 100
-        ({"c1": -20.0, "c2": 1e-3}, 0.2, 1.0),  # centred at 10000, and soft
-        ({"c2": 0.5, "c4": 1.0, "m": 1e-6}, 0.2, 1.0),  # a very light particle: the fast scale is 1000 times shorter
+        ({"c1": -100.0, "c2": 0.5}, 0.2, 1.5),  # centred at 100
+        ({"c1": -20.0, "c2": 1e-3}, 0.2, 1.5),  # centred at 10000, and soft
+        ({"c2": 0.5, "c4": 1.0, "m": 1e-6}, 0.2, 1.5),  # a very light particle: the fast scale is 1000 times shorter
         ({"c2": 0.5, "c4": 1.0, "m": 1e6}, 0.2, 1.5),  # a very heavy one: classical
-        ({"c2": 0.5e6}, 0.2, 1.0),  # frequency 1000 at a coarse spacing
-        ({"c2": 0.5e6}, 0.0002, 1.0),  # and at a fine one
-        ({"c4": 100.0, "c2": 0.5}, 0.1, 1.0),  # strong coupling
+        ({"c2": 0.5e6}, 0.2, 1.5),  # frequency 1000 at a coarse spacing
+        ({"c2": 0.5e6}, 0.0002, 1.5),  # and at a fine one
+        ({"c4": 100.0, "c2": 0.5}, 0.1, 1.5),  # strong coupling
         ({"c4": 1.0}, 0.0125, 1.5),  # beta = 0.5
         ({"c1": 0.3, "c2": -32.0, "c4": 4.0}, 0.25, 1.5),  # one of two unlike wells
     ],

@@ -55,7 +55,8 @@ class Chain:
     acceptance: dict[str, float] | None = None
     sectors: SectorCount | None = None
     exp_change: tuple[float, float] = (1.0, 0.0)  # <exp(-dH)> and its error
-    seconds: float = 0.0
+    seconds: float = 0.0  # from the call, warm-up and any compilation included
+    warm_up_seconds: float = 0.0
     nonfinite: int = 0  # trajectories that ended where action or force is not a finite number; all were rejected
     trials: tuple[Trial, ...] = field(default=(), repr=False)  # what warm-up tried, in order
 
@@ -95,6 +96,7 @@ def run_chains(
             warm_up.blocks * BLOCK,
             sectors=SectorCount(edges),
             trials=tuple(warm_up.trials),
+            warm_up_seconds=time.monotonic() - began,
         )
         _draw(
             chain, warm_up.state, jnp.asarray(seed_key(request.seed, MAIN)), p, request, began, interrupted, satisfied

@@ -212,7 +212,7 @@ class WarmUp:
 def _efficiency(series: Floats) -> float:
     """Effective samples per draw, 1 / (2 tau), of the slowest column of (draws, chains, columns).
 
-    tau = 1/2 + sum of the autocorrelations, summed until they fall below what noise gives (1.5 / sqrt(samples)),
+    tau = 1/2 + sum of the autocorrelations, summed until they fall below what noise gives (1 / sqrt(samples)),
     which is also taken off each, so that equals are told apart by their cost.
     """
     centred = series - series.mean(axis=(0, 1))
@@ -221,7 +221,7 @@ def _efficiency(series: Floats) -> float:
     if not moving.any():
         return 0.0
     centred = centred[:, :, moving] / np.sqrt(variance[moving])
-    noise = 1.5 / np.sqrt(series.shape[0] * series.shape[1])
+    noise = 1.0 / np.sqrt(series.shape[0] * series.shape[1])
     tau, open_ = np.full(centred.shape[2], 0.5), np.full(centred.shape[2], True)
     for lag in range(1, len(series) // 2):
         rho = np.mean(centred[lag:] * centred[:-lag], axis=(0, 1)) - noise
