@@ -207,7 +207,8 @@ class _Declaration:
         measurements, used = self.measurements(scope, paths, geometry, dynamics)
         euclidean = self.euclidean(turned, paths, variables, couplings)
         notes = self.notes(scope, turned, couplings, definitions, used)
-        dimensions = coupling_dimensions(euclidean_lagrangian(turned, variables))
+        angles = frozenset(name for name, path in paths.items() if path.period is not None)
+        dimensions = coupling_dimensions(euclidean_lagrangian(turned, variables), angles)
         couplings = {
             n: Coupling(n, c.default, dimensions.get(n), c.span) for n, c in sorted(couplings.items(), key=lambda item: item[0])
         }

@@ -11,8 +11,8 @@ from fractions import Fraction
 from quarterturn.actions.expression import Expression, Function, PathAtom, Power, Symbol
 
 
-def coupling_dimensions(lagrangian: Expression) -> dict[str, Fraction | None]:
-    """Dimension of each coupling in powers of mass; None where the terms do not determine it."""
+def coupling_dimensions(lagrangian: Expression, angles: frozenset[str] = frozenset()) -> dict[str, Fraction | None]:
+    """Dimension of each coupling in powers of mass; None where the terms do not determine it. Angles have none."""
     equations: list[tuple[dict[str, Fraction], Fraction]] = []
     names: set[str] = set()
     for monomial, _ in lagrangian.terms:
@@ -20,7 +20,8 @@ def coupling_dimensions(lagrangian: Expression) -> dict[str, Fraction | None]:
         right = Fraction(1)
         for atom, power in monomial:
             if isinstance(atom, PathAtom):
-                row[f"path {atom.name}"] = row.get(f"path {atom.name}", Fraction(0)) + power
+                if atom.name not in angles:
+                    row[f"path {atom.name}"] = row.get(f"path {atom.name}", Fraction(0)) + power
                 right -= atom.order * power
             elif isinstance(atom, Symbol) and atom.kind == "coupling":
                 row[atom.name] = row.get(atom.name, Fraction(0)) + power

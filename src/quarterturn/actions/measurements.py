@@ -139,9 +139,24 @@ class MeasureScope(Scope):
                 return sum((self.linear(term, whole) for term in node.terms), ZERO)
             case Negative():
                 return -self.linear(node.body, whole)
+            case Dot():
+                return self.dotted_times(node, whole)
             case Quotient() if not set(_times_in(node.right, self)):
                 return self.linear(node.left, whole) * self.number(node.right).inverse()
         return self.joint([self.timed(f) for f in _factors(node)], whole)
+
+    def dotted_times(self, node: Dot, whole: Average) -> Expression:
+        """r(t).r(0): the sum over components of products at the two times."""
+        sides = []
+        for side in (node.left, node.right):
+            times, value = set(_times_in(side, self)), self.value(side)
+            if len(times) != 1 or not isinstance(value, tuple):
+                raise self.error("each side of a dot product at two times is a vector at one time", side.span)
+            sides.append((next(iter(times)), value))
+        (t1, left), (t2, right) = sides
+        if len(left) != len(right):
+            raise self.error(f"a dot product of {len(left)} with {len(right)} components", node.span)
+        return sum((self.joint([(t1, a), (t2, b)], whole) for a, b in zip(left, right, strict=True)), ZERO)
 
     def timed(self, node: Node) -> tuple[Time | str, Expression]:
         """A factor with its one time; "" where it has none."""
@@ -255,8 +270,14 @@ def _typeset_bracket(bracket: Bracket) -> str:
 def _bracket_label(groups: tuple[tuple[Time, Expression], ...]) -> str:
     if len(groups) == 1:
         return f"<{notation(groups[0][1])}>"
-    parts = [f"({notation(e)})({'t' if time is None else f'{float(time):g}'})" for time, e in groups]
-    return f"<{' '.join(parts)}>"
+    return f"<{' '.join(_at(e, time) for time, e in groups)}>"
+
+
+def _at(expression: Expression, time: Time) -> str:
+    """q(t), (q^2)(0)."""
+    text = notation(expression)
+    simple = len(expression.terms) == 1 and expression == Expression.of(next(iter(expression.paths), ENERGY))
+    return (text if simple else f"({text})") + f"({'t' if time is None else f'{float(time):g}'})"
 
 
 # --- looking into syntax trees --------------------------------------------------------------------------------------

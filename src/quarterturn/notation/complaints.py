@@ -5,7 +5,7 @@ from __future__ import annotations
 from quarterturn.errors import NotationError
 from quarterturn.notation.tokens import Lexeme, Source
 
-OPENERS = {"OPEN": "(", "CALL_OPEN": "(", "SQUARE_OPEN": "[", "ANGLE_OPEN": "<", "BAR_OPEN": "|"}
+OPENERS = {"OPEN": "(", "CALL_OPEN": "(", "AT_OPEN": "(", "SQUARE_OPEN": "[", "ANGLE_OPEN": "<", "BAR_OPEN": "|"}
 CLOSERS = {"CLOSE": "(", "SQUARE_CLOSE": "[", "ANGLE_CLOSE": "<", "ANGLE_CONNECTED": "<", "BAR_CLOSE": "|"}
 PARTNERS = {"(": ")", "[": "]", "<": ">", "|": "|"}
 OPERATORS = {"PLUS": "+", "MINUS": "-", "TIMES": "*", "OVER": "/", "DOT": "."}

@@ -150,11 +150,20 @@ class _Builder:
                 return Factorial(self.node(children[0]), span)
             case "component":
                 return Component(self.node(children[0]), self.whole(children[2], span), span)
+            case "at_time":
+                return self.at_time(children, span)
             case "power":
                 return Raised(self.node(children[0]), self.node(children[2]), span)
             case "superscript":
                 return Raised(self.node(children[0]), Number(Fraction(str(children[1])), span), span)
         raise AssertionError(kind)
+
+    def at_time(self, children: Any, span: Any) -> Node:
+        """r[2](t): the component of the path at a time."""
+        part = self.node(children[0])
+        assert isinstance(part, Component) and isinstance(part.base, Name)
+        inside = tuple(self.node(c) for c in children[2].children if hasattr(c, "data"))
+        return Component(Call(part.base.name, inside, part.span), part.index, span)
 
     def number(self, token: Any) -> Fraction:
         text = str(token)

@@ -279,8 +279,8 @@ def label_of(text: str) -> str:
 SPELT = {"TIMES": "*", "MINUS": "-", "DOT": ".", "ANGLE_OPEN": "<", "ANGLE_CLOSE": ">", "ANGLE_CONNECTED": ">_c",
          "PRIME": "'", "CARET": "^"}  # fmt: skip
 TIGHT_BEFORE = {"CLOSE", "SQUARE_CLOSE", "ANGLE_CLOSE", "ANGLE_CONNECTED", "BAR_CLOSE", "PRIME", "BANG", "COMMA", "CARET",
-                "OVER", "DOT", "CALL_OPEN", "SQUARE_OPEN", "SUPERSCRIPT"}  # fmt: skip
-TIGHT_AFTER = {"OPEN", "CALL_OPEN", "SQUARE_OPEN", "ANGLE_OPEN", "BAR_OPEN", "CARET", "OVER", "DOT", "ROOT"}
+                "OVER", "DOT", "CALL_OPEN", "AT_OPEN", "SQUARE_OPEN", "SUPERSCRIPT"}  # fmt: skip
+TIGHT_AFTER = {"OPEN", "CALL_OPEN", "AT_OPEN", "SQUARE_OPEN", "ANGLE_OPEN", "BAR_OPEN", "CARET", "OVER", "DOT", "ROOT"}
 
 
 def _spaced(tokens: list[Lexeme]) -> Iterator[str]:

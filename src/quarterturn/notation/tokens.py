@@ -93,9 +93,16 @@ def lexemes(source: Source, start: int, end: int, is_call: Callable[[str, str], 
             kind, value, bars = _sign(value, found, bars)
         if kind == "OPEN" and found and found[-1].kind == "NAME" and is_call(found[-1].value, source.text[position:end]):
             kind = "CALL_OPEN"
+        elif kind == "OPEN" and _is_component(found) and is_call(found[-4].value, source.text[position:end]):
+            kind = "AT_OPEN"
         found.append(Lexeme(kind, value, position, stop))
         position = stop
     return found
+
+
+def _is_component(found: list[Lexeme]) -> bool:
+    """Whether what was read last is a component such as r[2]."""
+    return [lexeme.kind for lexeme in found[-4:]] == ["NAME", "SQUARE_OPEN", "NUMBER", "SQUARE_CLOSE"]
 
 
 def _sign(value: str, found: list[Lexeme], bars: int) -> tuple[str, str, int]:
