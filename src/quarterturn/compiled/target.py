@@ -159,7 +159,7 @@ class Target:
     def action(self, state: PathState, p: Parameters) -> Array:
         """Re S of each path, computed afresh, (chains,)."""
         v = self.potential(self.path(state, p), p)
-        return self.kinetic_action(state, p) + p.spacing * jnp.sum(v, axis=-1)
+        return self.kinetic_action(state, p) + p.spacing * (v @ jnp.ones(self.sites))  # faster than a sum
 
     def state(self, x: Array, winding: Array, p: Parameters) -> PathState:
         """A state with its action."""

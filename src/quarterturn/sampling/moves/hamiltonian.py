@@ -51,9 +51,9 @@ class HamiltonianMove:
 
     def kinetic(self, v: Array, p: Parameters, tuning: Tuning) -> Array:
         """1/2 v D v in real space, (chains,)."""
-        links = ahead(v) - v
-        mass = p.spacing * tuning.frequency_squared[:, None]
-        return 0.5 * jnp.sum(links**2 / p.spacing + mass * v**2, axis=(-2, -1))
+        stretch = jnp.sum((ahead(v) - v) ** 2, axis=(-2, -1))  # plain sums first: factors inside are slower
+        pull = jnp.sum(v * v, axis=-1) @ tuning.frequency_squared
+        return 0.5 * (stretch / p.spacing + p.spacing * pull)
 
     def flow(self, state: PathState, v: Array, scale: Array, p: Parameters, tuning: Tuning) -> tuple[Array, Array]:
         """The whole trajectory, (x, v) at its end; `scale` (chains, 1, 1) stretches its angles.
