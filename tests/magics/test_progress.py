@@ -83,7 +83,7 @@ def test_an_output_that_is_alone_is_taken_away_when_the_next_one_comes() -> None
 def test_the_page_is_escaped_and_says_how_far_it_is() -> None:
     shown = page("<well>", snapshot(3.2))
     assert "&lt;well&gt;" in shown and "<well>" not in shown and "&lt;q^2&gt;" in shown
-    for words in ("drawing, 3 s", "640 draws of 64 chains", "about 7 s to go", "0.31(2)", "25% there"):
+    for words in ("drawing, 3 s", "640 draws of 64 chains", "about 7 s to go", "0.31(2)", "25%"):
         assert words in shown
     assert "<script" not in shown
 

@@ -155,14 +155,14 @@ def page(title: str, progress: Progress) -> str:
         f'<tr><th scope="row"><code>{words(label)}</code></th><td>{words(value)}</td><td>{_share(share)}</td></tr>'
         for label, value, share in progress.rows
     )
-    heading = '<th scope="col"></th><th scope="col">so far</th><th scope="col">draws needed</th>'
+    heading = '<th scope="col">observable</th><th scope="col">so far</th><th scope="col">of the draws needed</th>'
     table = f"<table><thead><tr>{heading}</tr></thead><tbody>{rows}</tbody></table>" if rows else ""
     beside = f'<span class="qt-quiet">{words(", ".join(facts))}</span>'
     return framed(f'<p class="qt-title"><strong>{words(title)}</strong> {beside}</p>', table)
 
 
 def _share(share: float | None) -> str:
-    return "" if share is None else f"{min(share, 1.0):.0%} there"
+    return "" if share is None else f"{min(share, 1.0):.0%}"
 
 
 _cells_begun: list[str] = []  # the message of the latest cell that began with a magic of ours
