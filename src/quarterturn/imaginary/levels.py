@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -182,7 +182,16 @@ def _spectrum(
             "the potential is too rough, or singular"
         )
     converged = errors <= CONVERGED * (found.values[: len(errors)] + height)
-    return Spectrum(
+
+    def refined(kinetic: float) -> Spectrum:
+        ratio = np.sqrt(2 * problem.mass * kinetic) / np.max(np.abs(found.frame.basis.momenta))
+        frame = found.frame.finer(max(1.0, 1.02 * float(ratio)))
+        if frame.points > MOST_POINTS:
+            raise SpectrumError(f"it needs {frame.points} points, more than {MOST_POINTS}")
+        values, vectors = hamiltonian.solve(frame)
+        return replace(spectrum, basis=frame.basis, values=values + bottom, vectors=vectors)
+
+    spectrum = Spectrum(
         energies=found.values[:count] + bottom,
         errors=errors[:count],
         basis=found.frame.basis,
@@ -192,8 +201,10 @@ def _spectrum(
         reliable=max(count, len(converged) if converged.all() else int(np.argmin(converged))),
         threshold=threshold,
         facts=_facts(found, hamiltonian),
-        extend=lambda energy: levels(problem, math.ceil(number(energy)) + 2),
+        extend=lambda height: levels(problem, math.ceil(number(found.values[0] + bottom + height)) + 2),
+        refine=refined,
     )
+    return spectrum
 
 
 def _settled(hamiltonian: _Hamiltonian, found: Fit, count: int) -> tuple[Fit, Floats] | None:

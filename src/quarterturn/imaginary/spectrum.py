@@ -13,7 +13,7 @@ from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.basis import Basis, Numbers
 from quarterturn.imaginary.observables import Observer
 from quarterturn.imaginary.problem import Local
-from quarterturn.imaginary.thermal import Thermal
+from quarterturn.imaginary.thermal import Thermal, finer_for_kinks
 
 Floats = NDArray[np.float64]
 THERMAL_RESIDUE = 34.0  # states suppressed by more than exp(-34) = 2e-15 are left out of thermal sums
@@ -37,7 +37,8 @@ class Spectrum:
     reliable: int
     threshold: float  # where a continuum begins; infinity where there is none
     facts: Mapping[str, str]
-    extend: Callable[[float], Spectrum]  # the same problem, solved up to a higher energy
+    extend: Callable[[float], Spectrum]  # the same problem, solved up to an energy above the vacuum
+    refine: Callable[[float], Spectrum]  # the same, on a grid that holds waves up to a kinetic energy
 
     @property
     def grid(self) -> Floats:
@@ -82,14 +83,15 @@ class Spectrum:
         times = np.atleast_1d(np.asarray(t, dtype=np.float64))
         self._continuum_is_resolved(float(np.max(np.abs(times), initial=0.0)))
         vacuum = self.vectors[:, :1]
-        observer = Observer(self.basis, vacuum, np.ones(1))
-        left, right = ((observer.operator(h) @ vacuum)[:, 0].conj() @ self.vectors for h in (f, g))
+        operators = [Observer(self.basis, vacuum, np.ones(1)).operator(h) for h in (f, g)]
+        if (finer := finer_for_kinks(operators, times, self.basis, self.mass, self.refine)) is not None:
+            return finer.correlator(f, g, times)
+        left, right = ((o @ vacuum)[:, 0].conj() @ self.vectors for o in operators)
         decays = np.exp(-np.abs(times)[:, None] * (self.values - self.values[0])[None, :])
         forward = decays @ (left * right.conj())
         result = np.where(times >= 0, forward, forward.conj())
-        at_once = times == 0
-        if at_once.any():
-            result[at_once] = (vacuum[:, 0].conj() @ (observer.operator(lambda q: f(q) * g(q)) @ vacuum))[0]
+        if (times == 0).any():
+            result[times == 0] = self.expectation(lambda q: f(q) * g(q))
         return result
 
     def _converged(self, n: int) -> int:
@@ -121,16 +123,16 @@ class Spectrum:
             raise SpectrumError(
                 f"a continuum begins at V = {self.threshold:.6g}: thermal sums diverge with the size of the box"
             )
-        highest = self.values[0] + THERMAL_RESIDUE / beta
-        if self.values[self.reliable - 1] >= highest:
-            return Thermal(self.basis, self.values, self.vectors, beta)
         try:
-            wider = self.extend(float(highest))
+            enough = self.values[self.reliable - 1] >= self.values[0] + THERMAL_RESIDUE / beta
+            return (self if enough else self.extend(THERMAL_RESIDUE / beta))._thermal(beta)
         except SpectrumError as trouble:
-            raise SpectrumError(
-                f"beta = {beta:g} is too high a temperature, it needs all levels up to {highest:.4g}: {trouble.message}"
-            ) from trouble
-        return Thermal(wider.basis, wider.values, wider.vectors, beta)
+            raise SpectrumError(f"beta = {beta:g} is too high a temperature: {trouble.message}") from trouble
+
+    def _thermal(self, beta: float) -> Thermal:
+        return Thermal(
+            self.basis, self.mass, self.values, self.vectors, beta, lambda kinetic: self.refine(kinetic)._thermal(beta)
+        )
 
     def partition(self, beta: float) -> float:
         """Z = sum exp(-beta E_n)."""

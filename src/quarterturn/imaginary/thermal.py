@@ -2,19 +2,50 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import cached_property
+from typing import TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
 
 from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.basis import Basis, Numbers
-from quarterturn.imaginary.observables import Observer
+from quarterturn.imaginary.observables import Diagonal, Observer
 from quarterturn.imaginary.problem import Local
 
 Floats = NDArray[np.float64]
+DAMPED = 28.0  # exp(-28) = 7e-13 of a wave is left
 NEGLIGIBLE = 1e-17  # weights below are left out
+
+
+Refined = TypeVar("Refined")
+
+
+def finer_for_kinks(
+    operators: Sequence[Diagonal | Numbers],
+    times: Floats,
+    basis: Basis,
+    mass: float,
+    refine: Callable[[float], Refined],
+) -> Refined | None:
+    """A solution in a basis that holds what kinks of observables make, None where this one does.
+
+    A smooth function makes no wave that the basis does not hold; a kink makes arbitrarily fast ones, which only time
+    damps. `refine` solves on a grid for waves up to a kinetic energy. Raises SpectrumError where times are too short.
+    """
+    if all(isinstance(o, Diagonal) for o in operators) or not times.any():
+        return None
+    shortest = float(np.min(np.abs(times[times != 0])))
+    if (needed := DAMPED / shortest) <= np.max(basis.momenta**2) / (2 * mass):
+        return None
+    try:
+        return refine(needed)
+    except SpectrumError as trouble:
+        raise SpectrumError(
+            f"an observable with a kink or a step is not resolved at t = {shortest:g}: {trouble.message}"
+        ) from trouble
 
 
 @dataclass(frozen=True, eq=False)
@@ -22,9 +53,11 @@ class Thermal:
     """A spectrum at inverse temperature `beta`."""
 
     basis: Basis
+    mass: float
     values: Floats  # (M,) ascending
     vectors: Numbers  # (M, M)
     beta: float
+    refine: Callable[[float], Thermal]  # the same, on a grid that holds waves up to a kinetic energy
 
     @cached_property
     def probabilities(self) -> Floats:
@@ -69,7 +102,11 @@ class Thermal:
         if (np.abs(times) > self.beta * (1 + 1e-12)).any():
             raise SpectrumError(f"t = {np.max(np.abs(times)):g} lies beyond beta = {self.beta:g}")
         later = np.where(times < 0, times + self.beta, times)  # periodic: f at t - beta is f at t
-        left, right = (self.vectors.conj().T @ (self._observer.operator(h) @ self.vectors) for h in (f, g))
+        operators = [self._observer.operator(h) for h in (f, g)]
+        apart = np.minimum(later, self.beta - later)
+        if (finer := finer_for_kinks(operators, apart, self.basis, self.mass, self.refine)) is not None:
+            return finer.correlator(f, g, times)
+        left, right = (self.vectors.conj().T @ (o @ self.vectors) for o in operators)
         above = self.values - self.values[0]
         before = np.exp(-np.clip(self.beta - later, 0.0, None)[:, None] * above[None, :])
         after = np.exp(-later[:, None] * above[None, :])

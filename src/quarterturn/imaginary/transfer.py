@@ -9,7 +9,7 @@ In the bases of this room both factors are closed forms. At equal times sums ove
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from functools import cached_property
 
 import numpy as np
@@ -47,18 +47,27 @@ MOST_ROUGH = 420  # points for potentials with kinks or steps
 
 @dataclass(frozen=True, eq=False)
 class Transfer:
-    """Eigenvalues and eigenvectors of one transfer matrix, and traces over `sites`."""
+    """Eigenvalues and eigenvectors of one transfer matrix, and traces over its sites."""
 
-    problem: OnePath
-    spacing: float
-    sites: int
-    basis: Basis
-    eigenvalues: Floats  # (M,) descending, in units of exp(shift); clipped at zero
+    link: Link
+    frame: Frame
+    eigenvalues: Floats  # (M,) descending, in units of exp(-a bottom); clipped at zero
     vectors: Numbers  # (M, M) orthonormal
-    shift: float  # log of the factor taken out of T
-    half: Diagonal | Numbers  # exp(-aV/2) on the grid, times exp(-shift/2)
     log_partition_error: float
     error: Floats  # (kept,) of `energies`: the change between two bases, and rounding
+    _finer: dict[int, Transfer] = field(default_factory=dict, repr=False)
+
+    @property
+    def spacing(self) -> float:
+        return self.link.spacing
+
+    @property
+    def sites(self) -> int:
+        return self.link.sites
+
+    @property
+    def basis(self) -> Basis:
+        return self.frame.basis
 
     @property
     def grid(self) -> Floats:
@@ -69,7 +78,7 @@ class Transfer:
     def energies(self) -> Floats:
         """-ln(lambda_n)/a, ascending, of the eigenvalues above rounding, (kept,)."""
         kept = self.eigenvalues[: len(self.error)]
-        return np.asarray(-(np.log(kept) + self.shift) / self.spacing)
+        return np.asarray(self.link.bottom - np.log(kept) / self.spacing)
 
     @cached_property
     def _ratios(self) -> Floats:
@@ -89,13 +98,10 @@ class Transfer:
     @property
     def log_partition(self) -> float:
         """ln Z with the measure prod dq sqrt(m / 2 pi a)."""
-        return float(self.sites * (np.log(self.eigenvalues[0]) + self.shift) - np.log(self.probabilities[0]))
+        vacuum = np.log(self.eigenvalues[0]) - self.spacing * self.link.bottom
+        return float(self.sites * vacuum - np.log(self.probabilities[0]))
 
     # --- averages -------------------------------------------------------------------------------------------
-    def matrix(self, f: Local) -> Numbers:
-        """<m|f(q)|n> between the eigenvectors of T, (M, M)."""
-        return np.asarray(self.vectors.conj().T @ (self._observer.operator(f) @ self.vectors))
-
     def expectation(self, f: Local) -> float:
         """Tr(T^N f) / Tr T^N."""
         states, p = self._observer.states, self._observer.weights
@@ -108,12 +114,13 @@ class Transfer:
         A negative separation is the same one counted from the other side of the periodic lattice.
         """
         n = np.atleast_1d(np.asarray(steps, dtype=np.int64)) % self.sites
-        product = self.matrix(f) * self.matrix(g).T
-        r = self._ratios
+        apart = np.minimum(n, self.sites - n)
+        solution, (left, right) = self._elements([f, g], int(np.min(apart[apart > 0], initial=self.sites)))
+        r = solution._ratios
         before, after = r ** (self.sites - n)[:, None], r ** n[:, None]
-        result = np.sum((before @ product) * after, axis=1) * self.probabilities[0]
+        result = np.sum((before @ (left * right.T)) * after, axis=1) * solution.probabilities[0]
         if (n == 0).any():
-            result[n == 0] = self.expectation(lambda q: f(q) * g(q))
+            result[n == 0] = self.expectation(_together([f, g]))
         return np.asarray(result)
 
     def product(self, groups: Sequence[tuple[int, Local]]) -> float | complex:
@@ -123,25 +130,48 @@ class Transfer:
             at.setdefault(n % self.sites, []).append(f)
         if not at:
             return 1.0
-        placed = [(n, _together(at[n])) for n in sorted(at)]
-        if len(placed) == 1:
-            return self.expectation(placed[0][1])
-        r, (first, f) = self._ratios, placed[0]
-        chain, last = self.matrix(f), first
-        for n, f in placed[1:]:
-            chain, last = (chain * r[None, :] ** (n - last)) @ self.matrix(f), n
-        value = np.sum(np.diag(chain) * r ** (self.sites - (last - first))) * self.probabilities[0]
+        places = sorted(at)
+        if len(places) == 1:
+            return self.expectation(_together(at[places[0]]))
+        apart = [*np.diff(places), self.sites - (places[-1] - places[0])]
+        solution, elements = self._elements([_together(at[n]) for n in places], int(min(apart)))
+        r, chain = solution._ratios, elements[0]
+        for distance, element in zip(apart[:-1], elements[1:], strict=True):
+            chain = (chain * r[None, :] ** distance) @ element
+        value = np.sum(np.diag(chain) * r ** apart[-1]) * solution.probabilities[0]
         return complex(value) if np.iscomplexobj(value) else float(value)
+
+    def _elements(self, functions: Sequence[Local], least: int) -> tuple[Transfer, list[Numbers]]:
+        """<m|f(q)|n> of each function, in a basis that is complete enough for `least` links between them.
+
+        A smooth function makes no wave that the basis does not hold; a kink makes arbitrarily fast ones, which only
+        the links damp. Raises SpectrumError where too many functions would be needed.
+        """
+        operators = [self._observer.operator(f) for f in functions]
+        if not all(isinstance(o, Diagonal) for o in operators):
+            fastest = np.sqrt(2 * THERMAL_RESIDUE * self.link.problem.mass / (least * self.spacing))
+            ratio = float(fastest / np.max(np.abs(self.basis.momenta)))
+            if ratio > 1:
+                return self._finer_by(ratio, least)._elements(functions, least)
+        return self, [np.asarray(self.vectors.conj().T @ (o @ self.vectors)) for o in operators]
+
+    def _finer_by(self, ratio: float, least: int) -> Transfer:
+        frame = self.frame.finer(1.02 * ratio)
+        if frame.points > MOST_POINTS:
+            raise SpectrumError(
+                f"an observable with a kink or a step is not resolved at t = {least * self.spacing:g}: "
+                f"it needs {frame.points} points, more than {MOST_POINTS}"
+            )
+        if frame.points not in self._finer:
+            values, vectors = self.link.solve(frame)
+            self._finer[frame.points] = replace(self, frame=frame, eigenvalues=values, vectors=vectors, _finer={})
+        return self._finer[frame.points]
 
     def energy(self) -> float:
         """-d ln Z / d beta at fixed N: the thermodynamic energy; on the line the virial one is equal to it."""
-        kinetic = self.basis.momenta**2 / (2 * self.problem.mass)
+        kinetic = self.basis.momenta**2 / (2 * self.link.problem.mass)
         moved = self._ratios ** (self.sites - 1) @ np.real(np.diag(self._between(kinetic)))
-        return float(moved * self.probabilities[0] / self.eigenvalues[0]) + self.expectation(self._potential)
-
-    def _potential(self, q: Floats) -> Floats:
-        """V, cut off where exp(-aV) is zero in any case (poles, overflow)."""
-        return np.minimum(self.problem.values(q), (800.0 - self.shift) / self.spacing)
+        return float(moved * self.probabilities[0] / self.eigenvalues[0]) + self.expectation(self.link.potential)
 
     def gap(self, operators: Sequence[Local]) -> float:
         """Lowest level above the vacuum that one of the operators creates from it.
@@ -164,9 +194,9 @@ class Transfer:
     # --- winding --------------------------------------------------------------------------------------------
     def average_phase(self) -> float:
         """Z(flux) / Z(0): the average of exp(i A int q') in the ensemble without flux."""
-        if self.problem.flux == 0 or self.problem.period is None:
+        if self.link.problem.flux == 0 or self.link.problem.period is None:
             return 1.0
-        without = transfer(replace(self.problem, flux=0.0), self.spacing, self.sites)
+        without = transfer(replace(self.link.problem, flux=0.0), self.spacing, self.sites)
         return float(np.exp(self.log_partition - without.log_partition))
 
     def winding_second_moment(self) -> float:
@@ -175,22 +205,21 @@ class Transfer:
         Z'' = N Tr(T^{N-1} T'') + N sum_k Tr(T^k T' T^{N-2-k} T'), evaluated between eigenvectors. Absolute precision
         is that of its terms: <Q^2> below 1e-12 is rounding. Raises SpectrumError on the line.
         """
-        if self.problem.period is None:
+        if self.link.problem.period is None:
             raise SpectrumError("a path on the line has no winding number")
-        speed = self.spacing * self.basis.momenta / self.problem.mass
-        first, second = self._between(speed), self._between(speed**2 - self.spacing / self.problem.mass)
+        speed = self.spacing * self.basis.momenta / self.link.problem.mass
+        first, second = self._between(speed), self._between(speed**2 - self.spacing / self.link.problem.mass)
         r = self._ratios
         one = np.sum(r ** (self.sites - 1) * np.real(np.diag(second)))
         powers = r[:, None] ** np.arange(self.sites - 1)[None, :]
         two = np.sum(np.abs(first) ** 2 * (powers @ powers[:, ::-1].T)) / self.eigenvalues[0]
         curvature = self.sites * (one + two) * self.probabilities[0] / self.eigenvalues[0]
-        return float(-curvature / self.problem.period**2)
+        return float(-curvature / self.link.problem.period**2)
 
     def _between(self, weight: Floats) -> Numbers:
         """T with each momentum weighted, between the eigenvectors, (M, M), in the units of `eigenvalues`."""
-        link = self.basis.operator(weight * np.exp(-self.spacing * self.basis.momenta**2 / (2 * self.problem.mass)))
-        outer = self.half @ self.vectors
-        return np.asarray(outer.conj().T @ (link @ outer))
+        outer = self.link.half(self.frame) @ self.vectors
+        return np.asarray(outer.conj().T @ (self.link.kinetic(self.frame, weight) @ outer))
 
 
 def _together(functions: Sequence[Local]) -> Local:
@@ -234,7 +263,7 @@ def transfer(problem: OnePath, spacing: float, sites: int) -> Transfer:
     found = fit(frame, link.solve, link.carried)
     settled = None if found.tails.fast > TAIL else _settled(link, found)
     if settled is None:
-        link = _RoughLink(problem, spacing, sites, link.bottom)
+        link = RoughLink(problem, spacing, sites, link.bottom)
         frame = found.frame.finer(max(1.0, MOST_ROUGH / found.frame.points))
         found = Fit(frame, *link.solve(frame), found.tails)
         settled = found, link.change(found, frame.smaller().finer(0.7))
@@ -242,7 +271,7 @@ def transfer(problem: OnePath, spacing: float, sites: int) -> Transfer:
     return _reported(link, found, *change)
 
 
-def _on_the_line(problem: OnePath, spacing: float, sites: int) -> tuple[_Link, Frame]:
+def _on_the_line(problem: OnePath, spacing: float, sites: int) -> tuple[Link, Frame]:
     landscape = survey(problem)
     if landscape.level:
         raise SpectrumError(
@@ -252,18 +281,18 @@ def _on_the_line(problem: OnePath, spacing: float, sites: int) -> tuple[_Link, F
     energy, above = landscape.energy_of(LEVELS + 0.5), THERMAL_RESIDUE / (spacing * sites)
     landscape = landscape.refined(energy + above)
     frame = line_frame(landscape, landscape.energy_of(LEVELS + 0.5, energy) + above)
-    return _Link(problem, spacing, sites, landscape.bottom), frame
+    return Link(problem, spacing, sites, landscape.bottom), frame
 
 
-def _on_the_circle(problem: OnePath, spacing: float, sites: int) -> tuple[_Link, Frame]:
+def _on_the_circle(problem: OnePath, spacing: float, sites: int) -> tuple[Link, Frame]:
     v, number, period = around(problem)
     free = ((LEVELS + 1.5) * np.pi / period) ** 2 / (2 * problem.mass)
     energy = energy_below(number, LEVELS + 1.5, float(v.min()), free) + THERMAL_RESIDUE / (spacing * sites)
-    return _Link(problem, spacing, sites, float(v.min())), circle_frame(problem, energy)
+    return Link(problem, spacing, sites, float(v.min())), circle_frame(problem, energy)
 
 
 @dataclass(frozen=True)
-class _Link:
+class Link:
     """T exp(a bottom) in a frame, exp(-aV/2) diagonal on the grid."""
 
     problem: OnePath
@@ -278,10 +307,18 @@ class _Link:
         """exp(-a (V - bottom)/2)."""
         return np.exp(-self.spacing * (self.problem.values(q) - self.bottom) / 2)
 
+    def kinetic(self, frame: Frame, weight: Floats | float = 1.0) -> Numbers:
+        """exp(-a p^2/2m), each momentum weighted."""
+        basis = frame.basis
+        return basis.operator(weight * np.exp(-self.spacing * basis.momenta**2 / (2 * self.problem.mass)))
+
+    def potential(self, q: Floats) -> Floats:
+        """V, cut off where exp(-aV) is zero in any case (poles, overflow)."""
+        return np.minimum(self.problem.values(q), self.bottom + 800.0 / self.spacing)
+
     def matrix(self, frame: Frame) -> Numbers:
-        basis, half = frame.basis, self.half(frame)
-        link = basis.operator(np.exp(-self.spacing * basis.momenta**2 / (2 * self.problem.mass)))
-        return np.asarray(half @ np.asarray(half @ link).conj().T)
+        half = self.half(frame)
+        return np.asarray(half @ np.asarray(half @ self.kinetic(frame)).conj().T)
 
     def solve(self, frame: Frame) -> tuple[Floats, Numbers]:
         """Eigenvalues, descending, and eigenvectors."""
@@ -305,7 +342,7 @@ class _Link:
         return float(self.sites * np.log(values[0]) + np.log(np.sum((values / values[0]) ** self.sites)))
 
 
-class _RoughLink(_Link):
+class RoughLink(Link):
     """The same with the integrals over exp(-aV/2) done exactly, for a potential with kinks or steps."""
 
     def half(self, frame: Frame) -> Diagonal | Numbers:
@@ -313,7 +350,7 @@ class _RoughLink(_Link):
         return integrated(self.root, frame.basis, uniform)
 
 
-def _settled(link: _Link, found: Fit) -> tuple[Fit, tuple[float, Floats]] | None:
+def _settled(link: Link, found: Fit) -> tuple[Fit, tuple[float, Floats]] | None:
     """Enlarge until ln Z and the vacuum agree with those of a smaller basis; None where they approach too slowly."""
     previous = np.inf
     while True:
@@ -327,7 +364,7 @@ def _settled(link: _Link, found: Fit) -> tuple[Fit, tuple[float, Floats]] | None
         previous, found = worst, Fit(larger, *link.solve(larger), found.tails)
 
 
-def _reported(link: _Link, found: Fit, trace: float, logs: Floats) -> Transfer:
+def _reported(link: Link, found: Fit, trace: float, logs: Floats) -> Transfer:
     if not logs[0] <= TOLERATED:
         raise SpectrumError(
             f"the transfer matrix does not settle: {len(found.values)} points still change it by {logs[0]:.2g}; "
@@ -335,14 +372,10 @@ def _reported(link: _Link, found: Fit, trace: float, logs: Floats) -> Transfer:
         )
     rounding = 4 * ROUNDING * found.values[0] / found.values[: len(logs)]
     return Transfer(
-        problem=link.problem,
-        spacing=link.spacing,
-        sites=link.sites,
-        basis=found.frame.basis,
+        link=link,
+        frame=found.frame,
         eigenvalues=found.values,
         vectors=found.vectors,
-        shift=-link.spacing * link.bottom,
-        half=link.half(found.frame),
         log_partition_error=trace + 4 * ROUNDING * link.sites,
         error=(logs + rounding) / link.spacing + ROUNDING * abs(link.bottom),
     )
