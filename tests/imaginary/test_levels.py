@@ -157,3 +157,25 @@ def test_two_hundred_levels_of_the_quartic_follow_from_its_first_ones():
     """Levels do not depend on how many are asked for."""
     few, many = levels(anharmonic(1), 10), levels(anharmonic(1), 150)
     assert np.all(np.abs(few.energies - many.energies[:10]) <= few.errors + many.errors[:10])
+
+
+# --- another method ---------------------------------------------------------------------------------------------
+def in_oscillator_states(c: np.ndarray, mass: float, size: int) -> np.ndarray:
+    """Lowest levels of p^2/2m + sum c_k q^k in a truncated basis of oscillator states, by ladder operators."""
+    omega = 1.3 * (4 * c[4] * mass) ** (1 / 3) / mass
+    n = np.arange(size + 4)
+    q = np.diag(np.sqrt((n[:-1] + 1) / (2 * mass * omega)), 1)
+    q = q + q.T
+    p = np.diag(np.sqrt((n[:-1] + 1) * mass * omega / 2), 1)
+    p = p.T - p  # p / i
+    energy = -p @ p / (2 * mass) + sum(ck * np.linalg.matrix_power(q, k) for k, ck in enumerate(c))
+    return np.linalg.eigvalsh(energy[:size, :size])[:6]
+
+
+def test_sixty_random_quartics_agree_with_a_basis_of_oscillator_states():
+    rng = np.random.default_rng(20)
+    for _ in range(60):
+        c, mass = rng.normal(size=5), 10 ** rng.uniform(-1, 1)
+        c[4] = abs(c[4]) + 0.2
+        spectrum = levels(line(lambda q, c=c: np.polynomial.polynomial.polyval(q, c), mass), 6)
+        assert spectrum.energies == pytest.approx(in_oscillator_states(c, mass, 220), abs=1e-9, rel=1e-10)
