@@ -32,7 +32,8 @@ def underline(text: str, span: Span) -> str:
     """The line of `text` in which `span` begins, and below it carets under the span."""
     lines = text.split("\n")
     line = lines[span.line - 1] if span.line <= len(lines) else ""
-    shown = line.replace("\t", " ").rstrip("\r")
+    shown = "".join("\N{REPLACEMENT CHARACTER}" if ord(c) < 32 and c not in "\t\r" else c for c in line)
+    shown = shown.replace("\t", " ").rstrip("\r")
     end = span.end_column if span.end_line == span.line else len(shown) + 1
     pad = display_width(shown[: span.column - 1])
     carets = max(1, display_width(shown[span.column - 1 : end - 1]))

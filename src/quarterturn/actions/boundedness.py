@@ -81,7 +81,9 @@ def _polynomial(potential: Expression, lines: tuple[PathAtom, ...], couplings: M
         return _one_variable(degrees, lines[0], couplings)
     free = [v for v in lines if not any(v in powers for terms in degrees.values() for powers, _, _ in terms)]
     if free:
-        return Confinement("flat", f"nothing confines {notation(Expression.of(free[0]))}: the potential does not depend on it")
+        return Confinement(
+            "flat", f"nothing confines {notation(Expression.of(free[0]))}: the potential does not depend on it"
+        )
     return _many_variables(degrees, lines)
 
 
@@ -140,7 +142,9 @@ def _many_variables(degrees: dict, lines: tuple[PathAtom, ...]) -> Confinement:
     if undecided.any():
         u = candidates[np.flatnonzero(undecided)[0]]
         arrow = ", ".join(f"{notation(Expression.of(v))}: {x:.2g}" for v, x in zip(lines, u, strict=True))
-        return Confinement("flat", f"the potential is flat along the direction ({arrow}): nothing confines the path there")
+        return Confinement(
+            "flat", f"the potential is flat along the direction ({arrow}): nothing confines the path there"
+        )
     return Confinement("confined")
 
 
@@ -190,16 +194,19 @@ def _along_rays(
         for v, x in zip(lines, u, strict=True):
             values[v] = r * x
         with np.errstate(all="ignore"):
-            v = np.broadcast_to(np.asarray(potential.evaluate(values, np), dtype=float), r.shape)
-        finite = v[np.isfinite(v)]
+            height = np.broadcast_to(np.asarray(potential.evaluate(values, np), dtype=float), r.shape)
+        finite = height[np.isfinite(height)]
         arrow = ", ".join(f"{notation(Expression.of(a))}: {x:g}" for a, x in zip(lines, u, strict=True))
         if not len(finite):
             return Confinement("undecided", f"the potential is not a number along ({arrow})")
-        if np.isneginf(v[-1]) or (finite[-1] < finite.min() + 1e-9 and finite[-1] < -1e3 * (1 + np.abs(finite[:20]).max())):
+        if np.isneginf(height[-1]) or (
+            finite[-1] < finite.min() + 1e-9 and finite[-1] < -1e3 * (1 + np.abs(finite[:20]).max())
+        ):
             return Confinement(
-                "unbounded", f"the potential falls without limit along ({arrow}); decided numerically, up to a distance of 1e6"
+                "unbounded",
+                f"the potential falls without limit along ({arrow}); decided numerically, up to a distance of 1e6",
             )
-        tail = v[-10:]
+        tail = height[-10:]
         if np.isfinite(tail).all() and np.ptp(tail) <= 1e-6 * max(1.0, float(np.abs(tail).max())):
             flat = flat or f"the potential levels off along ({arrow}); decided numerically, up to a distance of 1e6"
     return Confinement("flat", flat) if flat else Confinement("confined")

@@ -1,8 +1,8 @@
 """From the text of a cell to an `Action`: names are resolved, the turn is made, findings are collected.
 
-Digests are SHA-256 of canonical notation. That of an action covers its paths and its Lagrangian, without the values of couplings,
-the lattice and the measurements: a rerun with changed couplings is the same action. That of the turned action covers
-L_E alone, so that L, LE and H spellings of the same physics agree.
+Digests are SHA-256 of canonical notation. That of an action covers its paths and its Lagrangian, without the values of
+couplings, the lattice and the measurements: a rerun with changed couplings is the same action. That of the turned
+action covers L_E alone, so that L, LE and H spellings of the same physics agree.
 """
 
 from __future__ import annotations
@@ -27,7 +27,7 @@ from quarterturn.actions.turn import (
     mirrored,
     turn_lagrangian,
 )
-from quarterturn.errors import ActionError, QuarterturnError, Span
+from quarterturn.errors import ActionError, NotationError, QuarterturnError, Span
 from quarterturn.notation.parse import read_formula
 from quarterturn.notation.statements import parse
 from quarterturn.notation.symbols import CONSTANTS, FUNCTIONS, GEOMETRY, MEASURES
@@ -59,7 +59,10 @@ def declare(text: str, name: str = "action") -> Action:
     ActionError
         It can be read, but is no action, or one that is not available yet. Both say where.
     """
-    return _Declaration(text, name, parse(text)).action()
+    try:
+        return _Declaration(text, name, parse(text)).action()
+    except RecursionError:  # brackets are counted by the parser; this is for towers of powers and the like
+        raise NotationError("the formulas of this cell are nested too deeply to be read") from None
 
 
 @dataclass
@@ -97,13 +100,17 @@ class _Declaration:
     def refuse_later(self, s: PathStatement) -> None:
         if len(s.coordinates) > 1:
             raise self.error(
-                f"{s.name} depends on space ({', '.join(s.coordinates)}): fields are not available yet, only paths such as "
-                f"{s.name}(t)", s.span,
+                f"{s.name} depends on space ({', '.join(s.coordinates)}): fields are not available yet, only paths "
+                f"such as {s.name}(t)", s.span,
             )  # fmt: skip
         if s.coordinates != ("t",):
             raise self.error(f"a path depends on t: {s.name}(t)", s.span, f"{s.name}(t)")
         if s.kind != "real":
-            words = {"complex": "complex paths are", "constrained": "constraints such as n.n = 1 are", "group": "group-valued paths are"}
+            words = {
+                "complex": "complex paths are",
+                "constrained": "constraints such as n.n = 1 are",
+                "group": "group-valued paths are",
+            }
             raise self.error(f"{words[s.kind]} not available yet", s.span)
 
     def period(self, s: PathStatement) -> Expression | None:
@@ -124,10 +131,13 @@ class _Declaration:
         found = self.of(Dynamics)
         if not found:
             raise self.error(
-                "there is no action: write L = … (real time), LE = … (imaginary time) or H = …", self.statements[-1].span
+                "there is no action: write L = … (real time), LE = … (imaginary time) or H = …",
+                self.statements[-1].span,
             )
         if len(found) > 1:
-            raise self.error(f"a second action: {found[0].form} is given already in line {found[0].span.line}", found[1].span)
+            raise self.error(
+                f"a second action: {found[0].form} is given already in line {found[0].span.line}", found[1].span
+            )
         if found[0].form == "SE":
             raise self.error("a lattice action SE is not available yet: write L, LE or H", found[0].span)
         return found[0]
@@ -183,7 +193,8 @@ class _Declaration:
             sites = round(settings["beta"] / settings["a"])
             if abs(sites * settings["a"] - settings["beta"]) > 1e-9 * settings["beta"] or sites < 3:
                 raise self.error(
-                    f"beta = {settings['beta']:g} is not a whole number (3 or more) of spacings a = {settings['a']:g}", place
+                    f"beta = {settings['beta']:g} is not a whole number (3 or more) of spacings a = {settings['a']:g}",
+                    place,
                 )
             return Geometry(sites, settings["a"])
         missing = "a spacing: add a = 0.1" if extents else "its second half: sites, a and beta, two of the three"
@@ -210,14 +221,16 @@ class _Declaration:
         angles = frozenset(name for name, path in paths.items() if path.period is not None)
         dimensions = coupling_dimensions(euclidean_lagrangian(turned, variables), angles)
         couplings = {
-            n: Coupling(n, c.default, dimensions.get(n), c.span) for n, c in sorted(couplings.items(), key=lambda item: item[0])
+            n: Coupling(n, c.default, dimensions.get(n), c.span)
+            for n, c in sorted(couplings.items(), key=lambda item: item[0])
         }
         metric = self.of(Metric)[0].signature if self.of(Metric) else "+"
         form = "LE" if dynamics.form == "LE" else "L"
         canonical = _canonical(paths, form, lagrangian)
         place = dynamics.span
         findings = tuple(
-            Finding(f.severity, f.topic, f.message, place) for f in (*check(euclidean, _defaults(couplings)), *phase_finding(euclidean))
+            Finding(f.severity, f.topic, f.message, place)
+            for f in (*check(euclidean, _defaults(couplings)), *phase_finding(euclidean))
         )
         full = EuclideanAction(
             euclidean.variables, euclidean.periods, euclidean.mass, euclidean.potential, euclidean.drift,
@@ -229,7 +242,12 @@ class _Declaration:
         )  # fmt: skip
 
     def turned(
-        self, written: Expression, dynamics: Dynamics, paths: Mapping[str, Path], variables: tuple[PathAtom, ...], scope: Scope
+        self,
+        written: Expression,
+        dynamics: Dynamics,
+        paths: Mapping[str, Path],
+        variables: tuple[PathAtom, ...],
+        scope: Scope,
     ) -> tuple[Expression, Turned]:
         circles = [path.period is not None for path in paths.values() for _ in path.atoms]
         try:
@@ -247,7 +265,11 @@ class _Declaration:
             raise
 
     def euclidean(
-        self, turned: Turned, paths: Mapping[str, Path], variables: tuple[PathAtom, ...], couplings: Mapping[str, Coupling]
+        self,
+        turned: Turned,
+        paths: Mapping[str, Path],
+        variables: tuple[PathAtom, ...],
+        couplings: Mapping[str, Coupling],
     ) -> EuclideanAction:
         whole = euclidean_lagrangian(turned, variables)
         periods = tuple(path.period for path in paths.values() for _ in path.atoms)
@@ -355,4 +377,3 @@ def _typeset(form: str, lagrangian: Expression) -> str:
 
 def _digest(canonical: str) -> str:
     return hashlib.sha256(canonical.encode("utf-8")).hexdigest()
-

@@ -29,7 +29,7 @@ def coupling_dimensions(lagrangian: Expression, angles: frozenset[str] = frozens
             elif isinstance(atom, (Function, Power)):
                 _inside(atom, names)
                 if isinstance(atom, Power):
-                    right = Fraction(-10**9)  # a power of a sum is not followed
+                    right = Fraction(-(10**9))  # a power of a sum is not followed
         if right > -(10**8):
             equations.append((row, right))
     solved = _solve(equations)
@@ -64,6 +64,4 @@ def _solve(equations: list[tuple[dict[str, Fraction], Fraction]]) -> dict[str, F
         pivots[column] = done
         done += 1
     free = {c for c in range(len(unknowns)) if c not in pivots}
-    return {
-        unknowns[c]: rows[r][1] for c, r in pivots.items() if not any(rows[r][0][f] for f in free)
-    }
+    return {unknowns[c]: rows[r][1] for c, r in pivots.items() if not any(rows[r][0][f] for f in free)}

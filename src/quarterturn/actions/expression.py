@@ -17,6 +17,7 @@ from typing import Any
 from quarterturn.errors import ActionError
 
 TERM_LIMIT = 2000  # a product that expands to more terms is refused: no cell may hang the kernel
+LARGEST_POWER = 128  # of one atom in one term, for the same reason
 ODD_FUNCTIONS = frozenset({"sin", "tan", "sinh", "tanh"})
 EVEN_FUNCTIONS = frozenset({"cos", "cosh", "abs"})
 AT_ZERO = {"sin": 0, "tan": 0, "sinh": 0, "tanh": 0, "cos": 1, "cosh": 1, "exp": 1, "abs": 0}
@@ -98,6 +99,8 @@ def _merge(left: Monomial, right: Monomial) -> tuple[Monomial, int]:
     powers: dict[Atom, int] = dict(left)
     for atom, power in right:
         powers[atom] = powers.get(atom, 0) + power
+        if abs(powers[atom]) > LARGEST_POWER:
+            raise ActionError(f"a power beyond {LARGEST_POWER}")
     sign = 1
     if IMAGINARY in powers:
         turns = powers.pop(IMAGINARY) % 4
@@ -110,7 +113,7 @@ def _merge(left: Monomial, right: Monomial) -> tuple[Monomial, int]:
 
 @dataclass(frozen=True)
 class Expression:
-    """A sum of (monomial, coefficient), sorted, without zero coefficients. Build with `number`, `of`, and arithmetic."""
+    """A sum of (monomial, coefficient), sorted, without zero coefficients. Built by `number`, `of`, arithmetic."""
 
     terms: tuple[tuple[Monomial, Fraction], ...]
 

@@ -57,7 +57,11 @@ def _kinetic(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> list
             )
     if not found and np.linalg.eigvalsh(mass).min() <= 0:
         found.append(
-            Finding("fatal", "kinetic", "kinetic form not positive: a combination of the velocities has no, or a negative, mass")
+            Finding(
+                "fatal",
+                "kinetic",
+                "kinetic form not positive: a combination of the velocities has no, or a negative, mass",
+            )
         )
     return found
 
@@ -71,7 +75,7 @@ def phase_finding(euclidean: EuclideanAction) -> tuple[Finding, ...]:
         Finding(
             "note",
             "phase",
-            f"the weight is complex: L_E has the imaginary term i ({notation(phase)}); averages are taken by reweighting "
-            "with the phase, whose average is measured first",
+            f"the weight is complex: L_E has the imaginary term i ({notation(phase)}); averages are taken by "
+            "reweighting with the phase, whose average is measured first",
         ),
     )

@@ -1,7 +1,7 @@
 """What a cell asks to measure: brackets of time-ordered products, and formulas that combine them.
 
-Under the path integral the factors of an expectation value commute, so the order in which they are written does not matter;
-what would need an ordering at equal times (q and its velocity or momentum) is refused with the reason. Connected
+Under the path integral the factors of an expectation value commute, so the order in which they are written does not
+matter; what would need an ordering at equal times (q and its velocity or momentum) is refused with the reason. Connected
 functions are cumulants, written out by the partitions of their factors (common practice).
 """
 
@@ -132,6 +132,10 @@ class MeasureScope(Scope):
     def linear(self, node: Node, whole: Average) -> Expression:
         """Sums and multiples of brackets; products of factors at different times become one bracket."""
         times = set(_times_in(node, self))
+        if times and _untimed(node, self):
+            raise self.error(
+                "some factors have a time and some have none: give each its time, such as q(0)", whole.span
+            )
         if len(times) <= 1:
             return self.bracket(((NOW, self.checked(node)),))
         match node:
@@ -171,10 +175,6 @@ class MeasureScope(Scope):
         """One bracket of factors, those of equal time multiplied."""
         number = ONE
         groups: dict[Time, Expression] = {}
-        untimed = [e for time, e in factors if time == ""]
-        timed = [(time, e) for time, e in factors if time not in ("", "constant")]
-        if untimed and timed:
-            raise self.error("some factors have a time and some have none: give each its time, such as q(0)", whole.span)
         for time, e in factors:
             if time == "constant":
                 number = number * e
@@ -238,7 +238,9 @@ def measurement_of(item: MeasureItem, scope: MeasureScope) -> Measurement:
     if formula.paths:
         raise scope.error("a path outside an expectation value: write <q^2>", item.span, f"<{item.source}>")
     kind = "curve" if any(b.free for b in fresh.brackets) else "number"
-    return Measurement(label, _typeset(item, fresh, formula), kind, tuple(fresh.brackets), formula, (), item.source, item.span)
+    return Measurement(
+        label, _typeset(item, fresh, formula), kind, tuple(fresh.brackets), formula, (), item.source, item.span
+    )
 
 
 def _typeset(item: MeasureItem, scope: MeasureScope, formula: Expression) -> str:
@@ -318,6 +320,15 @@ def _times_in(node: Node, scope: Scope) -> Iterator[Time]:
         yield from _times_in(child, scope)
 
 
+def _untimed(node: Node, scope: Scope) -> bool:
+    """Whether a path stands in a node without a time."""
+    if isinstance(node, Call) and node.name in scope.paths:
+        return False
+    if isinstance(node, Name):
+        return node.name in scope.paths
+    return any(_untimed(child, scope) for child in children(node))
+
+
 def _time(node: Node, scope: Scope) -> Time:
     if isinstance(node, Name) and node.name == "t":
         return FREE
@@ -354,4 +365,3 @@ def _partitions(items: list[int]) -> Iterator[list[list[int]]]:
         yield [[first], *partition]
         for i, block in enumerate(partition):
             yield [*partition[:i], [first, *block], *partition[i + 1 :]]
-

@@ -91,7 +91,7 @@ class Measurement:
 
 @dataclass(frozen=True, slots=True)
 class Finding:
-    """Something the turn found out. severity: fatal (the integral diverges) | unconfined (on a periodic lattice) | note."""
+    """Something the turn found out. severity: fatal (the integral diverges) | unconfined (it does on a ring) | note."""
 
     severity: str
     topic: str  # kinetic | bounded | phase | couplings | ordering | notation

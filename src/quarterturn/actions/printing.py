@@ -150,9 +150,7 @@ def typeset_name(name: str) -> str:
     """A name in LaTeX: Greek letters, trailing digits as an index, longer words upright."""
     match = re.fullmatch(r"([A-Za-z]+?)_?(\d*|[A-Za-z0-9]*)", name)
     stem, index = (match.group(1), match.group(2)) if match else (name, "")
-    if name in LATEX_NAMES:
-        stem, index = name, ""
-    elif match and not index.isdigit() and "_" not in name:
+    if name in LATEX_NAMES or (match and not index.isdigit() and "_" not in name):
         stem, index = name, ""
     letter = LATEX_NAMES.get(stem, stem if len(stem) == 1 else rf"\mathrm{{{stem}}}".replace("_", r"\_"))
     return letter + (f"_{{{index}}}" if index else "")

@@ -37,6 +37,7 @@ from quarterturn.notation.tree import (
 
 LARGEST_FACTORIAL = 20
 DEEPEST_DEFINITION = 20
+PYTHON_MODULES = frozenset({"np", "numpy", "math", "jnp", "scipy", "sp"})
 Value = Expression | tuple[Expression, ...]
 
 
@@ -57,6 +58,7 @@ class Scope:
     notes: list[tuple[str, Span]] = field(default_factory=list)
     depth: int = 0
     local: dict[str, Value] = field(default_factory=dict)
+    known: dict[str, Value] = field(default_factory=dict)  # definitions without arguments that have been read
 
     def error(self, message: str, span: Span, repair: str | None = None) -> ActionError:
         return ActionError(message, span=span, text=self.text, repair=repair)
@@ -152,23 +154,44 @@ class Scope:
         if name == "t":
             return self.error("an action that depends on time explicitly is not available yet", node.span)
         if name in ("i", "I", "j"):
-            return self.error("the action is written in real time and has no i: the turn to imaginary time adds it", node.span)
+            return self.error(
+                "the action is written in real time and has no i: the turn to imaginary time adds it", node.span
+            )
         split = _split_in_known(name, known)
-        if near:
-            return self.error(f"{name} is not declared; there is {near[0]}", node.span, near[0])
+        if name in PYTHON_MODULES:
+            return self.error(f"{name} is a module of Python; functions stand alone, as in cosh(q)", node.span)
         if split:
             return self.error(f"{name} is not declared; a product needs a space between its factors", node.span, split)
-        return self.error(f"{name} is not declared: a coupling needs a value, such as {name} = 1", node.span, f"{name} = 1")
+        if near:
+            return self.error(f"{name} is not declared; there is {near[0]}", node.span, near[0])
+        if self.is_applied(node.span):
+            functions = ", ".join(FUNCTIONS)
+            return self.error(f"{name} is no function of the notation; there are {functions}", node.span)
+        return self.error(
+            f"{name} is not declared: a coupling needs a value, such as {name} = 1", node.span, f"{name} = 1"
+        )
+
+    def is_applied(self, span: Span) -> bool:
+        """Whether a bracket follows at once, as after a function."""
+        line = self.text.split("\n")[span.end_line - 1]
+        return line[span.end_column - 1 : span.end_column] == "("
 
     def inside(self, definition: Assignment, arguments: dict[str, Value], span: Span) -> Value:
         """The body of a definition, with its parameters bound."""
         if self.depth >= DEEPEST_DEFINITION:
-            raise self.error(f"{definition.name} is defined through itself, or through more than {DEEPEST_DEFINITION} others", span)
+            raise self.error(
+                f"{definition.name} is defined through itself, or through more than {DEEPEST_DEFINITION} others", span
+            )
+        if not arguments and definition.name in self.known:
+            return self.known[definition.name]
         kept, self.local, self.depth = self.local, arguments, self.depth + 1
         try:
-            return self.value(definition.body)
+            value = self.value(definition.body)
         finally:
             self.local, self.depth = kept, self.depth - 1
+        if not arguments:
+            self.known[definition.name] = value
+        return value
 
     # --- arithmetic -----------------------------------------------------------------------------------------
     def sum(self, node: Sum) -> Value:
@@ -223,11 +246,18 @@ class Scope:
         turned = []
         for value in values:
             atoms = [a for m, c in value.terms for a, p in m]
-            if len(value.terms) != 1 or len(atoms) != 1 or not isinstance(atoms[0], PathAtom) or value != Expression.of(atoms[0]):
+            if (
+                len(value.terms) != 1
+                or len(atoms) != 1
+                or not isinstance(atoms[0], PathAtom)
+                or value != Expression.of(atoms[0])
+            ):
                 raise self.error("a prime is the time derivative of a path, as in q'", node.span)
             atom = atoms[0]
             if atom.order >= 1:
-                raise self.error("second time derivatives in the action are not available: integrate by parts", node.span)
+                raise self.error(
+                    "second time derivatives in the action are not available: integrate by parts", node.span
+                )
             turned.append(Expression.of(PathAtom(atom.name, atom.component, 1)))
         return tuple(turned) if isinstance(body, tuple) else turned[0]
 

@@ -1,8 +1,8 @@
 """The quarter turn: from a Lagrangian in real time to L_E in imaginary time.
 
-With t = -i tau, d/dt = i d/d tau, and exp(i int dt L) = exp(-int d tau L_E) with L_E = -L(q, i q'). A term linear in the velocity,
-A(q) q', becomes the phase -i A(q) q'. A Hamiltonian at most quadratic in its momenta is turned into its Lagrangian first,
-by the Gaussian integral over the momenta (Feynman and Hibbs, Quantum Mechanics and Path Integrals, 1965, ch. 7).
+With t = -i tau, d/dt = i d/d tau, and exp(i int dt L) = exp(-int d tau L_E) with L_E = -L(q, i q'). A term linear in
+the velocity, A(q) q', becomes the phase -i A(q) q'. A Hamiltonian at most quadratic in its momenta is turned into its
+Lagrangian first, by the Gaussian integral over the momenta (Feynman and Hibbs, Quantum Mechanics and Path Integrals, 1965, ch. 7).
 """
 
 from __future__ import annotations
@@ -66,19 +66,23 @@ def keep_euclidean(lagrangian: Expression, variables: tuple[PathAtom, ...]) -> T
     mass, linear, rest = split(lagrangian, variables)
     if any(a.terms for a in linear):
         raise ActionError(
-            "a real term linear in the velocity in LE: it would be a drift with a real exponent; write the action as L, "
-            "where the turn makes it a phase"
+            "a real term linear in the velocity in LE: it would be a drift with a real exponent; write the action as "
+            "L, where the turn makes it a phase"
         )
     return Turned(mass, rest, tuple(ZERO for _ in variables))
 
 
-def lagrangian_of(hamiltonian: Expression, variables: tuple[PathAtom, ...], momenta: tuple[PathAtom, ...]) -> Expression:
+def lagrangian_of(
+    hamiltonian: Expression, variables: tuple[PathAtom, ...], momenta: tuple[PathAtom, ...]
+) -> Expression:
     """L = p q' - H at the momenta that the Gaussian integral picks: (q' - b) K (q' - b)/2 - V."""
     inverse = tuple(tuple(hamiltonian.diff(a).diff(b) for b in momenta) for a in momenta)
     for row in inverse:
         for entry in row:
             if entry.paths:
-                raise ActionError("the momenta must enter at most quadratically, with masses that do not depend on the path")
+                raise ActionError(
+                    "the momenta must enter at most quadratically, with masses that do not depend on the path"
+                )
     mass = inverted(inverse)
     linear = [at_rest(hamiltonian.diff(p), momenta) for p in momenta]
     moved = [Expression.of(velocity(v)) - b for v, b in zip(variables, linear, strict=True)]
@@ -99,13 +103,13 @@ def inverted(matrix: Matrix) -> Matrix:
     if size > LARGEST_INVERSE:
         raise ActionError(f"coupled momenta of more than {LARGEST_INVERSE} variables: write the action as L")
     whole = _determinant(matrix).inverse()
-    return tuple(
-        tuple(_minor(matrix, j, i).scaled((-1) ** (i + j)) * whole for j in range(size)) for i in range(size)
-    )
+    return tuple(tuple(_minor(matrix, j, i).scaled((-1) ** (i + j)) * whole for j in range(size)) for i in range(size))
 
 
 def _minor(matrix: Matrix, row: int, column: int) -> Expression:
-    return _determinant(tuple(tuple(e for j, e in enumerate(r) if j != column) for i, r in enumerate(matrix) if i != row))
+    return _determinant(
+        tuple(tuple(e for j, e in enumerate(r) if j != column) for i, r in enumerate(matrix) if i != row)
+    )
 
 
 def _determinant(matrix: Matrix) -> Expression:
@@ -122,9 +126,7 @@ def _without_total_derivative(
     if not present:
         return linear, ()
     on_circles = {v for v, circle in zip(variables, circles, strict=True) if circle}
-    touches = any(
-        circle and a.terms or a.paths & on_circles for a, circle in zip(linear, circles, strict=True)
-    )
+    touches = any((circle and a.terms) or a.paths & on_circles for a, circle in zip(linear, circles, strict=True))
     curl = any(
         linear[i].diff(variables[j]) != linear[j].diff(variables[i])
         for i in range(len(linear)) for j in range(i)

@@ -33,7 +33,9 @@ def unexpected(source: Source, tokens: list[Lexeme], place: int) -> NotationErro
         return source.error(f"{here.value!r} closes a bracket that was never opened", start, end)
     if here.kind in CLOSERS and opened and OPENERS[opened.kind] != CLOSERS[here.kind]:
         partner = PARTNERS[OPENERS[opened.kind]]
-        return source.error(f"{here.value!r} can't close {OPENERS[opened.kind]!r}: {partner!r} was expected", start, end)
+        return source.error(
+            f"{here.value!r} can't close {OPENERS[opened.kind]!r}: {partner!r} was expected", start, end
+        )
     if here.kind in CLOSERS and before and before.kind in OPENERS:
         return source.error("there is nothing between the brackets", before.start, end)
     if before and before.kind in OPERATORS:

@@ -44,7 +44,7 @@ def _parser() -> Any:
         def __init__(self, conf: Any) -> None:
             pass
 
-        def lex(self, data: Any) -> Any:
+        def lex(self, data: Any, parser_state: Any = None) -> Any:
             for number, lexeme in enumerate(data):
                 yield Token(lexeme.kind, lexeme.value, start_pos=number, end_pos=number + 1)
 

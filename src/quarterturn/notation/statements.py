@@ -1,7 +1,7 @@
 """A body of notation becomes statements: one a line, or several with ";" between them.
 
-A comment runs from "#" to the end of its line. A line that begins with an operator goes on with the one before it. What a
-statement is follows from how it begins.
+A comment runs from "#" to the end of its line. A line that begins with an operator goes on with the one before it.
+What a statement is follows from how it begins.
 """
 
 from __future__ import annotations
@@ -70,7 +70,9 @@ def parse(text: str) -> tuple[Statement, ...]:
         trouble.text = shown.text if trouble.span else None
         raise
     if not found:
-        raise NotationError("the cell is empty: declare a path such as q(t) and an action such as L = 1/2 q'^2 - 1/2 q^2")
+        raise NotationError(
+            "the cell is empty: declare a path such as q(t) and an action such as L = 1/2 q'^2 - 1/2 q^2"
+        )
     return tuple(found)
 
 
@@ -84,7 +86,9 @@ def _pieces(text: str) -> Iterator[Piece]:
     kept: list[Piece] = []
     for cut in cuts:
         if text[start:cut].strip():
-            goes_on = kept and re.match(r"\s*[-+*/−·]", text[start:cut]) and text[kept[-1].end : start].strip(" \t\n") == ""
+            goes_on = (
+                kept and re.match(r"\s*[-+*/−·]", text[start:cut]) and text[kept[-1].end : start].strip(" \t\n") == ""
+            )
             if goes_on:
                 kept[-1] = Piece(kept[-1].start, cut)
             else:
@@ -278,8 +282,8 @@ def label_of(text: str) -> str:
 
 SPELT = {"TIMES": "*", "MINUS": "-", "DOT": ".", "ANGLE_OPEN": "<", "ANGLE_CLOSE": ">", "ANGLE_CONNECTED": ">_c",
          "PRIME": "'", "CARET": "^"}  # fmt: skip
-TIGHT_BEFORE = {"CLOSE", "SQUARE_CLOSE", "ANGLE_CLOSE", "ANGLE_CONNECTED", "BAR_CLOSE", "PRIME", "BANG", "COMMA", "CARET",
-                "OVER", "DOT", "CALL_OPEN", "AT_OPEN", "SQUARE_OPEN", "SUPERSCRIPT"}  # fmt: skip
+TIGHT_BEFORE = {"CLOSE", "SQUARE_CLOSE", "ANGLE_CLOSE", "ANGLE_CONNECTED", "BAR_CLOSE", "PRIME", "BANG", "COMMA",
+                "CARET", "OVER", "DOT", "CALL_OPEN", "AT_OPEN", "SQUARE_OPEN", "SUPERSCRIPT"}  # fmt: skip
 TIGHT_AFTER = {"OPEN", "CALL_OPEN", "AT_OPEN", "SQUARE_OPEN", "ANGLE_OPEN", "BAR_OPEN", "CARET", "OVER", "DOT", "ROOT"}
 
 
@@ -290,9 +294,13 @@ def _spaced(tokens: list[Lexeme]) -> Iterator[str]:
             value = "^" + value
         elif token.kind == "NUMBER" and "/" not in value:
             value = _number(value)
-        unary = token.kind in ("MINUS", "PLUS") and (i == 0 or tokens[i - 1].kind in TIGHT_AFTER or tokens[i - 1].kind == "COMMA")
-        after_unary = i > 0 and tokens[i - 1].kind in ("MINUS", "PLUS") and (
-            i == 1 or tokens[i - 2].kind in TIGHT_AFTER or tokens[i - 2].kind == "COMMA"
+        unary = token.kind in ("MINUS", "PLUS") and (
+            i == 0 or tokens[i - 1].kind in TIGHT_AFTER or tokens[i - 1].kind == "COMMA"
+        )
+        after_unary = (
+            i > 0
+            and tokens[i - 1].kind in ("MINUS", "PLUS")
+            and (i == 1 or tokens[i - 2].kind in TIGHT_AFTER or tokens[i - 2].kind == "COMMA")
         )
         tight = i == 0 or token.kind in TIGHT_BEFORE or tokens[i - 1].kind in TIGHT_AFTER or after_unary
         yield value if tight or (unary and i == 0) else " " + value

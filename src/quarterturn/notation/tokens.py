@@ -30,6 +30,7 @@ KINDS = {
     "[": "SQUARE_OPEN", "]": "SQUARE_CLOSE", "<": "ANGLE_OPEN", "⟨": "ANGLE_OPEN", ">": "ANGLE_CLOSE",
     "⟩": "ANGLE_CLOSE", "√": "ROOT", "=": "EQUALS",
 }  # fmt: skip
+TWINS = dict(zip("аеорсхуіјѕАВЕКМНОРСТХ", "aeopcxyijsABEKMHOPCTX", strict=True))  # Cyrillic letters that look Latin
 ENDS_OPERAND = {"NUMBER", "NAME", "CLOSE", "SQUARE_CLOSE", "PRIME", "BANG", "SUPERSCRIPT", "ANGLE_CLOSE",
                 "ANGLE_CONNECTED", "BAR_CLOSE"}  # fmt: skip
 
@@ -91,7 +92,12 @@ def lexemes(source: Source, start: int, end: int, is_call: Callable[[str, str], 
             kind = "MEAN" if value == "mean" else "NAME"
         elif kind == "SIGN":
             kind, value, bars = _sign(value, found, bars)
-        if kind == "OPEN" and found and found[-1].kind == "NAME" and is_call(found[-1].value, source.text[position:end]):
+        if (
+            kind == "OPEN"
+            and found
+            and found[-1].kind == "NAME"
+            and is_call(found[-1].value, source.text[position:end])
+        ):
             kind = "CALL_OPEN"
         elif kind == "OPEN" and _is_component(found) and is_call(found[-4].value, source.text[position:end]):
             kind = "AT_OPEN"
@@ -123,7 +129,7 @@ def _strange(letter: str) -> str:
     name = unicodedata.name(letter, "")
     if unicodedata.category(letter).startswith("C"):
         return f"a control character (U+{ord(letter):04X}) has no place in an action"
-    plain = unicodedata.normalize("NFKD", letter)
+    plain = TWINS.get(letter, unicodedata.normalize("NFKD", letter))
     if letter.isalpha() and name:
         twin = f"; did you mean the Latin letter {plain}?" if plain.isascii() and plain != letter else ""
         return f"the letter {letter} ({name.lower()}) is not one of the notation{twin}"

@@ -7,21 +7,19 @@ from fractions import Fraction
 
 from quarterturn.errors import Span
 
-
-def _place() -> Span:
-    return field(default=Span(1, 1, 1, 1), compare=False, repr=False)  # type: ignore[return-value]
+NOWHERE = Span(1, 1, 1, 1)
 
 
 @dataclass(frozen=True, slots=True)
 class Number:
     value: Fraction
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
 class Name:
     name: str
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
@@ -30,26 +28,26 @@ class Call:
 
     name: str
     arguments: tuple[Node, ...]
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
 class Sum:
     terms: tuple[Node, ...]
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
 class Negative:
     body: Node
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
 class Product:
     left: Node
     right: Node
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
@@ -57,21 +55,21 @@ class Quotient:
     left: Node
     right: Node
     followed: bool = field(default=False, compare=False)  # a factor follows without a sign: a/b c
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
 class Dot:
     left: Node
     right: Node
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
 class Raised:
     base: Node
     exponent: Node
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
@@ -79,20 +77,20 @@ class Prime:
     """A derivative with respect to time."""
 
     base: Node
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
 class Component:
     base: Node
     index: int
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
 class Factorial:
     base: Node
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
@@ -101,7 +99,7 @@ class Average:
 
     body: Node
     connected: bool
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
@@ -109,7 +107,7 @@ class Mean:
     """mean body: the average over the whole path."""
 
     body: Node
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 Node = (
@@ -127,14 +125,14 @@ class PathStatement:
     coordinates: tuple[str, ...]
     period: Node | None
     kind: str  # real | complex | constrained | group
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
 class Dynamics:
     form: str  # L | LE | H | SE
     body: Node
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
@@ -144,7 +142,7 @@ class Assignment:
     name: str
     parameters: tuple[str, ...]
     body: Node
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
@@ -152,7 +150,7 @@ class LatticeStatement:
     extents: tuple[int, ...]
     settings: tuple[tuple[str, Node], ...]
     boundary: str
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
@@ -160,25 +158,25 @@ class MeasureItem:
     label: str  # as given, or ""
     source: str  # the text of the item, its spelling made canonical
     body: Node
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
 class Measure:
     items: tuple[MeasureItem, ...]
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
 class Metric:
     signature: str  # such as +, -, +---, -+++
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True)
 class Units:
     text: str
-    span: Span = _place()
+    span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 
 Statement = PathStatement | Dynamics | Assignment | LatticeStatement | Measure | Metric | Units

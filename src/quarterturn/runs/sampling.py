@@ -36,6 +36,7 @@ from quarterturn.sampling.program import Program, default_chains, program_for
 Floats = NDArray[np.float64]
 FEWEST_DRAWS = 64  # per chain, before a precision can count as met
 MOST_CHAINS = 4096
+APART = 1e-6  # probability of the scatter of the chains below which there is no error to rely on
 
 
 def sample(
@@ -107,6 +108,13 @@ def sample(
             session.satisfied,
         )
     return session.finish(chain, int(seed))
+
+
+def _doubted(e: Estimate) -> Estimate:
+    """An estimate from chains that plainly disagree has no error to rely on."""
+    if e.state == GOOD and e.replica_q is not None and e.replica_q < APART:
+        return replace(e, state=UNRESOLVED, remark=f"the chains disagree (probability {e.replica_q:.0e})")
+    return e
 
 
 def _chain_count(asked: int | None, sites: int, components: int) -> int:
@@ -289,10 +297,11 @@ class _Session:
         couplings, euclidean = self.settings.couplings, self.action.euclidean
         stuck = doubts.stuck_sectors(chain, euclidean, self.basins, self.exact.transfer)
         judged = dict(numbers)
+        judged = {label: _doubted(e) for label, e in judged.items()}
         if stuck:
             judged = {
                 label: replace(e, state=UNRESOLVED, remark=e.remark or "the chains are stuck") if e.state == GOOD else e
-                for label, e in numbers.items()
+                for label, e in judged.items()
             }
         primary = {
             k: e

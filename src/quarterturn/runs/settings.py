@@ -97,7 +97,8 @@ def examined(action: Action, couplings: Mapping[str, float], stops: tuple[str, .
     findings = check(action.euclidean, couplings)
     fatal = [f for f in findings if f.severity in stops]
     if fatal:
-        raise ActionError(fatal[0].message, span=fatal[0].span, text=action.text if fatal[0].span else None)
+        place = next((f.span for f in action.findings if f.topic == fatal[0].topic and f.span), None)
+        raise ActionError(fatal[0].message, span=place, text=action.text if place else None)
     return findings
 
 

@@ -134,7 +134,10 @@ def rerun(record: dict[str, Any]) -> dict[str, Any]:
         spacing = None if lattice is None else "lattice"
         return levels(declared, count=request["count"], spacing=spacing, **settings).record
     _refuse_the_endless(record, len(declared.euclidean.variables))
-    return sample(declared, draws=request["draws"], chains=request["chains"], seed=request["seed"], **settings).record
+    run = sample(declared, draws=request["draws"], chains=request["chains"], seed=request["seed"], **settings)
+    if run.stop == "interrupted":  # half a rerun proves nothing: Ctrl-C ends the verification
+        raise KeyboardInterrupt
+    return run.record
 
 
 def _refuse_the_endless(record: dict[str, Any], components: int) -> None:

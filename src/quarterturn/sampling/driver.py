@@ -159,6 +159,6 @@ def _enter(chain: Chain, out: BlockOutput) -> None:
 def _summarise(chain: Chain, accepted: list[Floats], changes: list[Floats]) -> None:
     rates = np.mean(accepted, axis=0)
     chain.acceptance = {move.name: float(r) for move, r in zip(chain.program.moves, rates, strict=True)}
-    values = np.concatenate(changes)
-    spread = float(np.std(values) / np.sqrt(len(values))) if len(values) > 1 else 0.0
+    values = np.mean(changes, axis=0)  # a mean for each chain: its draws may be correlated through a slow mode
+    spread = float(np.std(values, ddof=1) / np.sqrt(len(values)))
     chain.exp_change = (float(np.mean(values)), spread)
