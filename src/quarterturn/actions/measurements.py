@@ -1,8 +1,8 @@
 """What a cell asks to measure: brackets of time-ordered products, and formulas that combine them.
 
 Under the path integral the factors of an expectation value commute, so the order in which they are written does not
-matter; what would need an ordering at equal times (q and its velocity or momentum) is refused with the reason. Connected
-functions are cumulants, written out by the partitions of their factors (common practice).
+matter; what would need an ordering at equal times (q and its velocity or momentum) is refused with the reason.
+Connected functions are cumulants, written out by the partitions of their factors (common practice).
 """
 
 from __future__ import annotations
@@ -232,8 +232,8 @@ def measurement_of(item: MeasureItem, scope: MeasureScope) -> Measurement:
         operators = tuple(fresh.checked(a) for a in body.arguments)
         if not operators or any(not f.paths for f in operators):
             raise scope.error("gap needs operators made of paths, such as gap(q) or gap(q, q^3)", body.span)
-        return Measurement(label, rf"\Delta E\left[{', '.join(map(latex, operators))}\right]", "gap", (), ZERO, operators,
-                           item.source, item.span)  # fmt: skip
+        typeset = rf"\Delta E\left[{', '.join(map(latex, operators))}\right]"
+        return Measurement(label, typeset, "gap", (), ZERO, operators, item.source, item.span)
     formula = fresh.number(body)
     if formula.paths:
         raise scope.error("a path outside an expectation value: write <q^2>", item.span, f"<{item.source}>")

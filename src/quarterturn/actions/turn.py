@@ -2,7 +2,8 @@
 
 With t = -i tau, d/dt = i d/d tau, and exp(i int dt L) = exp(-int d tau L_E) with L_E = -L(q, i q'). A term linear in
 the velocity, A(q) q', becomes the phase -i A(q) q'. A Hamiltonian at most quadratic in its momenta is turned into its
-Lagrangian first, by the Gaussian integral over the momenta (Feynman and Hibbs, Quantum Mechanics and Path Integrals, 1965, ch. 7).
+Lagrangian first, by the Gaussian integral over the momenta (Feynman and Hibbs, Quantum Mechanics and Path Integrals,
+1965, ch. 7).
 """
 
 from __future__ import annotations
