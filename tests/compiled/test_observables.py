@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from fractions import Fraction
 
+import jax
 import jax.numpy as jnp
 import numpy as np
 import pytest
@@ -12,7 +13,7 @@ from quarterturn.actions.expression import ONE, PI, ZERO, Expression, Function, 
 from quarterturn.actions.model import Bracket, EuclideanAction
 from quarterturn.compiled.observables import Observables, lattice_offsets
 from quarterturn.compiled.precision import double
-from quarterturn.compiled.target import Target
+from quarterturn.compiled.target import Parameters, PathState, Target
 from quarterturn.errors import RequestError
 
 NOW = Fraction(0)
@@ -28,6 +29,12 @@ def symbol(kind: str, name: str) -> Expression:
 
 def mean(expression: Expression) -> Expression:
     return Expression.of(Function("mean", expression))
+
+
+def measured(watch: Observables, state: PathState, p: Parameters) -> tuple[np.ndarray, np.ndarray]:
+    both = jax.jit(lambda s, p: (watch.numbers(s, p), watch.curves(watch.spectra(s, p))))
+    numbers, curves = both(state, p)
+    return np.asarray(numbers), np.asarray(curves)
 
 
 @pytest.mark.parametrize("sites", [8, 9])
@@ -53,9 +60,8 @@ def test_numbers_and_curves_are_the_averages_they_claim(sites: int) -> None:
     rng = np.random.default_rng(3)
     with double():
         p = target.parameters({"lam": 0.7}, A)
-        state = target.state(jnp.asarray(rng.standard_normal((5, 1, sites))), jnp.zeros((5, 1)), p)
-        numbers = np.asarray(watch.numbers(state, p))
-        curves = np.asarray(watch.curves(watch.spectra(state, p)))
+        state = jax.jit(target.state)(jnp.asarray(rng.standard_normal((5, 1, sites))), jnp.zeros((5, 1)), p)
+        numbers, curves = measured(watch, state, p)
         path = np.asarray(target.path(state, p))[:, 0]
 
     def at(values: np.ndarray, steps: int) -> np.ndarray:
@@ -91,8 +97,8 @@ def test_a_complex_weight_multiplies_everything_by_the_phase() -> None:
     winding = np.array([[0.0], [1.0], [-2.0]])
     with double():
         p = target.parameters({"lam": 0.3}, A)
-        state = target.state(jnp.asarray(rng.standard_normal((3, 1, 6))), jnp.asarray(winding), p)
-        numbers, curves = np.asarray(watch.numbers(state, p)), np.asarray(watch.curves(watch.spectra(state, p)))
+        state = jax.jit(target.state)(jnp.asarray(rng.standard_normal((3, 1, 6))), jnp.asarray(winding), p)
+        numbers, curves = measured(watch, state, p)
         angle = np.asarray(target.path(state, p))[:, 0]
     weight = np.cos(0.3 * 2 * np.pi * winding[:, 0])  # a constant A is a theta term: its phase counts the turns
     cosine = np.cos(angle)

@@ -78,7 +78,7 @@ def some_state(target: Target, p: Any) -> tuple[Any, np.ndarray]:
     rng = np.random.default_rng(2)
     winding = np.zeros((4, 2))
     winding[:, list(target.angles)] = rng.integers(-2, 3, (4, len(target.angles)))
-    state = target.state(jnp.asarray(rng.standard_normal((4, 2, SITES))), jnp.asarray(winding), p)
+    state = jax.jit(target.state)(jnp.asarray(rng.standard_normal((4, 2, SITES))), jnp.asarray(winding), p)
     return state, winding
 
 

@@ -258,12 +258,12 @@ def test_a_potential_without_value_somewhere_is_sampled_where_it_has_one(target_
     assert np.all(np.isfinite(chain.numbers.values())) and np.all(chain.numbers.values() > 0)
     assert chain.nonfinite > 0 and chain.acceptance is not None
     assert 0.5 < chain.acceptance["Hamiltonian trajectory"] < 1 - chain.nonfinite / (64 * chain.draws)
-    x_, width = np.linspace(0, 30, 2001)[1:], 0.015
+    x_, width = np.linspace(0, 24, 481)[1:], 0.05
     v = x_ - 2 * np.log(x_)
-    kernel = np.exp(-((x_[:, None] - x_) ** 2) / 0.5 - 0.125 * (v[:, None] + v)) * width
+    kernel = np.exp(-((x_[:, None] - x_) ** 2) / 0.5 - 0.125 * (v[:, None] + v)) * width  # dense near 0, where it is 0
     values, vectors = np.linalg.eigh(kernel)
     weight = (values / values[-1]) ** 16
-    exact = np.sum(weight * np.einsum("in,i,in->n", vectors, x_, vectors)) / weight.sum()
+    exact = np.sum(weight * (x_ @ vectors**2)) / weight.sum()
     means = chain.numbers.values()[..., 0].mean(axis=1)
     assert abs(means.mean() - exact) < SIGMAS * means.std(ddof=1) / np.sqrt(len(means))
 

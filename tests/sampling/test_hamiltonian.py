@@ -52,7 +52,7 @@ def some_paths(target: Target, p: Parameters, chains: int = 6) -> tuple[PathStat
     shape = (chains, target.components, target.sites)
     winding = np.zeros(shape[:2])
     winding[:, list(target.angles)] = rng.integers(-1, 2, (chains, len(target.angles)))
-    state = target.state(jnp.asarray(rng.standard_normal(shape)), jnp.asarray(winding), p)
+    state = jax.jit(target.state)(jnp.asarray(rng.standard_normal(shape)), jnp.asarray(winding), p)
     return state, jnp.asarray(rng.standard_normal(shape))
 
 
@@ -64,8 +64,9 @@ def test_a_trajectory_runs_backwards(case: tuple[Target, tuple[float, ...]], int
         tuning = recipe(omega2, integrator).tuning()
         state, v = some_paths(target, p)
         scale = jnp.linspace(0.9, 1.1, 6)[:, None, None]
-        there, final = move.flow(state, v, scale, p, tuning)
-        back, reversed_ = move.flow(state._replace(x=there), -final, scale, p, tuning)
+        flow = jax.jit(move.flow)
+        there, final = flow(state, v, scale, p, tuning)
+        back, reversed_ = flow(state._replace(x=there), -final, scale, p, tuning)
         assert np.max(np.abs(there - state.x)) > 0.3
         assert np.allclose(back, state.x, atol=1e-11) and np.allclose(reversed_, -v, atol=1e-11)
 
@@ -102,8 +103,9 @@ def test_trajectories_of_angles_commute_with_whole_turns(target_of: Callable[...
         tuning, scale = recipe((2.0, 3.0)).tuning(), jnp.ones((6, 1, 1))
         state, v = some_paths(target, p)
         turn = target.to_whitened(jnp.array([0.0, 2 * np.pi])[:, None] * jnp.ones(5), p)
-        plain, final = move.flow(state, v, scale, p, tuning)
-        turned, same = move.flow(state._replace(x=state.x + turn), v, scale, p, tuning)
+        flow = jax.jit(move.flow)
+        plain, final = flow(state, v, scale, p, tuning)
+        turned, same = flow(state._replace(x=state.x + turn), v, scale, p, tuning)
         assert np.max(np.abs(turn[0])) > 1
         assert np.allclose(turned, plain + turn, atol=1e-11) and np.allclose(final, same, atol=1e-11)
         back = move.recentred(state._replace(x=state.x + 3 * turn), p)
@@ -112,11 +114,17 @@ def test_trajectories_of_angles_commute_with_whole_turns(target_of: Callable[...
         assert np.allclose(target.action(back, p), state.action, rtol=1e-12)
 
 
-def energy_errors(target: Target, tuning: Tuning, p: Parameters, paths: tuple[PathState, jax.Array]) -> Floats:
-    move, (state, v) = HamiltonianMove(target), paths
-    x_, final = move.flow(state, v, jnp.ones((state.x.shape[0], 1, 1)), p, tuning)
-    after = target.action(state._replace(x=x_), p) + move.kinetic(final, p, tuning)
-    return np.asarray(after - target.action(state, p) - move.kinetic(v, p, tuning))
+def energy_errors(target: Target) -> Callable[[Tuning, Parameters, tuple[PathState, jax.Array]], jax.Array]:
+    """dH of trajectories without jitter, as one compiled function of their tuning."""
+    move = HamiltonianMove(target)
+
+    def errors(tuning: Tuning, p: Parameters, paths: tuple[PathState, jax.Array]) -> jax.Array:
+        state, v = paths
+        x_, final = move.flow(state, v, jnp.ones((state.x.shape[0], 1, 1)), p, tuning)
+        after = target.action(state._replace(x=x_), p) + move.kinetic(final, p, tuning)
+        return after - state.action - move.kinetic(v, p, tuning)
+
+    return jax.jit(errors)
 
 
 def test_energy_errors_fall_with_the_square_of_the_step(target_of: Callable[..., Target]) -> None:
@@ -127,8 +135,9 @@ def test_energy_errors_fall_with_the_square_of_the_step(target_of: Callable[...,
     with double():
         p = target.parameters({}, SPACING)
         paths = some_paths(target, p, chains=64)
+        run = energy_errors(target)
         for integrator in (LEAPFROG, MINIMUM_NORM):
-            errors = [energy_errors(target, recipe((4.0,), integrator, s, 1.0).tuning(), p, paths) for s in steps]
+            errors = [np.asarray(run(recipe((4.0,), integrator, s, 1.0).tuning(), p, paths)) for s in steps]
             rms[integrator.name] = np.sqrt([np.mean(e**2) for e in errors])
             slope = np.polyfit(np.log(1 / steps), np.log(rms[integrator.name]), 1)[0]
             assert abs(slope - 2) < 0.1, (integrator.name, slope)
@@ -141,13 +150,13 @@ def test_a_harmonic_path_is_evolved_exactly(target_of: Callable[..., Target]) ->
     with double():
         p = target.parameters({}, SPACING)
         tuning = Recipe((4.0,), (0.0,), "leapfrog", 1, 2.9, False).tuning()
-        assert np.max(np.abs(energy_errors(target, tuning, p, some_paths(target, p)))) < 1e-11
+        assert np.max(np.abs(energy_errors(target)(tuning, p, some_paths(target, p)))) < 1e-11
 
 
 @pytest.mark.parametrize("sites", [4, 5])
 def test_velocities_have_the_inverse_reference_form_as_covariance(target_of: Callable[..., Target], sites: int) -> None:
     """All entries of the covariance within 5 sigma, false alarm rate 2e-5; kinetic() against the dense matrix."""
-    target, omega2, count = target_of(x**2 + y**2, sites, **PAIR), (1.0, 9.0), 200_000
+    target, omega2, count = target_of(x**2 + y**2, sites, **PAIR), (1.0, 9.0), 100_000
     with double():
         p, move = target.parameters({}, SPACING), HamiltonianMove(target)
         form = target.reference_form(jnp.asarray(omega2), p)

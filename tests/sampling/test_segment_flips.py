@@ -2,6 +2,8 @@
 
 import itertools
 
+import jax
+import jax.numpy as jnp
 import numpy as np
 import pytest
 
@@ -10,10 +12,8 @@ from quarterturn.sampling.moves.segment_flip import segment_flips
 
 
 def flips(broken: np.ndarray, coins: np.ndarray, first: np.ndarray) -> np.ndarray:
-    import jax.numpy as jnp
-
     with double():
-        return np.asarray(segment_flips(jnp.asarray(broken), jnp.asarray(coins), jnp.asarray(first)))
+        return np.asarray(jax.jit(segment_flips)(jnp.asarray(broken), jnp.asarray(coins), jnp.asarray(first)))
 
 
 def walked(broken: np.ndarray, coins: np.ndarray, first: bool) -> np.ndarray:
@@ -43,12 +43,13 @@ def test_each_flip_of_whole_segments_is_equally_likely(sites: int) -> None:
         assert len(set(counts)) == 1
 
 
-@pytest.mark.parametrize("sites", [31, 32, 33, 64, 65, 200])
-@pytest.mark.parametrize("share", [0.02, 0.3, 1.0])
-def test_words_of_bits_give_what_walking_along_the_path_gives(sites: int, share: float) -> None:
+@pytest.mark.parametrize("sites", [31, 32, 65, 200])
+def test_words_of_bits_give_what_walking_along_the_path_gives(sites: int) -> None:
+    """Few, many and all links broken."""
     rng = np.random.default_rng(sites)
-    broken, coins = rng.random((50, sites)) < share, rng.random((50, sites)) < 0.5
-    first = rng.random(50) < 0.5
+    share = np.repeat([0.02, 0.3, 1.0], 40)[:, None]
+    broken, coins = rng.random((120, sites)) < share, rng.random((120, sites)) < 0.5
+    first = rng.random(120) < 0.5
     expected = [walked(b, c, f) for b, c, f in zip(broken, coins, first, strict=True)]
     assert np.array_equal(flips(broken, coins, first), np.array(expected))
 

@@ -88,26 +88,19 @@ def test_recipes_for_one_or_two_wells(
     assert chain.sectors is not None and min(chain.sectors.visits[0].values()) > 1000
 
 
-@pytest.mark.parametrize(("strength", "inertia", "spacing"), [(0.0, 1.0, 0.25), (1.0, 1.0, 0.1), (50.0, 1.0, 0.05)])
-def test_recipes_for_an_angle(
-    target_of: Callable[..., Target],
-    program_of: Callable[..., Program],
-    strength: float,
-    inertia: float,
-    spacing: float,
-) -> None:
+def test_recipes_for_an_angle(target_of: Callable[..., Target], program_of: Callable[..., Program]) -> None:
     """Free rotor, shallow and deep pendulum."""
     theta = PathAtom("theta")
     angle, (k, i) = Expression.of(theta), (Expression.of(Symbol("coupling", n)) for n in ("K", "I"))
     circle = (Expression.of(PI).scaled(2),)
     target = target_of(-k * apply("cos", angle), 32, variables=(theta,), periods=circle, mass=((i,),))
     program = program_of(target, (Bracket("cos", ((0, apply("cos", angle)),)),))  # type: ignore[arg-type]
-    chain = run_chains(program, {"K": strength, "I": inertia}, spacing, Request(3, 320), NO_EDGES)
-    check(chain, 6.0)
+    for strength, inertia, spacing in ((0.0, 1.0, 0.25), (1.0, 1.0, 0.1), (50.0, 1.0, 0.05)):
+        check(run_chains(program, {"K": strength, "I": inertia}, spacing, Request(3, 320), NO_EDGES), 6.0)
 
 
-@pytest.mark.parametrize("sites", [3, 101, 1600])
-def test_recipes_for_short_odd_and_long_paths(
+@pytest.mark.parametrize("sites", [3, 333])
+def test_recipes_for_short_and_for_odd_paths(
     target_of: Callable[..., Target], program_of: Callable[..., Program], sites: int
 ) -> None:
     q = Expression.of(PathAtom("q"))
