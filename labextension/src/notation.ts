@@ -69,7 +69,7 @@ const WORD = /[\p{L}_][\p{L}\p{M}\p{Nd}₀-₉_]*/uy; // not ², which is an exp
 const NUMBER = /(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?|[½⅓¼¾⅔⅛]|[⁻⁺]?[⁰¹²³⁴⁵⁶⁷⁸⁹]+/uy;
 const DECLARED = /([\p{L}_][\p{L}\p{Nd}₀-₉_]*)(?:\[\d+\])?\(\s*[txyz](?:\s*,\s*[xyz])*\s*\)(?!\s*=)/uy;
 const HEAD = /(?:LE|SE|L|H)(?=\s*=)/y;
-const DERIVATIVE = /(?:d|∂)(?:[_^](?:[\p{L}\p{N}]+|\{[^}]*\})|[ₜₓᵧμν])+|∂|d(?=\s+[\p{L}])|['′″]+/uy;
+const DERIVATIVE = /(?:d|∂)(?:[_^](?:\p{L}[\p{L}\p{N}]*|\{[^}]*\})|[ₜₓᵧμν])+|∂|d(?=\s+[\p{L}])|['′″]+/uy;
 const OPTION = /--?[\p{L}][\p{L}\p{N}-]*/uy;
 const METRIC = /[+-]{2,}|mostly\s+(?:plus|minus)/y;
 const TIMES = /[x×](?=\s*\d)/y;

@@ -108,3 +108,8 @@ test('any text is covered, token by token', () => {
     assert.equal(found, text);
   }
 });
+
+test('a coupling called d with a power is no derivative', () => {
+  assert.notEqual(kinds('V = h (q^2/d^2 - 1)^2').get('d'), 'derivative');
+  assert.equal(kinds('L = 1/2 d^mu q d_mu q').get('d^mu'), 'derivative');
+});

@@ -14,7 +14,8 @@ from numpy.typing import NDArray
 
 Floats = NDArray[np.float64]
 SOURCE = Path(__file__).parent / "path.c"
-FLAGS = ("-Ofast", "-march=native", "-shared", "-fPIC")
+COMPILE = ("-Ofast", "-march=native", "-fPIC", "-c")
+LINK = ("-shared",)  # without -Ofast: with it the library would switch off subnormal numbers in whoever loads it
 
 
 @dataclass(frozen=True)
@@ -33,8 +34,9 @@ class CompiledChains:
 
     def __init__(self, compiler: str) -> None:
         with tempfile.TemporaryDirectory() as folder:
-            library = Path(folder) / "path.so"
-            subprocess.run([compiler, *FLAGS, "-o", str(library), str(SOURCE), "-lm"], check=True, capture_output=True)
+            library, part = Path(folder) / "path.so", Path(folder) / "path.o"
+            for command in ((*COMPILE, "-o", part, SOURCE), (*LINK, "-o", library, part, "-lm")):
+                subprocess.run([compiler, *map(str, command)], check=True, capture_output=True)
             self._library = ctypes.CDLL(str(library))
         pointer, number, real = ctypes.POINTER(ctypes.c_double), ctypes.c_long, ctypes.c_double
         word = ctypes.c_uint64

@@ -55,3 +55,9 @@ def test_autocorrelation_time_of_an_autoregressive_series() -> None:
         for t in range(1, series.shape[1]):
             series[:, t] = r * series[:, t - 1] + np.sqrt(1 - r * r) * noise[:, t]
         assert autocorrelation_time(series) == pytest.approx((1 + r) / (2 * (1 - r)), rel=0.05)
+
+
+def test_loading_the_c_baselines_leaves_subnormal_numbers_alone() -> None:
+    """A library linked with -ffast-math would set the processor to flush them to zero for the whole process."""
+    compiled_chains()
+    assert float(np.float64(5e-324) * np.float64(1.0)) == 5e-324

@@ -52,6 +52,7 @@ def test_pythons_colours_return_when_the_magic_goes_and_leave_when_it_comes(
     open_notebook: Callable[[list[Any]], Any],
 ) -> None:
     notebook = open_notebook([new_code_cell("%%action a\n" + PYTHON), new_code_cell(PYTHON)])
+    expect(notebook.line(1, 0).locator("span", has_text="def").first).to_be_visible()  # Python's mode loads on its own
     ours = classes(notebook.line(0, 1))
     python = classes(notebook.line(1, 0))
     assert python["def"] and python != ours
