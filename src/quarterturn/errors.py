@@ -4,8 +4,11 @@ Every complaint that quarterturn raises on purpose derives from `QuarterturnErro
 message, not as a traceback. A complaint about a text carries the text and the span, and underlines it.
 """
 
+import textwrap
 import unicodedata
 from dataclasses import dataclass
+
+PAGE = 100  # columns
 
 
 @dataclass(frozen=True, slots=True)
@@ -40,6 +43,13 @@ def underline(text: str, span: Span) -> str:
     return f"    {shown}\n    {' ' * pad}{'^' * carets}"
 
 
+def beside(marked: str, message: str) -> str:
+    """A message behind the carets of an underlined line, or below them where it would run off a page."""
+    if len(marked.split("\n")[-1]) + 1 + display_width(message) <= PAGE:
+        return f"{marked} {message}"
+    return "\n".join([marked, *textwrap.wrap(message, PAGE, initial_indent="    ", subsequent_indent="    ")])
+
+
 class QuarterturnError(Exception):
     """A complaint for a person: what is wrong, where, and what would mend it.
 
@@ -68,7 +78,7 @@ class QuarterturnError(Exception):
         place = f", line {self.span.line}, column {self.span.column}" if self.span else ""
         parts = [f"{self.kind}{place}"]
         if self.span is not None and self.text is not None:
-            parts.append(f"{underline(self.text, self.span)} {self.message}")
+            parts.append(beside(underline(self.text, self.span), self.message))
         else:
             parts[0] += f": {self.message}"
         if self.repair:
