@@ -8,12 +8,22 @@ unit is the atom `I` and is reduced by I^2 = -1. Nothing here evaluates text.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Iterable, Iterator, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import cached_property
 from typing import Any
 
+from quarterturn.actions.atoms import IMAGINARY as IMAGINARY
+from quarterturn.actions.atoms import PI as PI
+from quarterturn.actions.atoms import Atom as Atom
+from quarterturn.actions.atoms import Function as Function
+from quarterturn.actions.atoms import Monomial as Monomial
+from quarterturn.actions.atoms import PathAtom as PathAtom
+from quarterturn.actions.atoms import Power as Power
+from quarterturn.actions.atoms import Symbol as Symbol
+from quarterturn.actions.atoms import monomial_key
 from quarterturn.errors import ActionError
 
 TERM_LIMIT = 2000  # a product that expands to more terms is refused: no cell may hang the kernel
@@ -21,77 +31,6 @@ LARGEST_POWER = 128  # of one atom in one term, for the same reason
 ODD_FUNCTIONS = frozenset({"sin", "tan", "sinh", "tanh"})
 EVEN_FUNCTIONS = frozenset({"cos", "cosh", "abs"})
 AT_ZERO = {"sin": 0, "tan": 0, "sinh": 0, "tanh": 0, "cos": 1, "cosh": 1, "exp": 1, "abs": 0}
-
-
-@dataclass(frozen=True, slots=True)
-class Symbol:
-    """A named quantity that does not depend on the path.
-
-    `kind`: coupling, constant (pi, I), bracket (an expectation value in a measurement's formula),
-    geometry (vol, beta, a), observable (energy).
-    """
-
-    kind: str
-    name: str
-
-    @property
-    def key(self) -> tuple[Any, ...]:
-        return (0, self.kind, self.name)
-
-
-@dataclass(frozen=True, slots=True)
-class PathAtom:
-    """A path at a time, or its time derivative: q, q', r[2]'. `component` is 0 for a scalar, else 1, 2, …"""
-
-    name: str
-    component: int = 0
-    order: int = 0
-
-    @property
-    def key(self) -> tuple[Any, ...]:
-        return (3, self.name, self.component, self.order)
-
-    @property
-    def value(self) -> PathAtom:
-        """The path itself, without derivatives."""
-        return PathAtom(self.name, self.component, 0)
-
-
-@dataclass(frozen=True, slots=True)
-class Function:
-    """f(x): an elementary function, or `mean` (the lattice average) and `charge` inside a measurement."""
-
-    name: str
-    argument: Expression
-
-    @property
-    def key(self) -> tuple[Any, ...]:
-        return (1, self.name, self.argument.key)
-
-
-@dataclass(frozen=True, slots=True)
-class Power:
-    """base ^ exponent that does not expand: (1 + q^2)^(-1), sqrt(r[1]^2 + r[2]^2), x^n with a coupling n.
-
-    An integer power of the whole is kept in the monomial: 1/(1+q^2)^2 is Power(1+q^2, -1) squared.
-    """
-
-    base: Expression
-    exponent: Expression
-
-    @property
-    def key(self) -> tuple[Any, ...]:
-        return (2, self.base.key, self.exponent.key)
-
-
-Atom = Symbol | PathAtom | Function | Power
-Monomial = tuple[tuple[Atom, int], ...]
-IMAGINARY = Symbol("constant", "I")
-PI = Symbol("constant", "pi")
-
-
-def _monomial_key(monomial: Monomial) -> tuple[Any, ...]:
-    return tuple((atom.key, power) for atom, power in monomial)
 
 
 def _merge(left: Monomial, right: Monomial) -> tuple[Monomial, int]:
@@ -127,7 +66,7 @@ class Expression:
             if len(total) > TERM_LIMIT:
                 raise ActionError(f"the expression expands to more than {TERM_LIMIT} terms")
         kept = [(m, c) for m, c in total.items() if c]
-        return Expression(tuple(sorted(kept, key=lambda item: _monomial_key(item[0]))))
+        return Expression(tuple(sorted(kept, key=lambda item: monomial_key(item[0]))))
 
     @staticmethod
     def number(value: int | Fraction) -> Expression:
@@ -140,7 +79,7 @@ class Expression:
     # --- questions ------------------------------------------------------------------------------------------
     @cached_property
     def key(self) -> tuple[Any, ...]:
-        return tuple((_monomial_key(m), c) for m, c in self.terms)
+        return tuple((monomial_key(m), c) for m, c in self.terms)
 
     @cached_property
     def _hash(self) -> int:
@@ -327,8 +266,6 @@ def _rational_root(base: Fraction | None, exponent: Fraction) -> Fraction | None
 
 
 def _exact_root(value: int) -> int | None:
-    import math
-
     root = math.isqrt(value)
     return root if root * root == value else None
 

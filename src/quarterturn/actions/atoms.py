@@ -1,0 +1,83 @@
+"""What a monomial is made of: symbols, paths, and functions and powers that do not expand.
+
+Each atom has a `key`, by which atoms are put in order whatever their kind.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from quarterturn.actions.expression import Expression
+
+
+@dataclass(frozen=True, slots=True)
+class Symbol:
+    """A named quantity that does not depend on the path.
+
+    `kind`: coupling, constant (pi, I), bracket (an expectation value in a measurement's formula),
+    geometry (vol, beta, a), observable (energy).
+    """
+
+    kind: str
+    name: str
+
+    @property
+    def key(self) -> tuple[Any, ...]:
+        return (0, self.kind, self.name)
+
+
+@dataclass(frozen=True, slots=True)
+class PathAtom:
+    """A path at a time, or its time derivative: q, q', r[2]'. `component` is 0 for a scalar, else 1, 2, …"""
+
+    name: str
+    component: int = 0
+    order: int = 0
+
+    @property
+    def key(self) -> tuple[Any, ...]:
+        return (3, self.name, self.component, self.order)
+
+    @property
+    def value(self) -> PathAtom:
+        """The path itself, without derivatives."""
+        return PathAtom(self.name, self.component, 0)
+
+
+@dataclass(frozen=True, slots=True)
+class Function:
+    """f(x): an elementary function, or `mean` (the lattice average) and `charge` inside a measurement."""
+
+    name: str
+    argument: Expression
+
+    @property
+    def key(self) -> tuple[Any, ...]:
+        return (1, self.name, self.argument.key)
+
+
+@dataclass(frozen=True, slots=True)
+class Power:
+    """base ^ exponent that does not expand: (1 + q^2)^(-1), sqrt(r[1]^2 + r[2]^2), x^n with a coupling n.
+
+    An integer power of the whole is kept in the monomial: 1/(1+q^2)^2 is Power(1+q^2, -1) squared.
+    """
+
+    base: Expression
+    exponent: Expression
+
+    @property
+    def key(self) -> tuple[Any, ...]:
+        return (2, self.base.key, self.exponent.key)
+
+
+Atom = Symbol | PathAtom | Function | Power
+Monomial = tuple[tuple[Atom, int], ...]
+IMAGINARY = Symbol("constant", "I")
+PI = Symbol("constant", "pi")
+
+
+def monomial_key(monomial: Monomial) -> tuple[Any, ...]:
+    return tuple((atom.key, power) for atom, power in monomial)
