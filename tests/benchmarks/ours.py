@@ -40,7 +40,7 @@ def run(compiled: Program, problem: PathProblem, draws: int, seed: int) -> Chain
 
 
 def drawn(chain: Chain) -> tuple[Floats, float]:
-    """Every draw, (chains, draws, 2), and the seconds of drawing, warm-up not counted as the baselines' tuning isn't."""
+    """Every draw, (chains, draws, 2), and the seconds of drawing; like the baselines' tuning, warm-up isn't counted."""
     assert chain.numbers.block == 1, "the ledger has averaged draws; fewer draws are needed to see each"
     return chain.numbers.values(), chain.seconds - chain.warm_up_seconds
 

@@ -16,10 +16,13 @@ import pytest
 from quarterturn.actions.expression import ONE, PI, ZERO, Expression, Function, PathAtom, Symbol, apply
 from quarterturn.actions.model import Bracket
 from quarterturn.compiled.observables import Observables
+from quarterturn.compiled.precision import double
 from quarterturn.compiled.target import Target
 from quarterturn.errors import ActionError, RequestError
 from quarterturn.sampling.driver import Chain, Request, run_chains
 from quarterturn.sampling.program import BLOCK, KEPT_PROGRAMS, Program, default_chains, program_for
+from quarterturn.sampling.random import seed_key
+from quarterturn.sampling.tuning import Recipe
 
 SIGMAS = 4.5
 number = Expression.number
@@ -69,6 +72,20 @@ def test_a_run_that_stops_early_is_the_beginning_of_a_longer_one(even_program: P
     short = run(even_program, QUARTIC, 0.1, draws=5 * BLOCK)
     assert short.draws == 5 * BLOCK
     assert np.array_equal(short.numbers.values(), chain.numbers.values()[:, : 5 * BLOCK])
+
+
+def test_every_sweep_draws_its_own_numbers(even_program: Program) -> None:
+    """The same paths under the same key go elsewhere in another sweep, and there again in the same sweep."""
+    target, chains = even_program.target, even_program.chains
+    with double():
+        p = target.parameters(QUARTIC, 0.1)
+        paths = 0.3 * np.random.default_rng(1).standard_normal((chains, 1, target.sites))
+        state = jax.jit(target.state)(paths, np.zeros((chains, 1)), p)
+        tuning = Recipe((4.0,), (0.0,), "leapfrog", 2, 1.5, True).tuning()
+        key = jax.numpy.asarray(seed_key(1, 5))
+        first, second, again = (even_program.advance(state, key, n, p, tuning)[1].numbers for n in (0, BLOCK, 0))
+    assert np.array_equal(first, again)
+    assert not np.any(np.isclose(first, second, rtol=1e-9))
 
 
 def test_a_changed_coupling_or_spacing_or_seed_never_compiles_again(even_program: Program, chain: Chain) -> None:
