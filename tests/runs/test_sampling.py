@@ -193,3 +193,17 @@ def test_user_settings_of_jax_and_numpy_are_left_alone(quartic: DeclaredAction) 
     sample(quartic, draws=16)
     assert dict(jax.config.values) == settings and np.geterr() == errors
     assert jax.numpy.ones(1).dtype == "float32"
+
+
+def test_too_few_draws_withhold_what_they_can_not_support(quartic: DeclaredAction) -> None:
+    run = sample(quartic, draws=16, chains=2)
+    assert run["gap(q)"].state == "withheld" and "too few" in run["gap(q)"].remark
+    assert not run.converged and "withheld" in repr(run)
+
+
+def test_an_interruption_during_warm_up_reports_nothing(quartic: DeclaredAction) -> None:
+    stop = threading.Event()
+    stop.set()
+    with pytest.raises(RequestError) as complaint:
+        sample(quartic, draws=16, stop=stop)
+    assert "during warm-up" in str(complaint.value)

@@ -52,7 +52,7 @@ def action(text: str, name: str = "action") -> DeclaredAction:
     Parameters
     ----------
     text
-        The body of an `%%action` cell; see `quarterturn.help()` for the notation.
+        The body of an `%%action` cell; `%%action?` shows the notation.
     name
         What the action is called in reports.
 

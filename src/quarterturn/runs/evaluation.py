@@ -23,7 +23,16 @@ from quarterturn.estimates.series import Samples
 from quarterturn.runs.layout import Layout, gap_brackets
 
 Floats = NDArray[np.float64]
+LOST = "the average phase is compatible with zero: the sign problem leaves no signal"
 PHASE_SIGNIFICANCE = 4.0  # standard errors by which the average phase must differ from zero
+
+
+def nothing(times: Floats, label: str, reason: str) -> CurveEstimate:
+    """The place of a curve that the samples do not support."""
+    absent = np.full(len(times), np.nan)
+    return CurveEstimate(
+        times, absent, absent, np.full((len(times), len(times)), np.nan), None, label, "withheld", reason
+    )
 
 
 @dataclass(frozen=True)
@@ -54,7 +63,7 @@ class Evaluator:
     def number(self, measurement: Measurement) -> Estimate:
         """A number with its error; withheld, with the reason, where the samples can't give it."""
         if self.phase_is_lost():
-            return withheld("the average phase is compatible with zero: the sign problem leaves no signal")
+            return withheld(LOST)
         columns = [self.layout.number(b) for b in measurement.brackets]
         plain = measurement.formula == Expression.of(Symbol("bracket", "0")) and not self.layout.is_complex
         try:
@@ -107,16 +116,15 @@ class Evaluator:
         """A curve on the lattice's separations 0 … beta/2."""
         times = self.times
         if self.phase_is_lost():
-            nothing = np.full(len(times), np.nan)
-            return CurveEstimate(
-                times, nothing, nothing, np.full((len(times), len(times)), np.nan), None, measurement.label,
-                "withheld", "the average phase is compatible with zero: the sign problem leaves no signal",
-            )  # fmt: skip
+            return nothing(times, measurement.label, LOST)
         columns = [self.columns(b) for b in measurement.brackets]
         function, gradient = self._compose(measurement.formula, columns)
         means, width = self.curves.means, self.curves.values.shape[2]
         linear = LinearCurve(self.curves, times, function(means), gradient(means, width))
-        return linear.estimate(label=measurement.label)
+        try:
+            return linear.estimate(label=measurement.label)
+        except EstimateError as reason:
+            return nothing(times, measurement.label, reason.message)
 
     def columns(self, bracket: Bracket) -> NDArray[np.int_]:
         """Columns of a bracket in the ledger of curves."""
@@ -135,7 +143,11 @@ class Evaluator:
         subtract = None
         if not all(is_odd(f, self.euclidean) for f in measurement.operators):
             subtract = np.array([self.layout.number(b) for b in means])
-        result = gap(self.curves, indices, self.times, self.beta, subtract)
+        try:
+            result = gap(self.curves, indices, self.times, self.beta, subtract)
+        except EstimateError as reason:
+            empty = nothing(self.times, measurement.label, reason.message)
+            return GapResult(withheld(reason.message), (), empty, 0.0, 0.0)
         # curves are kept as block means, so that a fit to them has no autocorrelation time in draws
         return replace(result, estimate=replace(result.estimate, tau=None, tau_error=None, n_eff=None))
 

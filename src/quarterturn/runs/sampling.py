@@ -252,8 +252,10 @@ class _Session:
 
     def finish(self, chain: Chain, seed: int) -> Run:
         """Final estimates, exact column, warnings, record."""
-        if chain.draws == 0:
-            raise RequestError("the run was stopped before the first block of draws; there is nothing to report")
+        if chain.cut_in_warm_up:
+            raise RequestError(
+                "the run was interrupted during warm-up, before anything was measured: nothing to report"
+            )
         evaluator, constants = self.evaluator(chain), self.constants()
         gaps = {m.label: evaluator.gap(m) for m in self.action.measurements if m.kind == "gap"}
         numbers: dict[str, Estimate] = {}

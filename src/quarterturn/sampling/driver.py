@@ -58,6 +58,7 @@ class Chain:
     seconds: float = 0.0  # from the call, warm-up and any compilation included
     warm_up_seconds: float = 0.0
     nonfinite: int = 0  # trajectories that ended where action or force is not a finite number; all were rejected
+    cut_in_warm_up: bool = False  # interrupted before the first measured draw: what was drawn since isn't equilibrated
     trials: tuple[Trial, ...] = field(default=(), repr=False)  # what warm-up tried, in order
 
     @property
@@ -96,6 +97,7 @@ def run_chains(
             warm_up.blocks * BLOCK,
             sectors=SectorCount(edges),
             trials=tuple(warm_up.trials),
+            cut_in_warm_up=interrupted(),
             warm_up_seconds=time.monotonic() - began,
         )
         _draw(
