@@ -190,6 +190,22 @@ def changed_coupling() -> None:
     )
 
 
+def sweep_parts() -> None:
+    """The costs that tuning reckons with, and what a number of chains costs."""
+    program = ours.program(QUARTIC.sites)
+    one, nine = (ours.sweep_cost(program, QUARTIC, kicks) for kicks in (1, 9))
+    flips = ours.sweep_cost(program, QUARTIC, 1, "segments") - one
+    kick = (nine - one) / 8
+    print(
+        f"\nsweep parts, N = 200: a kick {kick:.1f} ns a site, the rest {one - kick:.1f} ({one / kick - 1:.1f} kicks), "
+        f"segment flips {flips:.1f} ({flips / kick:.1f} kicks)"
+    )
+    for problem in (QUARTIC, FINE):
+        costs = {chains: ours.sweep_cost(ours.program(problem.sites, chains), problem, 2) for chains in (8, 16, 32, 64)}
+        words = ", ".join(f"{chains}: {cost:.1f}" for chains, cost in costs.items())
+        print(f"chains, N = {problem.sites}: ns a site and sweep of two kicks: {words}")
+
+
 def imports() -> None:
     """Seconds to import, each in a new process."""
     for module in ("quarterturn", "quarterturn.sampling.driver", "jax"):
@@ -212,6 +228,7 @@ def main() -> None:
     compare(WELLS, chains, rounds, seconds, {("C Metropolis", "q"): "20,000x", ("C HMC", "q^2"): ""})
     levels()
     changed_coupling()
+    sweep_parts()
     imports()
 
 

@@ -5,15 +5,19 @@ from __future__ import annotations
 import time
 from fractions import Fraction
 
+import jax
 import numpy as np
 from numpy.typing import NDArray
 
 from quarterturn.actions.expression import ONE, ZERO, Expression, PathAtom, Symbol
 from quarterturn.actions.model import Bracket, EuclideanAction
 from quarterturn.compiled.observables import Observables
+from quarterturn.compiled.precision import double
 from quarterturn.compiled.target import Target
 from quarterturn.sampling.driver import Chain, Request, run_chains
-from quarterturn.sampling.program import Program, default_chains, program_for
+from quarterturn.sampling.program import BLOCK, Program, default_chains, program_for
+from quarterturn.sampling.random import seed_key
+from quarterturn.sampling.tuning import Recipe
 
 from .baselines import PathProblem
 
@@ -50,3 +54,19 @@ def first_draw(compiled: Program, problem: PathProblem, seed: int) -> float:
     began = time.perf_counter()
     run(compiled, problem, 1, seed)
     return time.perf_counter() - began
+
+
+def sweep_cost(compiled: Program, problem: PathProblem, kicks: int, segments: str = "") -> float:
+    """Nanoseconds a site and sweep of the compiled block, median of twenty."""
+    target, chains = compiled.target, compiled.chains
+    recipe = Recipe((4.3,), (0.0,), "leapfrog", kicks, 1.5, bool(segments))
+    with double():
+        p = target.parameters({"c2": problem.c2, "c4": problem.c4}, problem.spacing)
+        paths = 0.3 * np.random.default_rng(0).standard_normal((chains, 1, problem.sites))
+        state, key, tuning = target.state(paths, np.zeros((chains, 1)), p), seed_key(1), recipe.tuning()
+        seconds = []
+        for number in range(21):
+            began = time.perf_counter()
+            state, _ = jax.block_until_ready(compiled.advance(state, key, number * BLOCK, p, tuning))
+            seconds.append(time.perf_counter() - began)
+    return float(np.median(seconds[1:])) / (BLOCK * chains * problem.sites) * 1e9

@@ -26,12 +26,12 @@ from quarterturn.sampling.points import PointAction, lowest_frequency_squared
 from quarterturn.sampling.program import BLOCK, BlockOutput, Program
 
 Floats = NDArray[np.float64]
-FIXED_COST = 3.5  # a draw without kicks, in units of a kick (benchmarks: `sweep parts`); only the choice depends on it
-SEGMENT_COST = 2.5
+FIXED_COST = 3.0  # a draw without kicks, in units of a kick (benchmarks: `sweep parts`); only the choice depends on it
+SEGMENT_COST = 2.2
 QUARTER = 1.5  # angle of a trajectory that forgets the reference paths: pi/2, a little less for the jitter
 SETTLING = (0.6, 0.95)  # acceptance that settling aims at
 STUCK = 0.02  # mean exp(-dH) of a chain over a block below which it has hardly moved
-FEWEST_ACCEPTED = 0.8  # below it a score falls steeply: rare large dH then make chains stick and <exp(-dH)> hard to check
+FEWEST_ACCEPTED = 0.8  # below it a score falls steeply: rare large dH make chains stick and <exp(-dH)> hard to check
 SETTLING_BLOCKS = 24
 RARE_KINKS = 0.9  # share of chains with kinks from which the trajectory may be left to make them
 TRIAL_SAMPLES = 3072  # draws of all chains together that a trial counts
