@@ -207,3 +207,10 @@ def test_an_interruption_during_warm_up_reports_nothing(quartic: DeclaredAction)
     with pytest.raises(RequestError) as complaint:
         sample(quartic, draws=16, stop=stop)
     assert "during warm-up" in str(complaint.value)
+
+
+def test_a_wall_is_named_and_not_mistaken_for_a_broken_integrator() -> None:
+    wall = action("q(t)\nL = 1/2 q'^2 - log(q)^2 - q^2\nlattice 40, a = 0.1\nmeasure <q>")
+    run = sample(wall, draws=64, seed=8)
+    assert any("as at a wall" in words for words in run.warnings)
+    assert not any("test fails" in words for words in run.warnings)

@@ -110,7 +110,13 @@ def energy_violation(chain: Chain) -> tuple[str, ...]:
     """The integrator against its own identity <exp(-dH)> = 1 (Creutz, Phys. Rev. D 38 (1988) 1228)."""
     mean, error = chain.exp_change
     words = []
-    if error > 0 and abs(mean - 1) > ENERGY_VIOLATION * error:
+    if chain.nonfinite:
+        share = chain.nonfinite / (chain.draws * chain.program.chains)
+        words.append(
+            f"{share:.1%} of the trajectories met an action or a force that is not a finite number and were rejected, "
+            "as at a wall; the energy violation can't be tested then"
+        )
+    elif error > 0 and abs(mean - 1) > ENERGY_VIOLATION * error:
         words.append(
             f"the energy violation test fails: <exp(-dH)> = {mean:.4f}, "
             f"{abs(mean - 1) / error:.1f} standard errors from 1"
