@@ -53,4 +53,5 @@ def test_results_by_every_name(person: Any) -> None:
 def test_names_of_the_magics_and_python_are_left_to_ipython(person: Any) -> None:
     assert "%sample" in completed(person, "%sam")
     person.gets("wellington = 1")
+    person.shell.Completer.use_jedi = False  # it gives up on a busy machine; that names are left alone is the point
     assert completed(person, "welli") == ["wellington"]
