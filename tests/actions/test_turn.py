@@ -1,5 +1,7 @@
 """The turned actions of textbook Lagrangians, each with its source, and the digests that tell meanings apart."""
 
+import time
+
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
@@ -8,6 +10,7 @@ from quarterturn.actions.declare import declare
 from quarterturn.actions.expression import Expression, PathAtom, Symbol
 from quarterturn.actions.printing import notation
 from quarterturn.actions.turn import Turned, euclidean_lagrangian
+from quarterturn.errors import ActionError
 
 # body of the cell; L_E that the source gives, in notation, with I for the imaginary unit
 TEXTBOOK = {
@@ -196,3 +199,37 @@ def test_the_phase_of_a_real_action_is_absent() -> None:
     assert any("total derivative" in f.message for f in act.findings)
     rotor = declare("theta(t) mod 2 pi\nL = theta'^2 + c theta'\nc = 1")
     assert rotor.euclidean.phase == -Expression.of(Symbol("coupling", "c")) * Expression.of(PathAtom("theta", 0, 1))
+
+
+@pytest.mark.parametrize(
+    "dynamics",
+    [
+        "L = 1/2 q'^2 - |q'| - q^2",
+        "L = 1/2 q'^2 - sqrt(q'^2) - q^2",
+        "L = -sqrt(1 - q'^2) - q^2",  # a relativistic particle
+        "L = 1/2 q'^2 - 1/q'^2 - q^2",
+        "L = 1/2 q'^2 - exp(q') - q^2",
+        "LE = 1/2 q'^2 + |q'| + q^2",
+        "H = p^2/2 + |p| + q^2",
+        "H = sqrt(1 + p^2) + q^2",
+        "H = p^2/2 + 1/p + q^2",
+    ],
+)
+def test_a_velocity_inside_a_function_is_refused_not_dropped(dynamics: str) -> None:
+    with pytest.raises(ActionError, match="not Gaussian"):
+        declare(f"q(t)\n{dynamics}")
+
+
+def test_terms_that_contradict_each_other_give_no_dimension() -> None:
+    """1/2 q'^2 + 1/2 q^2 is written in units of the frequency, in which lam is a pure number as well as a mass^3."""
+    act = declare("q(t)\nL = 1/2 q'^2 - 1/2 q^2 - lam q^4\nlam = 1")
+    assert act.couplings["lam"].dimension is None
+
+
+def test_forty_coupled_paths_are_turned_within_seconds() -> None:
+    names = [f"q{i}" for i in range(40)]
+    chain = " ".join(f"+ 1/2 {a}'^2 - {a}^4 - ({a} - {b})^2" for a, b in zip(names, names[1:] + names[:1], strict=True))
+    began = time.monotonic()
+    act = declare(", ".join(f"{n}(t)" for n in names) + f"\nL = {chain.removeprefix('+ ')}")
+    assert not act.findings
+    assert time.monotonic() - began < 5.0  # half a second on an idle core

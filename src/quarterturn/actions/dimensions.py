@@ -12,7 +12,11 @@ from quarterturn.actions.expression import Expression, Function, PathAtom, Power
 
 
 def coupling_dimensions(lagrangian: Expression, angles: frozenset[str] = frozenset()) -> dict[str, Fraction | None]:
-    """Dimension of each coupling in powers of mass; None where the terms do not determine it. Angles have none."""
+    """Dimension of each coupling in powers of mass; None where the terms do not determine it. Angles have none.
+
+    Terms that contradict each other, as 1/2 q'^2 + 1/2 q^2 do, are written in units in which some scale is 1; then no
+    coupling has a dimension that could be told.
+    """
     equations: list[tuple[dict[str, Fraction], Fraction]] = []
     names: set[str] = set()
     for monomial, _ in lagrangian.terms:
@@ -42,7 +46,7 @@ def _inside(atom: Function | Power, names: set[str]) -> None:
 
 
 def _solve(equations: list[tuple[dict[str, Fraction], Fraction]]) -> dict[str, Fraction]:
-    """Gauss-Jordan elimination over the rationals; the unknowns that are determined."""
+    """Gauss-Jordan elimination over the rationals; the unknowns that are determined, none if there is no solution."""
     unknowns = sorted({n for row, _ in equations for n in row})
     rows = [([row.get(n, Fraction(0)) for n in unknowns], right) for row, right in equations]
     done = 0
@@ -63,5 +67,7 @@ def _solve(equations: list[tuple[dict[str, Fraction], Fraction]]) -> dict[str, F
                 )
         pivots[column] = done
         done += 1
+    if any(right for _, right in rows[done:]):
+        return {}
     free = {c for c in range(len(unknowns)) if c not in pivots}
     return {unknowns[c]: rows[r][1] for c, r in pivots.items() if not any(rows[r][0][f] for f in free)}

@@ -11,7 +11,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-from quarterturn.actions.expression import IMAGINARY, ZERO, Atom, Expression, PathAtom
+from quarterturn.actions.expression import IMAGINARY, ZERO, Atom, Expression, Function, PathAtom, Power
 from quarterturn.errors import ActionError
 
 LARGEST_INVERSE = 4
@@ -39,9 +39,23 @@ def at_rest(expression: Expression, variables: Sequence[PathAtom]) -> Expression
     return expression.substitute(lambda atom: ZERO if atom in still else None)
 
 
+def require_powers(expression: Expression, moving: Sequence[PathAtom], what: str) -> None:
+    """Velocities or momenta stand in whole positive powers, not in functions: |q'| has a kink that no Gaussian has."""
+    wanted = set(moving)
+    for monomial, _ in expression.terms:
+        for atom, power in monomial:
+            inside = isinstance(atom, (Function, Power)) and Expression.of(atom).paths & wanted
+            if inside or (atom in wanted and power < 0):
+                raise ActionError(
+                    f"a {what} inside a root, a modulus, a quotient or another function: the path integral over it is "
+                    "not Gaussian"
+                )
+
+
 def split(lagrangian: Expression, variables: tuple[PathAtom, ...]) -> tuple[Matrix, tuple[Expression, ...], Expression]:
     """Kinetic matrix, linear coefficients and rest of a Lagrangian that is at most quadratic in the velocities."""
     moving = [velocity(v) for v in variables]
+    require_powers(lagrangian, moving, "velocity")
     mass = tuple(tuple(lagrangian.diff(a).diff(b) for b in moving) for a in moving)
     for row in mass:
         for entry in row:
@@ -77,6 +91,7 @@ def lagrangian_of(
     hamiltonian: Expression, variables: tuple[PathAtom, ...], momenta: tuple[PathAtom, ...]
 ) -> Expression:
     """L = p q' - H at the momenta that the Gaussian integral picks: (q' - b) K (q' - b)/2 - V."""
+    require_powers(hamiltonian, momenta, "momentum")
     inverse = tuple(tuple(hamiltonian.diff(a).diff(b) for b in momenta) for a in momenta)
     for row in inverse:
         for entry in row:
@@ -140,15 +155,13 @@ def _without_total_derivative(
 
 def euclidean_lagrangian(turned: Turned, variables: tuple[PathAtom, ...]) -> Expression:
     """L_E as one expression, with I for the imaginary unit."""
-    total = turned.potential
+    parts = [turned.potential]
     moving = [Expression.of(velocity(v)) for v in variables]
     for i, row in enumerate(turned.mass):
-        for j, entry in enumerate(row):
-            total = total + HALF * entry * moving[i] * moving[j]
+        parts += [HALF * entry * moving[i] * moving[j] for j, entry in enumerate(row) if entry.terms]
     imaginary = Expression.of(IMAGINARY)
-    for a, v in zip(turned.drift, moving, strict=True):
-        total = total - imaginary * a * v
-    return total
+    parts += [-(imaginary * a * v) for a, v in zip(turned.drift, moving, strict=True) if a.terms]
+    return Expression.collect(term for part in parts for term in part.terms)
 
 
 def mirrored(expression: Expression, signs: dict[Atom, int]) -> Expression:
