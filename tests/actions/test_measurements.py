@@ -8,6 +8,7 @@ from quarterturn.actions.declare import declare
 from quarterturn.actions.expression import Expression, Symbol
 from quarterturn.actions.measurements import measurement_label
 from quarterturn.actions.model import Measurement
+from quarterturn.errors import ActionError
 
 HEAD = "q(t)\nL = 1/2 q'^2 - q^2 - lam q^4\nlam = 1\nlattice 100, a = 0.1\nmeasure "
 
@@ -99,3 +100,10 @@ def test_without_a_measure_statement_there_is_a_default() -> None:
 
 def test_times_are_exact_fractions() -> None:
     assert measured("<q(0.1) q(0)>").brackets[0].groups[1][0] == Fraction(1, 10)
+
+
+def test_a_path_may_be_called_p() -> None:
+    """A momentum is refused inside an average, but this is a path."""
+    assert declare("p(t)\nL = 1/2 p'^2 - p^2\nmeasure <p^2>").measurements[0].label == "<p^2>"
+    with pytest.raises(ActionError, match="operator ordering"):
+        measured("<q p>")

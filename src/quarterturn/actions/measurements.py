@@ -63,7 +63,8 @@ class MeasureScope(Scope):
     def name(self, node: Name) -> Value:
         if node.name == "energy" and node.name not in self.local:
             return Expression.of(ENERGY) if self.whole_path else self.bracket(((NOW, Expression.of(ENERGY)),), "path")
-        if node.name == "p" or (node.name.startswith("p_") and node.name[2:] in self.paths):
+        momentum = node.name == "p" or (node.name.startswith("p_") and node.name[2:] in self.paths)
+        if momentum and node.name not in {*self.local, *self.paths, *self.definitions, *self.couplings}:
             raise self.error(
                 "a momentum at the same time as its path needs an operator ordering, which a path integral does not "
                 "carry; measure it through the energy or a correlator of q",
