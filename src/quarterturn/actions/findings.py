@@ -3,12 +3,17 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from typing import TYPE_CHECKING
 
-from quarterturn.actions.boundedness import confinement
-from quarterturn.actions.expression import Atom, Expression, Symbol
+from quarterturn.actions.boundedness import confinement, value_at
+from quarterturn.actions.expression import Atom, Expression, PathAtom, Symbol
 from quarterturn.actions.model import EuclideanAction, Finding
 from quarterturn.actions.printing import notation
 from quarterturn.actions.turn import velocity
+
+if TYPE_CHECKING:
+    import numpy as np
+    from numpy.typing import NDArray
 
 
 def check(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> tuple[Finding, ...]:
@@ -17,11 +22,15 @@ def check(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> tuple[F
     severity "fatal": the path integral diverges; "unconfined": it diverges on a periodic lattice, though levels below
     the continuum may exist; "note": worth knowing.
     """
-    found = list(_kinetic(euclidean, couplings))
-    circles = tuple(p is not None for p in euclidean.periods)
-    verdict = confinement(euclidean.potential, euclidean.variables, circles, couplings)
+    found = [*_kinetic(euclidean, couplings), *_single_valued(euclidean, couplings)]
+    verdict = confinement(euclidean.potential, euclidean.variables, euclidean.periods, couplings)
     if verdict.verdict == "unbounded":
         found.append(Finding("fatal", "bounded", f"not bounded below: {verdict.words}"))
+    elif verdict.verdict == "meaningless":
+        found.append(Finding("fatal", "bounded", f"the potential has no value: {verdict.words}"))
+    elif verdict.verdict == "singular":
+        words = f"not bounded below: {verdict.words}; exp(-a V) can't be integrated there, at no spacing a"
+        found.append(Finding("unconfined", "bounded", words))
     elif verdict.verdict == "flat":
         found.append(Finding("unconfined", "bounded", f"not confining: {verdict.words}"))
     elif verdict.verdict == "undecided":
@@ -32,9 +41,7 @@ def check(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> tuple[F
 def _kinetic(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> list[Finding]:
     import numpy as np
 
-    lookup: dict[Atom, float] = {Symbol("coupling", n): v for n, v in couplings.items()}
-    with np.errstate(all="ignore"):
-        mass = np.array([[float(k.evaluate(lookup, np)) for k in row] for row in euclidean.mass])
+    mass = np.array([[value_at(k, couplings) for k in row] for row in euclidean.mass])
     found = []
     if not np.isfinite(mass).all():
         return [Finding("fatal", "kinetic", "the mass in the kinetic term is not a finite number at these couplings")]
@@ -64,6 +71,41 @@ def _kinetic(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> list
             )
         )
     return found
+
+
+def _single_valued(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> list[Finding]:
+    """On a circle theta and theta + period are one point: V and A must have one value there. Tried at random points."""
+    import numpy as np
+
+    if all(period is None for period in euclidean.periods):
+        return []
+    points = np.random.default_rng(20240229).uniform(-2.0, 2.0, size=(len(euclidean.variables), 40))
+    lookup: dict[Atom, object] = {Symbol("coupling", n): np.float64(v) for n, v in couplings.items()}
+
+    def values(expression: Expression, shift: PathAtom | None, by: float) -> NDArray[np.complex128]:
+        here: dict[Atom, object] = {
+            v: points[i] + (by if v == shift else 0.0) for i, v in enumerate(euclidean.variables)
+        }
+        with np.errstate(all="ignore"):
+            return np.broadcast_to(np.asarray(expression.evaluate({**lookup, **here}, np)).astype(np.complex128), (40,))
+
+    parts = [(euclidean.potential, "the potential"), *((a, "the term linear in the velocity") for a in euclidean.drift)]
+    for variable, period in zip(euclidean.variables, euclidean.periods, strict=True):
+        if period is None:
+            continue
+        for expression, words in parts:
+            if variable not in expression.paths:
+                continue
+            at, after = values(expression, None, 0.0), values(expression, variable, value_at(period, {}))
+            known = np.isfinite(at) & np.isfinite(after)
+            if (np.abs(after - at)[known] > 1e-8 * (1 + np.abs(at[known]))).any():
+                name, turn = notation(Expression.of(variable)), notation(period)
+                message = (
+                    f"not single-valued: {name} and {name} + {turn} are the same point of the circle, but {words} "
+                    f"differs there; write it in cos and sin of whole turns, or declare {name}(t) without mod"
+                )
+                return [Finding("fatal", "period", message)]
+    return []
 
 
 def phase_finding(euclidean: EuclideanAction) -> tuple[Finding, ...]:

@@ -94,7 +94,7 @@ class Finding:
     """Something the turn found out. severity: fatal (the integral diverges) | unconfined (it does on a ring) | note."""
 
     severity: str
-    topic: str  # kinetic | bounded | phase | couplings | ordering | notation
+    topic: str  # kinetic | bounded | period | phase | couplings | ordering | notation
     message: str
     span: Span | None = field(default=None, compare=False)
 
