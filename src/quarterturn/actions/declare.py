@@ -46,6 +46,7 @@ from quarterturn.notation.tree import (
 
 MOST_SYMMETRIC = 6  # variables up to which all sign vectors are tried
 MOST_VARIABLES = 64
+OTHER_NAMES_OF_L = ("S", "Lagrangian", "Le", "L_E", "S_E", "Lag", "action")
 NATURAL = ("", "natural")
 
 
@@ -130,6 +131,12 @@ class _Declaration:
     def dynamics(self) -> Dynamics:
         found = self.of(Dynamics)
         if not found:
+            for s in self.of(Assignment):
+                if s.name in OTHER_NAMES_OF_L:
+                    raise self.error(
+                        f"{s.name} = … is read as a definition: the action is given by its Lagrangian, L = … in real "
+                        "time or LE = … in imaginary time", s.span, self.renamed(s),
+                    )  # fmt: skip
             raise self.error(
                 "there is no action: write L = … (real time), LE = … (imaginary time) or H = …",
                 self.statements[-1].span,
@@ -141,6 +148,11 @@ class _Declaration:
         if found[0].form == "SE":
             raise self.error("a lattice action SE is not available yet: write L, LE or H", found[0].span)
         return found[0]
+
+    def renamed(self, s: Assignment) -> str:
+        """The statement with L on its left."""
+        line = self.text.split("\n")[s.span.line - 1][s.span.column - 1 :]
+        return "L =" + line.split("=", 1)[1].split("#")[0].split(";")[0].rstrip()
 
     def assigned(self, paths: Mapping[str, Path]) -> tuple[dict[str, Coupling], dict[str, Assignment]]:
         couplings: dict[str, Coupling] = {}
@@ -215,7 +227,7 @@ class _Declaration:
         written = scope.number(dynamics.body)
         lagrangian, turned = self.turned(written, dynamics, paths, variables, scope)
         geometry = self.geometry()
-        measurements, used = self.measurements(scope, paths, geometry, dynamics)
+        measurements, used = self.measurements(scope, paths, geometry, dynamics, _defaults(couplings))
         euclidean = self.euclidean(turned, paths, variables, couplings)
         notes = self.notes(scope, turned, couplings, definitions, used)
         angles = frozenset(name for name, path in paths.items() if path.period is not None)
@@ -280,11 +292,16 @@ class _Declaration:
         )  # fmt: skip
 
     def measurements(
-        self, scope: Scope, paths: Mapping[str, Path], geometry: Geometry | None, dynamics: Dynamics
+        self,
+        scope: Scope,
+        paths: Mapping[str, Path],
+        geometry: Geometry | None,
+        dynamics: Dynamics,
+        defaults: dict[str, float],
     ) -> tuple[tuple[Measurement, ...], set[str]]:
         measuring = MeasureScope(
             self.text, dict(paths), scope.couplings, scope.definitions, geometry=GEOMETRY, notes=scope.notes,
-            geometry_of_lattice=geometry,
+            geometry_of_lattice=geometry, defaults=defaults,
         )  # fmt: skip
         items = [item for s in self.of(Measure) for item in s.items] or _default_items(paths, dynamics)
         found: dict[str, Measurement] = {}

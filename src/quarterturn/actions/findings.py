@@ -3,17 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from typing import TYPE_CHECKING
 
 from quarterturn.actions.boundedness import confinement, value_at
-from quarterturn.actions.expression import Atom, Expression, PathAtom, Symbol
+from quarterturn.actions.circles import changed_by_a_turn
+from quarterturn.actions.expression import ZERO, Expression
 from quarterturn.actions.model import EuclideanAction, Finding
 from quarterturn.actions.printing import notation
 from quarterturn.actions.turn import velocity
-
-if TYPE_CHECKING:
-    import numpy as np
-    from numpy.typing import NDArray
 
 
 def check(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> tuple[Finding, ...]:
@@ -74,37 +70,17 @@ def _kinetic(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> list
 
 
 def _single_valued(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> list[Finding]:
-    """On a circle theta and theta + period are one point: V and A must have one value there. Tried at random points."""
-    import numpy as np
-
-    if all(period is None for period in euclidean.periods):
-        return []
-    points = np.random.default_rng(20240229).uniform(-2.0, 2.0, size=(len(euclidean.variables), 40))
-    lookup: dict[Atom, object] = {Symbol("coupling", n): np.float64(v) for n, v in couplings.items()}
-
-    def values(expression: Expression, shift: PathAtom | None, by: float) -> NDArray[np.complex128]:
-        here: dict[Atom, object] = {
-            v: points[i] + (by if v == shift else 0.0) for i, v in enumerate(euclidean.variables)
-        }
-        with np.errstate(all="ignore"):
-            return np.broadcast_to(np.asarray(expression.evaluate({**lookup, **here}, np)).astype(np.complex128), (40,))
-
+    periods = dict(zip(euclidean.variables, euclidean.periods, strict=True))
     parts = [(euclidean.potential, "the potential"), *((a, "the term linear in the velocity") for a in euclidean.drift)]
-    for variable, period in zip(euclidean.variables, euclidean.periods, strict=True):
-        if period is None:
-            continue
-        for expression, words in parts:
-            if variable not in expression.paths:
-                continue
-            at, after = values(expression, None, 0.0), values(expression, variable, value_at(period, {}))
-            known = np.isfinite(at) & np.isfinite(after)
-            if (np.abs(after - at)[known] > 1e-8 * (1 + np.abs(at[known]))).any():
-                name, turn = notation(Expression.of(variable)), notation(period)
-                message = (
-                    f"not single-valued: {name} and {name} + {turn} are the same point of the circle, but {words} "
-                    f"differs there; write it in cos and sin of whole turns, or declare {name}(t) without mod"
-                )
-                return [Finding("fatal", "period", message)]
+    for expression, words in parts:
+        changed = changed_by_a_turn(expression, periods, couplings)
+        if changed is not None:
+            name, turn = notation(Expression.of(changed)), notation(periods[changed] or ZERO)
+            message = (
+                f"not single-valued: {name} and {name} + {turn} are the same point of the circle, but {words} differs "
+                f"there; write it in cos and sin of whole turns, or declare {name}(t) without mod"
+            )
+            return [Finding("fatal", "period", message)]
     return []
 
 

@@ -13,12 +13,14 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field, replace
 from fractions import Fraction
 
+from quarterturn.actions.circles import changed_by_a_turn
 from quarterturn.actions.expression import ONE, ZERO, Expression, Function, Symbol
 from quarterturn.actions.model import Bracket, Geometry, Measurement
 from quarterturn.actions.printing import latex, notation, placeholder, typeset_name
 from quarterturn.actions.scope import Scope, Value
-from quarterturn.errors import NotationError
+from quarterturn.errors import NotationError, Span
 from quarterturn.notation.statements import label_of
+from quarterturn.notation.symbols import CONSTANTS, FUNCTIONS, GEOMETRY
 from quarterturn.notation.tree import (
     Average,
     Call,
@@ -58,6 +60,7 @@ class MeasureScope(Scope):
     """A scope in which angle brackets, gap, binder, charge and energy have a meaning."""
 
     geometry_of_lattice: Geometry | None = None
+    defaults: dict[str, float] = field(default_factory=dict)  # of the couplings
     brackets: list[Bracket] = field(default_factory=list)
 
     def name(self, node: Name) -> Value:
@@ -134,6 +137,7 @@ class MeasureScope(Scope):
         """Sums and multiples of brackets; products of factors at different times become one bracket."""
         times = set(_times_in(node, self))
         if times and _untimed(node, self):
+            self.check_names(node)
             raise self.error(
                 "some factors have a time and some have none: give each its time, such as q(0)", whole.span
             )
@@ -202,6 +206,30 @@ class MeasureScope(Scope):
         if late:
             raise self.error(f"the time {float(late[0]):g} is not before beta = {beta:g}", whole.span)
 
+    def check_names(self, node: Node) -> None:
+        """q(s) is read as a product where s is no time: say so."""
+        known = {*self.paths, *self.couplings, *self.definitions, *FUNCTIONS, *CONSTANTS, *GEOMETRY, "t"}
+        unknown = sorted(names_in(node) - known)
+        if unknown:
+            raise self.error(
+                f"{unknown[0]} is no time here: a curve has one free time, t; the other times are numbers", node.span,
+            )  # fmt: skip
+
+    def single_valued(self, expression: Expression, span: Span) -> None:
+        """On a circle an observable has one value at each point; cos(theta) has, theta^2 has not."""
+        periods = {atom: path.period for path in self.paths.values() for atom in path.atoms}
+        inner = [a.argument for a in expression.atoms() if isinstance(a, Function) and a.name == "mean"]
+        whole = any(isinstance(a, Function) and a.name in ("mean", "charge") for a in expression.atoms())
+        for part in inner if whole else [expression]:
+            changed = changed_by_a_turn(part, periods, self.defaults)
+            if changed is not None:
+                name, turn = notation(Expression.of(changed)), notation(periods[changed] or ZERO)
+                raise self.error(
+                    f"{notation(part)} has no single value on the circle: {name} and {name} + {turn} are the same "
+                    f"point; measure cos({name}), sin({name}) or charge({name})",
+                    span, f"cos({name})",
+                )  # fmt: skip
+
     def checked(self, node: Node) -> Expression:
         """The expression of a factor; velocities are refused."""
         if _mentions(node, (Prime,)):
@@ -234,10 +262,15 @@ def measurement_of(item: MeasureItem, scope: MeasureScope) -> Measurement:
         if not operators or any(not f.paths for f in operators):
             raise scope.error("gap needs operators made of paths, such as gap(q) or gap(q, q^3)", body.span)
         typeset = rf"\Delta E\left[{', '.join(map(latex, operators))}\right]"
+        for operator in operators:
+            fresh.single_valued(operator, item.span)
         return Measurement(label, typeset, "gap", (), ZERO, operators, item.source, item.span)
     formula = fresh.number(body)
     if formula.paths:
         raise scope.error("a path outside an expectation value: write <q^2>", item.span, f"<{item.source}>")
+    for bracket in fresh.brackets:
+        for _, expression in bracket.groups:
+            fresh.single_valued(expression, item.span)
     kind = "curve" if any(b.free for b in fresh.brackets) else "number"
     return Measurement(
         label, _typeset(item, fresh, formula), kind, tuple(fresh.brackets), formula, (), item.source, item.span

@@ -15,7 +15,7 @@ from dataclasses import dataclass, field
 from quarterturn.actions.expression import ONE, PI, ZERO, Expression, Function, PathAtom, Symbol, apply
 from quarterturn.actions.model import Path
 from quarterturn.errors import ActionError, QuarterturnError, Span
-from quarterturn.notation.symbols import FUNCTIONS, LATER
+from quarterturn.notation.symbols import FUNCTIONS, LATER, MEASURES
 from quarterturn.notation.tree import (
     Assignment,
     Average,
@@ -147,8 +147,12 @@ class Scope:
         name = node.name
         known = [*self.paths, *self.momenta, *self.couplings, *self.definitions, *self.geometry]
         near = difflib.get_close_matches(name, known, n=1, cutoff=0.6)
+        if name in FUNCTIONS and self.follows(node.span).startswith(("^", "²", "³")):
+            return self.error(f"a power stands behind the whole function, as in {name}(x)^2", node.span, f"{name}(…)^2")
         if name in FUNCTIONS:
             return self.error(f"{name} is a function and needs its argument in brackets", node.span, f"{name}(…)")
+        if name in MEASURES:
+            return self.error(f"{name} needs its argument, as in {MEASURES[name].rsplit(': ', 1)[-1]}", node.span)
         if name in LATER:
             return self.error(LATER[name], node.span)
         if name == "t":
@@ -157,6 +161,23 @@ class Scope:
             return self.error(
                 "the action is written in real time and has no i: the turn to imaginary time adds it", node.span
             )
+        if name == "hbar":
+            return self.error("hbar = 1 in the units of this notation: leave it out", node.span)
+        if name in self.derivatives():
+            path = self.derivatives()[name]
+            return self.error(
+                f"{name} is not declared; the derivative in time is {path}' or d_t {path}", node.span, f"{path}'"
+            )
+        if name == "d" or name.startswith("d_"):
+            path = next(iter(self.paths), "q")
+            return self.error(
+                f"a contraction such as (d {path})^2 belongs to a field; a path has one direction, time: {path}'^2",
+                node.span, f"{path}'^2",
+            )  # fmt: skip
+        applied = next((f for f in FUNCTIONS if name.startswith(f) and name[len(f) :] in known), None)
+        if applied:
+            inner = name[len(applied) :]
+            return self.error(f"{name} is not declared; a function has brackets", node.span, f"{applied}({inner})")
         split = _split_in_known(name, known)
         if name in PYTHON_MODULES:
             return self.error(f"{name} is a module of Python; functions stand alone, as in cosh(q)", node.span)
@@ -171,10 +192,18 @@ class Scope:
             f"{name} is not declared: a coupling needs a value, such as {name} = 1", node.span, f"{name} = 1"
         )
 
+    def derivatives(self) -> dict[str, str]:
+        """Other ways to write a velocity, and of which path: dq, qdot, q_dot, dt."""
+        table = {word: path for path in self.paths for word in (f"d{path}", f"{path}dot", f"{path}_dot", f"{path}_t")}
+        return table | dict.fromkeys(("dt",), next(iter(self.paths), "q"))
+
     def is_applied(self, span: Span) -> bool:
         """Whether a bracket follows at once, as after a function."""
-        line = self.text.split("\n")[span.end_line - 1]
-        return line[span.end_column - 1 : span.end_column] == "("
+        return self.follows(span).startswith("(")
+
+    def follows(self, span: Span) -> str:
+        """The rest of the line behind a place."""
+        return self.text.split("\n")[span.end_line - 1][span.end_column - 1 :]
 
     def inside(self, definition: Assignment, arguments: dict[str, Value], span: Span) -> Value:
         """The body of a definition, with its parameters bound."""
