@@ -73,6 +73,8 @@ def test_a_circle_has_one_value_at_each_point(term: str, severity: str | None) -
 
 def test_a_period_other_than_a_whole_turn_is_kept_to() -> None:
     assert severities("x(t) mod 3\nL = 1/2 x'^2 + cos(2 pi x/3)") == set()
+    (default,) = declare("x(t) mod 3\nL = 1/2 x'^2 + cos(2 pi x/3)").measurements
+    assert default.label == "<cos(2/3 pi x)>"
     assert severities("x(t) mod 3\nL = 1/2 x'^2 + cos(x)") == {"fatal"}
 
 

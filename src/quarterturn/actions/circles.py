@@ -6,13 +6,18 @@ from collections.abc import Mapping
 from typing import TYPE_CHECKING
 
 from quarterturn.actions.boundedness import value_at
-from quarterturn.actions.expression import Atom, Expression, PathAtom, Symbol
+from quarterturn.actions.expression import PI, Atom, Expression, PathAtom, Symbol
 
 if TYPE_CHECKING:
     import numpy as np
     from numpy.typing import NDArray
 
 TRIED = 40  # random points, from a fixed seed
+
+
+def phase_of(variable: PathAtom, period: Expression) -> Expression:
+    """2 pi x / period: the variable itself where the period is 2 pi."""
+    return Expression.of(PI).scaled(2) * period.inverse() * Expression.of(variable)
 
 
 def changed_by_a_turn(

@@ -12,6 +12,7 @@ import itertools
 from collections.abc import Mapping
 from dataclasses import dataclass
 
+from quarterturn.actions.circles import phase_of
 from quarterturn.actions.dimensions import coupling_dimensions
 from quarterturn.actions.expression import Atom, Expression, PathAtom
 from quarterturn.actions.findings import check, phase_finding
@@ -348,7 +349,7 @@ def _default_items(paths: Mapping[str, Path], dynamics: Dynamics) -> list[Measur
     items = []
     for path in paths.values():
         if path.period is not None:
-            texts = [f"<cos({path.name})>"]
+            texts = [f"<cos({notation(phase_of(path.atoms[0], path.period))})>"]
         elif path.components:
             texts = [f"<{path.name}.{path.name}>"]
         else:

@@ -13,7 +13,7 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field, replace
 from fractions import Fraction
 
-from quarterturn.actions.circles import changed_by_a_turn
+from quarterturn.actions.circles import changed_by_a_turn, phase_of
 from quarterturn.actions.expression import ONE, ZERO, Expression, Function, Symbol
 from quarterturn.actions.model import Bracket, Geometry, Measurement
 from quarterturn.actions.printing import latex, notation, placeholder, typeset_name
@@ -206,8 +206,7 @@ class MeasureScope(Scope):
         if late:
             raise self.error(f"the time {float(late[0]):g} is not before beta = {beta:g}", whole.span)
 
-    def check_names(self, node: Node) -> None:
-        """q(s) is read as a product where s is no time: say so."""
+    def check_names(self, node: Node) -> None:  # q(s) is read as a product where s is no time
         known = {*self.paths, *self.couplings, *self.definitions, *FUNCTIONS, *CONSTANTS, *GEOMETRY, "t"}
         unknown = sorted(names_in(node) - known)
         if unknown:
@@ -222,12 +221,11 @@ class MeasureScope(Scope):
         whole = any(isinstance(a, Function) and a.name in ("mean", "charge") for a in expression.atoms())
         for part in inner if whole else [expression]:
             changed = changed_by_a_turn(part, periods, self.defaults)
-            if changed is not None:
-                name, turn = notation(Expression.of(changed)), notation(periods[changed] or ZERO)
+            if changed is not None and (period := periods[changed]) is not None:
+                name, wave = notation(Expression.of(changed)), notation(phase_of(changed, period))
                 raise self.error(
-                    f"{notation(part)} has no single value on the circle: {name} and {name} + {turn} are the same "
-                    f"point; measure cos({name}), sin({name}) or charge({name})",
-                    span, f"cos({name})",
+                    f"{notation(part)} has no single value on the circle: {name} and {name} + {notation(period)} are "
+                    f"the same point; measure cos({wave}), sin({wave}) or charge({name})", span, f"cos({wave})",
                 )  # fmt: skip
 
     def checked(self, node: Node) -> Expression:
