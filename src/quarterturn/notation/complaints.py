@@ -47,7 +47,10 @@ def unexpected(source: Source, tokens: list[Lexeme], place: int) -> NotationErro
     if here.kind == "SUPERSCRIPT" or (here.kind == "CARET" and before and before.kind in ("CARET", "SUPERSCRIPT")):
         return source.error("two exponents in a row: write one power, such as q^4", start, end)
     if here.kind == "COMMA":
-        return source.error("a comma separates arguments; outside a function it has no place in a formula", start, end)
+        if opened:
+            return source.error("a comma has no place inside this bracket", start, end)
+        words = "the formula ends before this comma; another statement stands on its own line, or after ;"
+        return source.error(words, start, end)
     if here.kind in OPERATORS or here.kind == "CARET":
         return source.error(f"a term is missing before {here.value!r}", start, end)
     return source.error(f"{here.value!r} can't stand here; a term or an operator was expected", start, end)

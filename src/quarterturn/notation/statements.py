@@ -28,6 +28,7 @@ from quarterturn.notation.tree import (
 )
 
 LONGEST = 20_000
+MOST_DIGITS = 9  # of a number of sites
 G = "".join(LETTERS)
 NAME = rf"[A-Za-z{G}][A-Za-z0-9_{G}]*"
 PATH = re.compile(rf"\s*({NAME})\s*(?:\[\s*(\d+)\s*\])?\s*\(([^()]*)\)\s*")
@@ -241,9 +242,11 @@ def _lattice(source: Source, piece: Piece, word: str | None, names: Names) -> La
     for part in _parts(source, inner):
         text = source.text[part.start : part.end].strip()
         if re.fullmatch(r"\d+(\s*[x×]\s*\d+)*", text):
-            extents = tuple(int(n[:9]) for n in re.findall(r"\d+", text))
-        elif text in BOUNDARIES:
-            boundary = text
+            extents = _extents(source, part, text)
+        elif named := re.match(rf"({'|'.join(BOUNDARIES)})\b", text):
+            boundary = named.group(1)
+        elif boundary == "fixed" and re.match(rf"{NAME}\s*\(", text):
+            continue  # the other end: fixed q(0) = -1, q(beta) = 1
         elif assigned := re.match(r"\s*(a|beta|β)\s*=(?!=)", source.text[part.start : part.end]):
             formula = read_formula(source, part.start + assigned.end(), part.end, names.is_call)
             settings.append((canonical_name(assigned.group(1)), formula))
@@ -255,6 +258,14 @@ def _lattice(source: Source, piece: Piece, word: str | None, names: Names) -> La
     return LatticeStatement(extents, tuple(settings), boundary, span)
 
 
+def _extents(source: Source, part: Piece, text: str) -> tuple[int, ...]:
+    numbers = re.findall(r"\d+", text)
+    if any(len(n) > MOST_DIGITS for n in numbers):
+        at = part.start + source.text[part.start : part.end].index(text)
+        raise source.error(f"a lattice of more than {10**MOST_DIGITS - 1} sites", at, at + len(text))
+    return tuple(int(n) for n in numbers)
+
+
 def _measure(source: Source, piece: Piece, names: Names) -> Measure:
     body = source.text[piece.start : piece.end]
     offset = piece.start + body.index("measure") + len("measure")
@@ -263,6 +274,11 @@ def _measure(source: Source, piece: Piece, names: Names) -> Measure:
         inside = source.text[part.start : part.end]
         if not inside.strip():
             raise source.error("a measurement is missing here", part.start - 1, part.start)
+        if functional := re.search(r"\blog\s*Z\b(\s*\[[^\]]*\])?", inside):
+            words = (
+                "log Z[J] needs a source J(t), which is not available yet; <q> and <q(t) q(0)>_c are its derivatives"
+            )
+            raise source.error(words, part.start + functional.start(), part.start + functional.end())
         label = ASSIGN.match(inside)
         formula_start = part.start + (label.end() if label else 0)
         given = label_of(inside[: label.end() - 1]) if label else ""

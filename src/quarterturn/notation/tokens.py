@@ -99,6 +99,9 @@ def lexemes(source: Source, start: int, end: int, is_call: Callable[[str, str], 
             and is_call(found[-1].value, source.text[position:end])
         ):
             kind = "CALL_OPEN"
+        elif kind == "OPEN" and (path := _derived(found)) and is_call(path, source.text[position:end]):
+            words = f"a velocity has no bracket: {path}' is taken at the time t; write {path}'"
+            raise source.error(words, position, source.text.find(")", position, end) + 1 or end, f"{path}'")
         elif kind == "OPEN" and _is_component(found) and is_call(found[-4].value, source.text[position:end]):
             kind = "AT_OPEN"
         found.append(Lexeme(kind, value, position, stop))
@@ -109,6 +112,11 @@ def lexemes(source: Source, start: int, end: int, is_call: Callable[[str, str], 
 def _is_component(found: list[Lexeme]) -> bool:
     """Whether what was read last is a component such as r[2]."""
     return [lexeme.kind for lexeme in found[-4:]] == ["NAME", "SQUARE_OPEN", "NUMBER", "SQUARE_CLOSE"]
+
+
+def _derived(found: list[Lexeme]) -> str:
+    """The name of which a derivative was read last, such as q in q', or nothing."""
+    return found[-2].value if [lexeme.kind for lexeme in found[-2:]] == ["NAME", "PRIME"] else ""
 
 
 def _sign(value: str, found: list[Lexeme], bars: int) -> tuple[str, str, int]:
