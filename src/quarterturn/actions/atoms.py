@@ -30,20 +30,36 @@ class Symbol:
 
 @dataclass(frozen=True, slots=True)
 class PathAtom:
-    """A path at a time, or its time derivative: q, q', r[2]'. `component` is 0 for a scalar, else 1, 2, …"""
+    """A real variable at a point, its derivative, or its value one site further: q, q', d_x phi[2], phi(+x).
+
+    `component` is 0 for a scalar, else 1, 2, …; `order` is the number of derivatives, all along `direction`: 0 for
+    time, k for the k-th coordinate of space; `neighbour` is 0 for the point itself and +-(k + 1) for the next site
+    forwards or backwards in direction k; `part` is re or im for the two real variables of a complex field.
+    """
 
     name: str
     component: int = 0
     order: int = 0
+    direction: int = 0
+    neighbour: int = 0
+    part: str = ""
 
     @property
     def key(self) -> tuple[Any, ...]:
-        return (3, self.name, self.component, self.order)
+        return (3, self.name, self.component, self.part, self.order, self.direction, self.neighbour)
 
     @property
     def value(self) -> PathAtom:
-        """The path itself, without derivatives."""
-        return PathAtom(self.name, self.component, 0)
+        """The variable itself, without derivatives, at the point itself."""
+        return PathAtom(self.name, self.component, part=self.part)
+
+    def derivative(self, direction: int = 0) -> PathAtom:
+        """Its first derivative along a coordinate."""
+        return PathAtom(self.name, self.component, 1, direction, part=self.part)
+
+    def moved(self, direction: int, sign: int = 1) -> PathAtom:
+        """Its value at the next site in a direction."""
+        return PathAtom(self.name, self.component, neighbour=sign * (direction + 1), part=self.part)
 
 
 @dataclass(frozen=True, slots=True)

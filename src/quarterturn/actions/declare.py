@@ -35,6 +35,7 @@ from quarterturn.notation.symbols import CONSTANTS, FUNCTIONS, GEOMETRY, MEASURE
 from quarterturn.notation.tokens import Source
 from quarterturn.notation.tree import (
     Assignment,
+    Constraint,
     Dynamics,
     LatticeStatement,
     Measure,
@@ -48,7 +49,7 @@ from quarterturn.notation.tree import (
 MOST_SYMMETRIC = 6  # variables up to which all sign vectors are tried
 MOST_VARIABLES = 64
 OTHER_NAMES_OF_L = ("S", "Lagrangian", "Le", "L_E", "S_E", "Lag", "action")
-NATURAL = ("", "natural")
+NATURAL = ((), ("natural",))
 
 
 def declare(text: str, name: str = "action") -> Action:
@@ -110,7 +111,6 @@ class _Declaration:
         if s.kind != "real":
             words = {
                 "complex": "complex paths are",
-                "constrained": "constraints such as n.n = 1 are",
                 "group": "group-valued paths are",
             }
             raise self.error(f"{words[s.kind]} not available yet", s.span)
@@ -180,8 +180,9 @@ class _Declaration:
         place: Span | None = None
         for s in self.of(LatticeStatement):
             place = place or s.span
-            if s.boundary not in ("", "periodic"):
-                raise self.error(f"{s.boundary} boundaries are not available yet; paths are periodic", s.span)
+            for b in s.boundaries:
+                if b.kind != "periodic":
+                    raise self.error(f"{b.kind} boundaries are not available yet; paths are periodic", s.span)
             if len(s.extents) > 1:
                 raise self.error("a path has one extent, as in 'lattice 200, a = 0.1'", s.span)
             extents = s.extents or extents
@@ -215,8 +216,10 @@ class _Declaration:
 
     # --- the whole ------------------------------------------------------------------------------------------
     def action(self) -> Action:
+        for s in self.of(Constraint):
+            raise self.error("constraints such as n.n = 1 are not available yet", s.span)
         for s in self.of(Units):
-            if s.text not in NATURAL:
+            if s.names not in NATURAL:
                 raise self.error("units other than natural ones (hbar = c = 1) are not available yet", s.span)
         paths, dynamics = self.paths(), self.dynamics()
         couplings, definitions = self.assigned(paths)

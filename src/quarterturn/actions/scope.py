@@ -119,6 +119,7 @@ class Scope:
                 if not self.whole_path:
                     raise self.error("'mean' stands inside an expectation value, as in <(mean q)^2>", node.span)
                 return Expression.of(Function("mean", self.number(node.body)))
+        raise self.error("this is not available yet", node.span)
 
     # --- names ----------------------------------------------------------------------------------------------
     def name(self, node: Name) -> Value:
@@ -287,16 +288,18 @@ class Scope:
                 raise self.error(
                     "second time derivatives in the action are not available: integrate by parts", node.span
                 )
-            turned.append(Expression.of(PathAtom(atom.name, atom.component, 1)))
+            turned.append(Expression.of(atom.derivative()))
         return tuple(turned) if isinstance(body, tuple) else turned[0]
 
     def component(self, node: Component) -> Expression:
         body = self.value(node.base)
         if not isinstance(body, tuple):
             raise self.error("only a vector path such as r[2](t) has components", node.span)
-        if not 1 <= node.index <= len(body):
-            raise self.error(f"component {node.index} of a vector of {len(body)}: components count from 1", node.span)
-        return body[node.index - 1]
+        (index,) = node.indices
+        assert isinstance(index, int)
+        if not 1 <= index <= len(body):
+            raise self.error(f"component {index} of a vector of {len(body)}: components count from 1", node.span)
+        return body[index - 1]
 
     def factorial(self, node: Factorial) -> Expression:
         value = self.number(node.base).constant

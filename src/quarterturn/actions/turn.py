@@ -30,7 +30,7 @@ class Turned:
 
 
 def velocity(atom: PathAtom) -> PathAtom:
-    return PathAtom(atom.name, atom.component, 1)
+    return atom.derivative()
 
 
 def at_rest(expression: Expression, variables: Sequence[PathAtom]) -> Expression:

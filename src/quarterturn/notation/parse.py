@@ -149,7 +149,7 @@ class _Builder:
             case "factorial":
                 return Factorial(self.node(children[0]), span)
             case "component":
-                return Component(self.node(children[0]), self.whole(children[2], span), span)
+                return Component(self.node(children[0]), (self.whole(children[2], span),), span)
             case "at_time":
                 return self.at_time(children, span)
             case "power":
@@ -163,7 +163,7 @@ class _Builder:
         part = self.node(children[0])
         assert isinstance(part, Component) and isinstance(part.base, Name)
         inside = tuple(self.node(c) for c in children[2].children if hasattr(c, "data"))
-        return Component(Call(part.base.name, inside, part.span), part.index, span)
+        return Component(Call(part.base.name, inside, part.span), part.indices, span)
 
     def number(self, token: Any) -> Fraction:
         text = str(token)

@@ -17,6 +17,8 @@ from quarterturn.notation.symbols import FUNCTIONS, LATER, LETTERS, MEASURES, ca
 from quarterturn.notation.tokens import Lexeme, Source, evaluation_of_path, lexemes
 from quarterturn.notation.tree import (
     Assignment,
+    Boundary,
+    Constraint,
     Dynamics,
     LatticeStatement,
     Measure,
@@ -145,7 +147,8 @@ def _statements(source: Source, piece: Piece, names: Names) -> Iterator[Statemen
     elif word == "metric":
         yield Metric(_signature(source, offset + len("metric"), piece.end), span)
     elif word == "units":
-        yield Units(body.split("units", 1)[1].strip(), span)
+        named = tuple(part.strip() for part in body.split("units", 1)[1].split(",") if part.strip())
+        yield Units(named, span)
     elif form := FORM.match(body):
         yield Dynamics(form.group(1), read_formula(source, piece.start + form.end(), piece.end, names.is_call), span)
     else:
@@ -167,7 +170,8 @@ def _declarations(source: Source, piece: Piece, names: Names) -> Iterator[Statem
         elif declared:
             yield _path(source, part, declared, names)
         elif re.match(r"\s*\w+\.\w+\s*=\s*1\s*$", body):
-            yield PathStatement(canonical_name(body.split(".")[0].strip()), 0, ("t",), None, "constrained", span)
+            value = read_formula(source, part.start + body.index("=") + 1, part.end, names.is_call)
+            yield Constraint(canonical_name(body.split(".")[0].strip()), value, span)
         else:
             raise _no_statement(source, offset, end)
 
@@ -234,7 +238,7 @@ def _lattice(source: Source, piece: Piece, word: str | None, names: Names) -> La
     offset = piece.start + len(body) - len(body.lstrip())
     span = source.span(offset, piece.start + len(body.rstrip()))
     if word in BOUNDARIES:
-        return LatticeStatement((), (), str(word), span)
+        return LatticeStatement((), (), (Boundary(str(word), span=span),), None, span)
     inner = Piece(offset + len("lattice"), piece.end)
     extents: tuple[int, ...] = ()
     settings = []
@@ -255,7 +259,8 @@ def _lattice(source: Source, piece: Piece, word: str | None, names: Names) -> La
                 "a lattice is written 'lattice 200, a = 0.1', 'lattice beta = 20, a = 0.1' or 'lattice 200, beta = 20'",
                 part.start, part.end,
             )  # fmt: skip
-    return LatticeStatement(extents, tuple(settings), boundary, span)
+    edges = (Boundary(boundary, span=span),) if boundary else ()
+    return LatticeStatement(extents, tuple(settings), edges, None, span)
 
 
 def _extents(source: Source, part: Piece, text: str) -> tuple[int, ...]:
