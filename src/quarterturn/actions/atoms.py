@@ -6,6 +6,7 @@ Each atom has a `key`, by which atoms are put in order whatever their kind.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from fractions import Fraction
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
@@ -17,7 +18,7 @@ class Symbol:
     """A named quantity that does not depend on the path.
 
     `kind`: coupling, constant (pi, I), bracket (an expectation value in a measurement's formula),
-    geometry (vol, beta, a), observable (energy).
+    geometry (vol, beta, a), observable (energy), source (J at the point), coordinate (t, x in the body of a source).
     """
 
     kind: str
@@ -73,6 +74,10 @@ class Function:
     def key(self) -> tuple[Any, ...]:
         return (1, self.name, self.argument.key)
 
+    @property
+    def inner(self) -> tuple[Expression, ...]:
+        return (self.argument,)
+
 
 @dataclass(frozen=True, slots=True)
 class Power:
@@ -88,8 +93,54 @@ class Power:
     def key(self) -> tuple[Any, ...]:
         return (2, self.base.key, self.exponent.key)
 
+    @property
+    def inner(self) -> tuple[Expression, ...]:
+        return (self.base, self.exponent)
 
-Atom = Symbol | PathAtom | Function | Power
+
+@dataclass(frozen=True, slots=True)
+class Cases:
+    """The first value all of whose conditions hold, else `otherwise`; a condition (f, sign) says f < 0 or f <= 0."""
+
+    branches: tuple[tuple[tuple[tuple[Expression, str], ...], Expression], ...]
+    otherwise: Expression
+
+    @property
+    def key(self) -> tuple[Any, ...]:
+        conditions = tuple(
+            (tuple((f.key, sign) for f, sign in conditions), value.key) for conditions, value in self.branches
+        )
+        return (4, conditions, self.otherwise.key)
+
+    @property
+    def inner(self) -> tuple[Expression, ...]:
+        parts = [e for conditions, value in self.branches for e in (*(f for f, _ in conditions), value)]
+        return (*parts, self.otherwise)
+
+
+@dataclass(frozen=True, slots=True)
+class Tabulated:
+    """A function given by points (x, y), interpolated; its derivative of some order at `argument`.
+
+    `interpolation`: linear | cubic | monotone. Beyond the ends it goes on along its tangents.
+    """
+
+    points: tuple[tuple[Fraction, Fraction], ...]
+    interpolation: str
+    argument: Expression
+    order: int = 0
+
+    @property
+    def key(self) -> tuple[Any, ...]:
+        return (5, self.points, self.interpolation, self.order, self.argument.key)
+
+    @property
+    def inner(self) -> tuple[Expression, ...]:
+        return (self.argument,)
+
+
+Atom = Symbol | PathAtom | Function | Power | Cases | Tabulated
+Compound = (Function, Power, Cases, Tabulated)  # atoms with expressions inside
 Monomial = tuple[tuple[Atom, int], ...]
 IMAGINARY = Symbol("constant", "I")
 PI = Symbol("constant", "pi")

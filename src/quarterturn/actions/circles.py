@@ -26,6 +26,7 @@ def changed_by_a_turn(
     """The first angle that changes the expression when it goes once round, or None. Tried at random points."""
     import numpy as np
 
+    periods = {v: periods.get(v.value) for v in sorted({*periods, *expression.paths}, key=lambda a: a.key)}
     circles = {v: p for v, p in periods.items() if p is not None and v in expression.paths}
     if not circles:
         return None

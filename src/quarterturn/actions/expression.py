@@ -18,12 +18,16 @@ from typing import Any
 from quarterturn.actions.atoms import IMAGINARY as IMAGINARY
 from quarterturn.actions.atoms import PI as PI
 from quarterturn.actions.atoms import Atom as Atom
+from quarterturn.actions.atoms import Cases as Cases
+from quarterturn.actions.atoms import Compound as Compound
 from quarterturn.actions.atoms import Function as Function
 from quarterturn.actions.atoms import Monomial as Monomial
 from quarterturn.actions.atoms import PathAtom as PathAtom
 from quarterturn.actions.atoms import Power as Power
 from quarterturn.actions.atoms import Symbol as Symbol
+from quarterturn.actions.atoms import Tabulated as Tabulated
 from quarterturn.actions.atoms import monomial_key
+from quarterturn.actions.evaluation import atom_value, depends_on_path
 from quarterturn.errors import ActionError
 
 TERM_LIMIT = 2000  # a product that expands to more terms is refused: no cell may hang the kernel
@@ -102,11 +106,9 @@ class Expression:
         for monomial, _ in self.terms:
             for atom, _power in monomial:
                 yield atom
-                if isinstance(atom, Function):
-                    yield from atom.argument.atoms()
-                elif isinstance(atom, Power):
-                    yield from atom.base.atoms()
-                    yield from atom.exponent.atoms()
+                if isinstance(atom, Compound):
+                    for part in atom.inner:
+                        yield from part.atoms()
 
     @cached_property
     def paths(self) -> frozenset[PathAtom]:
@@ -225,8 +227,8 @@ class Expression:
             scalar: Any = float(coefficient)
             array: Any = None
             for atom, power in monomial:
-                factor = _atom_value(atom, find, module) ** power
-                if _depends_on_path(atom):
+                factor = atom_value(atom, find, module) ** power
+                if depends_on_path(atom):
                     array = factor if array is None else array * factor
                 else:
                     scalar = scalar * factor
@@ -253,6 +255,23 @@ def apply(name: str, argument: Expression) -> Expression:
     if negative and name in ODD_FUNCTIONS:
         return -Expression.of(Function(name, -argument))
     return Expression.of(Function(name, argument))
+
+
+Branches = tuple[tuple[tuple[tuple[Expression, str], ...], Expression], ...]
+
+
+def chosen(branches: Branches, otherwise: Expression) -> Expression:
+    """The first value whose conditions hold, else `otherwise`; one value where all are equal.
+
+    A condition (f, sign) says f < 0 or f <= 0; it is scaled so that the first coefficient of f has modulus 1.
+    """
+    if all(value == otherwise for _, value in branches):
+        return otherwise
+    scaled = tuple(
+        (tuple((f.scaled(1 / abs(f.terms[0][1])) if f.terms else f, sign) for f, sign in conditions), value)
+        for conditions, value in branches
+    )
+    return Expression.of(Cases(scaled, otherwise))
 
 
 def _rational_root(base: Fraction | None, exponent: Fraction) -> Fraction | None:
@@ -300,6 +319,14 @@ def _derivative(atom: Atom, variable: Atom) -> Expression:
         if exponent.terms:
             slope = slope + Expression.of(atom) * apply("log", atom.base) * exponent
         return slope
+    if isinstance(atom, Cases):
+        branches = tuple((conditions, value.diff(variable)) for conditions, value in atom.branches)
+        return chosen(branches, atom.otherwise.diff(variable))
+    if isinstance(atom, Tabulated):
+        inner = atom.argument.diff(variable)
+        if not inner.terms:
+            return ZERO
+        return Expression.of(Tabulated(atom.points, atom.interpolation, atom.argument, atom.order + 1)) * inner
     return ZERO
 
 
@@ -337,30 +364,12 @@ def _substituted(atom: Atom, replace: Callable[[Atom], Expression | None]) -> Ex
         return apply(atom.name, atom.argument.substitute(replace))
     if isinstance(atom, Power):
         return atom.base.substitute(replace).power(atom.exponent.substitute(replace))
+    if isinstance(atom, Cases):
+        branches = tuple(
+            (tuple((f.substitute(replace), sign) for f, sign in conditions), value.substitute(replace))
+            for conditions, value in atom.branches
+        )
+        return chosen(branches, atom.otherwise.substitute(replace))
+    if isinstance(atom, Tabulated):
+        return Expression.of(Tabulated(atom.points, atom.interpolation, atom.argument.substitute(replace), atom.order))
     return Expression.of(atom)
-
-
-def _depends_on_path(atom: Atom) -> bool:
-    if isinstance(atom, PathAtom):
-        return True
-    if isinstance(atom, Function):
-        return bool(atom.argument.paths)
-    return isinstance(atom, Power) and bool(atom.base.paths or atom.exponent.paths)
-
-
-def _atom_value(atom: Atom, find: Callable[[Atom], Any], module: Any) -> Any:
-    if atom == PI:
-        return module.pi
-    if atom == IMAGINARY:
-        return 1j
-    if isinstance(atom, Function) and atom.name not in ("mean", "charge"):
-        return getattr(module, atom.name)(atom.argument.evaluate(find, module))
-    if isinstance(atom, Power):
-        base = atom.base.evaluate(find, module)
-        value = atom.exponent.constant
-        if value == Fraction(1, 2):
-            return module.sqrt(base)
-        if value == -1:
-            return 1.0 / base
-        return base ** (float(value) if value is not None else atom.exponent.evaluate(find, module))
-    return find(atom)

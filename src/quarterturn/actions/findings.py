@@ -6,7 +6,7 @@ from collections.abc import Mapping
 
 from quarterturn.actions.boundedness import confinement, value_at
 from quarterturn.actions.circles import changed_by_a_turn
-from quarterturn.actions.expression import ZERO, Expression
+from quarterturn.actions.expression import ZERO, Expression, Symbol
 from quarterturn.actions.model import EuclideanAction, Finding
 from quarterturn.actions.printing import notation
 from quarterturn.actions.turn import velocity
@@ -19,7 +19,7 @@ def check(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> tuple[F
     the continuum may exist; "note": worth knowing.
     """
     found = [*_kinetic(euclidean, couplings), *_single_valued(euclidean, couplings)]
-    verdict = confinement(euclidean.potential, euclidean.variables, euclidean.periods, couplings)
+    verdict = confinement(without_sources(euclidean.potential), euclidean.variables, euclidean.periods, couplings)
     if verdict.verdict == "unbounded":
         found.append(Finding("fatal", "bounded", f"not bounded below: {verdict.words}"))
     elif verdict.verdict == "meaningless":
@@ -34,9 +34,16 @@ def check(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> tuple[F
     return tuple(found)
 
 
+def without_sources(expression: Expression) -> Expression:
+    """With every source at zero, where the integral has to converge already."""
+    return expression.substitute(lambda a: ZERO if isinstance(a, Symbol) and a.kind == "source" else None)
+
+
 def _kinetic(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> list[Finding]:
     import numpy as np
 
+    if euclidean.links:
+        return []
     mass = np.array([[value_at(k, couplings) for k in row] for row in euclidean.mass])
     found = []
     if not np.isfinite(mass).all():
@@ -71,7 +78,8 @@ def _kinetic(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> list
 
 def _single_valued(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> list[Finding]:
     periods = dict(zip(euclidean.variables, euclidean.periods, strict=True))
-    parts = [(euclidean.potential, "the potential"), *((a, "the term linear in the velocity") for a in euclidean.drift)]
+    potential = without_sources(euclidean.potential)
+    parts = [(potential, "the potential"), *((a, "the term linear in the velocity") for a in euclidean.drift)]
     for expression, words in parts:
         changed = changed_by_a_turn(expression, periods, couplings)
         if changed is not None:

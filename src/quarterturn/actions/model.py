@@ -122,7 +122,7 @@ class Bracket:
 
     @property
     def free(self) -> bool:
-        return any(time is None for time, _ in self.groups)
+        return any(time is None for time, _ in self.groups) or any(None in place for place in self.places)
 
 
 @dataclass(frozen=True, slots=True)

@@ -5,9 +5,21 @@ from __future__ import annotations
 import re
 from fractions import Fraction
 
-from quarterturn.actions.expression import Atom, Expression, Function, Monomial, PathAtom, Power, Symbol
+from quarterturn.actions.expression import (
+    Atom,
+    Cases,
+    Compound,
+    Expression,
+    Function,
+    Monomial,
+    PathAtom,
+    Power,
+    Symbol,
+    Tabulated,
+)
 from quarterturn.notation.symbols import LATEX_NAMES
 
+COORDINATES = ("t", "x", "y", "z")
 LATEX_FUNCTIONS = frozenset({"exp", "log", "sin", "cos", "tan", "sinh", "cosh", "tanh"})
 
 
@@ -37,6 +49,8 @@ def _monomial(monomial: Monomial, coefficient: Fraction) -> str:
 
 
 def _raised(atom: Atom, power: int) -> str:
+    if power != 1 and isinstance(atom, PathAtom) and atom.order and atom.direction:
+        return f"({_atom(atom)})^{power}"
     if isinstance(atom, Power):
         value = atom.exponent.constant
         exponent = f"({notation(atom.exponent.scaled(power))})" if value is None else _exponent(value * power)
@@ -53,10 +67,43 @@ def _atom(atom: Atom) -> str:
         case Symbol():
             return atom.name
         case PathAtom():
-            return atom.name + (f"[{atom.component}]" if atom.component else "") + "'" * atom.order
+            return _path_atom(atom)
         case Function():
             return f"{atom.name}({notation(atom.argument)})"
+        case Cases():
+            return _cases(atom)
+        case Tabulated():
+            points = ", ".join(f"[{decimal(x)}, {decimal(y)}]" for x, y in atom.points)
+            slope = "'" * atom.order
+            return f"table{slope}([{points}], {notation(atom.argument)}, {atom.interpolation})"
     raise AssertionError(atom)
+
+
+def _path_atom(atom: PathAtom) -> str:
+    text = atom.name + (f"[{atom.component}]" if atom.component else "")
+    if atom.neighbour:
+        text += f"({'+' if atom.neighbour > 0 else '-'}{COORDINATES[abs(atom.neighbour) - 1]})"
+    if atom.part:
+        text = f"{atom.part.capitalize()}({text})"
+    if not atom.order:
+        return text
+    return text + "'" * atom.order if atom.direction == 0 else f"d_{COORDINATES[atom.direction]} {text}"
+
+
+def _cases(atom: Cases) -> str:
+    pieces = [
+        f"{notation(value)} where {' and '.join(f'{notation(f)} {sign} 0' for f, sign in conditions)}"
+        for conditions, value in atom.branches
+    ]
+    return f"{{{', '.join(pieces)}, {notation(atom.otherwise)} otherwise}}"
+
+
+def decimal(value: Fraction) -> str:
+    """A rational number as notation: a decimal where it is one of double precision, else a quotient."""
+    near = float(value)
+    if Fraction(repr(near)) == value:
+        return repr(near).removesuffix(".0")
+    return f"{value.numerator}/{value.denominator}"
 
 
 # --- LaTeX ------------------------------------------------------------------------------------------------------
@@ -80,7 +127,7 @@ def _typeset_order(term: tuple[Monomial, Fraction]) -> tuple:
 
 
 def _typeset(monomial: Monomial, coefficient: Fraction) -> str:
-    ordered = sorted(monomial, key=lambda item: (isinstance(item[0], (Function, Power)), 0))
+    ordered = sorted(monomial, key=lambda item: (isinstance(item[0], Compound), 0))
     ordered = sorted(ordered, key=lambda item: isinstance(item[0], PathAtom) or _mentions_path(item[0]))
     above = [_typeset_raised(a, p) for a, p in ordered if p > 0]
     below = [_typeset_raised(a, -p) for a, p in ordered if p < 0 and not isinstance(a, Power)]
@@ -104,6 +151,8 @@ def _typeset_raised(atom: Atom, power: int) -> str:
     if isinstance(atom, Function) and atom.name in LATEX_FUNCTIONS and power > 1:
         return rf"\{atom.name}^{{{power}}}\left({latex(atom.argument)}\right)"
     text = _typeset_atom(atom)
+    if power != 1 and isinstance(atom, PathAtom) and (atom.part or atom.direction):
+        return rf"\left({text}\right)^{{{power}}}"
     return text if power == 1 else rf"{text}^{{{power}}}"
 
 
@@ -132,9 +181,12 @@ def _typeset_atom(atom: Atom) -> str:
         case Symbol():
             return "i" if atom.name == "I" and atom.kind == "constant" else typeset_name(atom.name)
         case PathAtom():
-            name = typeset_name(atom.name)
-            dotted = rf"\dot{{{name}}}" if atom.order else name
-            return dotted + (f"_{{{atom.component}}}" if atom.component else "")
+            return _typeset_path(atom)
+        case Cases():
+            return _typeset_cases(atom)
+        case Tabulated():
+            slope = "'" * atom.order
+            return rf"\mathrm{{table}}{slope}\left({latex(atom.argument)}\right)"
         case Function(name="abs"):
             return rf"\left|{latex(atom.argument)}\right|"
         case Function(name="mean"):
@@ -144,6 +196,28 @@ def _typeset_atom(atom: Atom) -> str:
         case Function():
             return rf"\{atom.name}\left({latex(atom.argument)}\right)"
     raise AssertionError(atom)
+
+
+def _typeset_path(atom: PathAtom) -> str:
+    name = typeset_name(atom.name)
+    if atom.order and atom.direction == 0:
+        name = rf"\dot{{{name}}}"
+    name += f"_{{{atom.component}}}" if atom.component else ""
+    if atom.neighbour:
+        sign = "+" if atom.neighbour > 0 else "-"
+        name += rf"(x{sign}\hat{{{COORDINATES[abs(atom.neighbour) - 1]}}})"
+    if atom.part:
+        name = rf"\mathrm{{{atom.part.capitalize()}}}\,{name}"
+    return rf"\partial_{COORDINATES[atom.direction]} {name}" if atom.order and atom.direction else name
+
+
+def _typeset_cases(atom: Cases) -> str:
+    rows = []
+    for conditions, value in atom.branches:
+        tests = [latex(f) + (" < 0" if sign == "<" else r" \le 0") for f, sign in conditions]
+        rows.append(latex(value) + " & " + r",\ ".join(tests))
+    rows.append(latex(atom.otherwise) + r" & \text{otherwise}")
+    return r"\begin{cases} " + r" \\ ".join(rows) + r" \end{cases}"
 
 
 def typeset_name(name: str) -> str:

@@ -1,31 +1,47 @@
-"""Names in scope, and the reading of a formula as a canonical expression.
+"""From syntax trees to canonical expressions: names are looked up, vectors, indices and definitions are resolved.
 
-A vector path stands for the tuple of its components; sums of vectors, multiples of them and dot products are formed
-here, and a vector where a number is needed is an error with its repair.
+Formulas are evaluated on `Expression`s only; no text and no tree ever reaches Python's evaluator.
 """
 
 from __future__ import annotations
 
-import cmath
-import difflib
 import math
 from collections.abc import Callable
 from dataclasses import dataclass, field
 
-from quarterturn.actions.expression import ONE, PI, ZERO, Expression, Function, PathAtom, Symbol, apply
+from quarterturn.actions.expression import IMAGINARY, ONE, PI, Expression, Function, PathAtom, Symbol, apply
+from quarterturn.actions.indices import IndexRules, has_index
 from quarterturn.actions.model import Path
+from quarterturn.actions.pieces import cases, table
+from quarterturn.actions.summation import along, component, gradient, neighbour, primed, sum_over, summed
+from quarterturn.actions.unknown import applied_to_nothing, closest
+from quarterturn.actions.values import (
+    Slopes,
+    Value,
+    added,
+    conjugate,
+    contracted_slopes,
+    dotted,
+    mapped,
+    scaled,
+)
 from quarterturn.errors import ActionError, QuarterturnError, Span
-from quarterturn.notation.symbols import FUNCTIONS, LATER, MEASURES
+from quarterturn.notation.symbols import FUNCTIONS, LATER
 from quarterturn.notation.tree import (
+    Array,
     Assignment,
     Average,
     Call,
+    Cases,
     Component,
+    Derivative,
     Dot,
     Factorial,
+    Gradient,
     Mean,
     Name,
     Negative,
+    Neighbour,
     Node,
     Number,
     Prime,
@@ -33,12 +49,13 @@ from quarterturn.notation.tree import (
     Quotient,
     Raised,
     Sum,
+    SumOver,
+    Text,
 )
 
 LARGEST_FACTORIAL = 20
 DEEPEST_DEFINITION = 20
-PYTHON_MODULES = frozenset({"np", "numpy", "math", "jnp", "scipy", "sp"})
-Value = Expression | tuple[Expression, ...]
+COMPLEX = ("conj", "Re", "Im")
 
 
 @dataclass
@@ -59,11 +76,34 @@ class Scope:
     depth: int = 0
     local: dict[str, Value] = field(default_factory=dict)
     known: dict[str, Value] = field(default_factory=dict)  # definitions without arguments that have been read
+    coordinates: tuple[str, ...] = ("t",)
+    signs: tuple[int, ...] = (1,)  # of the metric, time first; all 1 where the action is Euclidean
+    heights: bool = True  # whether indices must stand once up and once down
+    tensors: dict[str, tuple[int, ...]] = field(default_factory=dict)  # arrays of couplings and their shapes
+    sources: dict[str, Assignment] = field(default_factory=dict)
+    bound: dict[str, int] = field(default_factory=dict)  # indices that have a value, from 0
+    on_lattice: bool = False  # whether phi(+mu) may stand here
+    in_source: bool = False  # whether coordinates are quantities here
+    files: dict[str, str] = field(default_factory=dict)  # SHA-256 of the files of tables
 
     def error(self, message: str, span: Span, repair: str | None = None) -> ActionError:
         return ActionError(message, span=span, text=self.text, repair=repair)
 
+    @property
+    def rules(self) -> IndexRules:
+        return IndexRules(self.coordinates, self.bound, self.heights, self.error)
+
+    @property
+    def is_complex(self) -> bool:
+        return any(path.kind == "complex" for path in self.paths.values())
+
     # --- entry ----------------------------------------------------------------------------------------------
+    def formula(self, node: Node) -> Expression:
+        """A whole formula whose value is one number, without an index left over."""
+        if has_index(node):
+            self.rules.closed(node)
+        return self.number(node)
+
     def number(self, node: Node) -> Expression:
         """A formula whose value is one number."""
         value = self.value(node)
@@ -76,6 +116,12 @@ class Scope:
 
     def value(self, node: Node) -> Value:
         """A formula, number or vector. Complaints of the algebra get the place of the formula."""
+        value = self.any_value(node)
+        if isinstance(value, Slopes):
+            raise self.error("d phi, all derivatives together, stands squared or in a dot product", node.span)
+        return value
+
+    def any_value(self, node: Node) -> Value | Slopes:
         try:
             return self._value(node)
         except QuarterturnError as trouble:
@@ -85,32 +131,39 @@ class Scope:
         except ZeroDivisionError:
             raise self.error("division by zero", node.span) from None
 
-    def _value(self, node: Node) -> Value:
+    def _value(self, node: Node) -> Value | Slopes:
         match node:
             case Number():
                 return Expression.number(node.value)
             case Name():
                 return self.name(node)
             case Negative():
-                return _scaled(self.value(node.body), Expression.number(-1))
+                return scaled(self.value(node.body), Expression.number(-1))
             case Sum():
-                return self.sum(node)
-            case Product():
-                return self.product(node)
-            case Quotient():
-                return self.quotient(node)
-            case Dot():
-                return self.dot(node)
-            case Raised():
-                return self.raised(node)
+                return added([self.value(term) for term in node.terms])
+            case Product() | Quotient() | Dot() | Raised():
+                return summed(self, node)
             case Prime():
-                return self.prime(node)
+                return primed(self, node)
+            case Derivative():
+                return along(self, node)
+            case Gradient():
+                return gradient(self, node)
             case Component():
-                return self.component(node)
+                return component(self, node)
+            case Neighbour():
+                return neighbour(self, node)
+            case SumOver():
+                return sum_over(self, node)
             case Factorial():
                 return self.factorial(node)
             case Call():
                 return self.call(node)
+            case Cases():
+                return cases(self, node)
+            case Array() | Text():
+                raise self.error("a list of numbers or a text stands in a table or behind the name of a coupling",
+                                 node.span)  # fmt: skip
             case Average():
                 if self.average is None:
                     raise self.error("an expectation value belongs into 'measure', not into the action", node.span)
@@ -118,8 +171,7 @@ class Scope:
             case Mean():
                 if not self.whole_path:
                     raise self.error("'mean' stands inside an expectation value, as in <(mean q)^2>", node.span)
-                return Expression.of(Function("mean", self.number(node.body)))
-        raise self.error("this is not available yet", node.span)
+                return mapped(self.value(node.body), lambda e: Expression.of(Function("mean", e)))
 
     # --- names ----------------------------------------------------------------------------------------------
     def name(self, node: Name) -> Value:
@@ -127,7 +179,7 @@ class Scope:
         if name in self.local:
             return self.local[name]
         if name in self.paths:
-            return _atoms(self.paths[name].atoms)
+            return _of_path(self.paths[name])
         if name in self.momenta:
             return _atoms(self.momenta[name])
         if name == "pi":
@@ -140,71 +192,42 @@ class Scope:
         if name in self.couplings:
             self.used.add(name)
             return Expression.of(Symbol("coupling", name))
+        if name in self.tensors:
+            return self.whole_tensor(node)
+        if name in self.sources:
+            return self.source(name)
         if name in self.geometry:
             return Expression.of(Symbol("geometry", name))
-        raise self.undeclared(node)
+        if self.in_source and name in self.coordinates:
+            return Expression.of(Symbol("coordinate", name))
+        if name == "i" and self.is_complex:
+            return Expression.of(IMAGINARY)
+        raise closest(self, node)
 
-    def undeclared(self, node: Name) -> ActionError:
-        name = node.name
-        known = [*self.paths, *self.momenta, *self.couplings, *self.definitions, *self.geometry]
-        near = difflib.get_close_matches(name, known, n=1, cutoff=0.6)
-        if name in FUNCTIONS and self.follows(node.span).startswith(("^", "²", "³")):
-            return self.error(f"a power stands behind the whole function, as in {name}(x)^2", node.span, f"{name}(…)^2")
-        if name in FUNCTIONS:
-            return self.error(f"{name} is a function and needs its argument in brackets", node.span, f"{name}(…)")
-        if name in MEASURES:
-            return self.error(f"{name} needs its argument, as in {MEASURES[name].rsplit(': ', 1)[-1]}", node.span)
-        if name in LATER:
-            return self.error(LATER[name], node.span)
-        if name == "t":
-            return self.error("an action that depends on time explicitly is not available yet", node.span)
-        if name in ("i", "I", "j"):
-            return self.error(
-                "the action is written in real time and has no i: the turn to imaginary time adds it", node.span
-            )
-        if name == "hbar":
-            return self.error("hbar = 1 in the units of this notation: leave it out", node.span)
-        if name in self.derivatives():
-            path = self.derivatives()[name]
-            return self.error(
-                f"{name} is not declared; the derivative in time is {path}' or d_t {path}", node.span, f"{path}'"
-            )
-        if name == "d" or name.startswith("d_"):
-            path = next(iter(self.paths), "q")
-            return self.error(
-                f"a contraction such as (d {path})^2 belongs to a field; a path has one direction, time: {path}'^2",
-                node.span, f"{path}'^2",
-            )  # fmt: skip
-        applied = next((f for f in FUNCTIONS if name.startswith(f) and name[len(f) :] in known), None)
-        if applied:
-            inner = name[len(applied) :]
-            return self.error(f"{name} is not declared; a function has brackets", node.span, f"{applied}({inner})")
-        split = _split_in_known(name, known)
-        if name in PYTHON_MODULES:
-            return self.error(f"{name} is a module of Python; functions stand alone, as in cosh(q)", node.span)
-        if split:
-            return self.error(f"{name} is not declared; a product needs a space between its factors", node.span, split)
-        if near:
-            return self.error(f"{name} is not declared; there is {near[0]}", node.span, near[0])
-        if self.is_applied(node.span):
-            functions = ", ".join(FUNCTIONS)
-            return self.error(f"{name} is no function of the notation; there are {functions}", node.span)
-        return self.error(
-            f"{name} is not declared: a coupling needs a value, such as {name} = 1", node.span, f"{name} = 1"
-        )
+    def source(self, name: str) -> Expression:
+        """J at the point. Its couplings count as used."""
+        self.inside_source(name)
+        return Expression.of(Symbol("source", name))
 
-    def derivatives(self) -> dict[str, str]:
-        """Other ways to write a velocity, and of which path: dq, qdot, q_dot, dt."""
-        table = {word: path for path in self.paths for word in (f"d{path}", f"{path}dot", f"{path}_dot", f"{path}_t")}
-        return table | dict.fromkeys(("dt",), next(iter(self.paths), "q"))
+    def inside_source(self, name: str) -> Expression:
+        """The body of a source, in the coordinates."""
+        kept, self.in_source = self.in_source, True
+        try:
+            return self.formula(self.sources[name].body)
+        finally:
+            self.in_source = kept
 
-    def is_applied(self, span: Span) -> bool:
-        """Whether a bracket follows at once, as after a function."""
-        return self.follows(span).startswith("(")
+    def whole_tensor(self, node: Name) -> Value:
+        shape = self.tensors[node.name]
+        if len(shape) > 1:
+            raise self.error(f"{node.name} has {len(shape)} indices: write {node.name}[a, b]", node.span)
+        return tuple(self.entry(node.name, (i,)) for i in range(shape[0]))
 
-    def follows(self, span: Span) -> str:
-        """The rest of the line behind a place."""
-        return self.text.split("\n")[span.end_line - 1][span.end_column - 1 :]
+    def entry(self, name: str, indices: tuple[int, ...]) -> Expression:
+        """One coupling of a symmetric tensor, indices from 0."""
+        coupling = entry_name(name, sorted(i + 1 for i in indices))
+        self.used.add(coupling)
+        return Expression.of(Symbol("coupling", coupling))
 
     def inside(self, definition: Assignment, arguments: dict[str, Value], span: Span) -> Value:
         """The body of a definition, with its parameters bound."""
@@ -214,24 +237,28 @@ class Scope:
             )
         if not arguments and definition.name in self.known:
             return self.known[definition.name]
-        kept, self.local, self.depth = self.local, arguments, self.depth + 1
+        kept, self.local, self.depth = (self.local, self.bound), arguments, self.depth + 1
+        self.bound = {}
         try:
+            if has_index(definition.body):
+                self.rules.closed(definition.body)
             value = self.value(definition.body)
         finally:
-            self.local, self.depth = kept, self.depth - 1
+            (self.local, self.bound), self.depth = kept, self.depth - 1
         if not arguments:
             self.known[definition.name] = value
         return value
 
     # --- arithmetic -----------------------------------------------------------------------------------------
-    def sum(self, node: Sum) -> Value:
-        values = [self.value(term) for term in node.terms]
-        vectors = [v for v in values if isinstance(v, tuple)]
-        if not vectors:
-            return Expression.collect(t for v in values for t in v.terms)  # type: ignore[union-attr]
-        if len(vectors) < len(values) or len({len(v) for v in vectors}) > 1:
-            raise self.error("a sum of a vector and a number, or of vectors of different length", node.span)
-        return tuple(sum((v[i] for v in vectors), ZERO) for i in range(len(vectors[0])))
+    def multiplied(self, node: Product | Quotient | Dot | Raised) -> Value:
+        match node:
+            case Product():
+                return self.product(node)
+            case Quotient():
+                return self.quotient(node)
+            case Dot():
+                return self.dot(node)
+        return self.raised(node)
 
     def product(self, node: Product) -> Value:
         left, right = self.value(node.left), self.value(node.right)
@@ -239,8 +266,8 @@ class Scope:
             raise self.error("two vectors side by side: a dot product is written with a dot", node.span, _dotted(node))
         if isinstance(right, tuple):
             assert isinstance(left, Expression)
-            return _scaled(right, left)
-        return _scaled(left, right)
+            return scaled(right, left)
+        return left if right == ONE else scaled(left, right)
 
     def quotient(self, node: Quotient) -> Value:
         below = self.number(node.right)
@@ -248,59 +275,40 @@ class Scope:
             self.notes.append(
                 (f"a/b c is read as (a/b) c: what follows {node.right.name} stands above the line", node.span)
             )
-        return _scaled(self.value(node.left), below.inverse())
+        return scaled(self.value(node.left), below.inverse())
 
     def dot(self, node: Dot) -> Expression:
-        left, right = self.value(node.left), self.value(node.right)
-        if isinstance(left, tuple) and isinstance(right, tuple):
-            if len(left) != len(right):
-                raise self.error(f"a dot product of {len(left)} with {len(right)} components", node.span)
-            return sum((a * b for a, b in zip(left, right, strict=True)), ZERO)
-        if isinstance(left, tuple) or isinstance(right, tuple):
-            raise self.error("a dot product needs a vector on both sides", node.span)
-        return left * right
+        left, right = self.any_value(node.left), self.any_value(node.right)
+        if isinstance(left, Slopes) and isinstance(right, Slopes):
+            return contracted_slopes(left, right, self.signs)
+        if isinstance(left, Slopes) or isinstance(right, Slopes):
+            raise self.error("d phi is dotted with another d chi, or squared", node.span)
+        return dotted(left, right)
 
     def raised(self, node: Raised) -> Expression:
-        base, exponent = self.value(node.base), self.number(node.exponent)
-        if isinstance(base, tuple):
-            if exponent.constant == 2:
-                return sum((c * c for c in base), ZERO)
-            raise self.error("only the square of a vector has a meaning", node.span, _dotted(node))
+        exponent = self.number(node.exponent)
         if exponent.paths:
             raise self.error("a path in an exponent: write exp(…)", node.span)
-        return base.power(exponent)
+        power = exponent.constant
+        even = power is not None and power.denominator == 1 and power > 0 and power % 2 == 0
+        if even and isinstance(node.base, Call) and node.base.name == "abs" and len(node.base.arguments) == 1:
+            inner = self.any_value(node.base.arguments[0])
+            return self.square(conjugated(inner), inner) ** (int(power or 0) // 2)
+        base = self.any_value(node.base)
+        if isinstance(base, Expression):
+            return base.power(exponent)
+        if power == 2:
+            return self.square(base, base)
+        what = "vector" if isinstance(base, tuple) else "gradient"
+        raise self.error(f"only the square of a {what} has a meaning", node.span, _dotted(node))
 
-    def prime(self, node: Prime) -> Value:
-        body = self.value(node.base)
-        values = body if isinstance(body, tuple) else (body,)
-        turned = []
-        for value in values:
-            atoms = [a for m, c in value.terms for a, p in m]
-            if (
-                len(value.terms) != 1
-                or len(atoms) != 1
-                or not isinstance(atoms[0], PathAtom)
-                or value != Expression.of(atoms[0])
-            ):
-                raise self.error("a prime is the time derivative of a path, as in q'", node.span)
-            atom = atoms[0]
-            if atom.order >= 1:
-                raise self.error(
-                    "second time derivatives in the action are not available: integrate by parts", node.span
-                )
-            turned.append(Expression.of(atom.derivative()))
-        return tuple(turned) if isinstance(body, tuple) else turned[0]
+    def square(self, left: Value | Slopes, right: Value | Slopes) -> Expression:
+        if isinstance(left, Slopes) and isinstance(right, Slopes):
+            return contracted_slopes(left, right, self.signs)
+        assert not isinstance(left, Slopes) and not isinstance(right, Slopes)
+        return dotted(left, right)
 
-    def component(self, node: Component) -> Expression:
-        body = self.value(node.base)
-        if not isinstance(body, tuple):
-            raise self.error("only a vector path such as r[2](t) has components", node.span)
-        (index,) = node.indices
-        assert isinstance(index, int)
-        if not 1 <= index <= len(body):
-            raise self.error(f"component {index} of a vector of {len(body)}: components count from 1", node.span)
-        return body[index - 1]
-
+    # --- functions ------------------------------------------------------------------------------------------
     def factorial(self, node: Factorial) -> Expression:
         value = self.number(node.base).constant
         if value is None or value.denominator != 1 or not 0 <= value <= LARGEST_FACTORIAL:
@@ -311,35 +319,71 @@ class Scope:
         name = node.name
         if name in LATER:
             raise self.error(LATER[name], node.span)
-        if name in self.paths or name in self.momenta:
+        if name in self.paths or name in self.momenta or name in self.sources:
             return self.name(Name(name, node.span))
+        if name in (*COMPLEX, "abs") and len(node.arguments) == 1:
+            return self.of_complex(name, self.value(node.arguments[0]))
+        if name == "table":
+            return table(self, node)
         if name in FUNCTIONS:
             if len(node.arguments) != 1:
                 raise self.error(f"{name} takes one argument, got {len(node.arguments)}", node.span)
             return apply(name, self.number(node.arguments[0]))
         if name in self.definitions:
-            definition = self.definitions[name]
-            if len(definition.parameters) != len(node.arguments):
-                raise self.error(
-                    f"{name} takes {len(definition.parameters)} arguments, got {len(node.arguments)}", node.span
-                )
-            bound = {p: self.value(a) for p, a in zip(definition.parameters, node.arguments, strict=True)}
-            return self.inside(definition, bound, node.span)
+            return self.defined(node, self.definitions[name])
         if self.special is not None:
             return self.special(node)
-        raise self.error(f"{name}(…) is a measurement and belongs after 'measure'", node.span)
+        raise applied_to_nothing(self, node)
+
+    def defined(self, node: Call, definition: Assignment) -> Value:
+        if len(definition.parameters) != len(node.arguments):
+            raise self.error(
+                f"{node.name} takes {len(definition.parameters)} arguments, got {len(node.arguments)}", node.span
+            )
+        bound = {p: self.value(a) for p, a in zip(definition.parameters, node.arguments, strict=True)}
+        return self.inside(definition, bound, node.span)
+
+    def of_complex(self, name: str, value: Value) -> Value:
+        """conj, Re, Im and the modulus; of vectors component by component, but |r| is a length."""
+        turned = conjugate(value)
+        if name == "conj":
+            return turned
+        if name == "abs":
+            if isinstance(value, Expression) and value == turned:
+                return apply("abs", value)
+            return apply("sqrt", dotted(turned, value))
+        sign, half = (1, ONE.scaled(2).inverse()) if name == "Re" else (-1, (-Expression.of(IMAGINARY)) * HALF)
+        both = [value, scaled(turned, Expression.number(sign))]
+        return scaled(added(both), half)
+
+
+HALF = Expression.number(2).inverse()
+
+
+def conjugated(value: Value | Slopes) -> Value | Slopes:
+    if isinstance(value, Slopes):
+        return Slopes(tuple(conjugate(v) for v in value.along))
+    return conjugate(value)
+
+
+def entry_name(name: str, indices: list[int]) -> str:
+    """g_12 for g[1,2]; g_1_12 where an index has two digits."""
+    joint = "_" if any(i > 9 for i in indices) else ""
+    return f"{name}_{joint.join(map(str, indices))}"
+
+
+def _of_path(path: Path) -> Value:
+    if path.kind != "complex":
+        return _atoms(path.atoms)
+    pairs = zip(path.atoms[::2], path.atoms[1::2], strict=True)
+    values = tuple(Expression.of(re) + Expression.of(IMAGINARY) * Expression.of(im) for re, im in pairs)
+    return values if path.components else values[0]
 
 
 def _atoms(atoms: tuple[PathAtom, ...]) -> Value:
     if len(atoms) == 1 and atoms[0].component == 0:
         return Expression.of(atoms[0])
     return tuple(Expression.of(a) for a in atoms)
-
-
-def _scaled(value: Value, factor: Expression) -> Value:
-    if isinstance(value, tuple):
-        return tuple(v * factor for v in value)
-    return value * factor if factor != ONE else value
 
 
 def _dotted(node: Node) -> str | None:
@@ -351,36 +395,3 @@ def _dotted(node: Node) -> str | None:
         case Name():
             return f"{node.name}.{node.name}"
     return None
-
-
-def _split_in_known(name: str, known: list[str]) -> str | None:
-    for cut in range(1, len(name)):
-        if name[:cut] in known and name[cut:] in known:
-            return f"{name[:cut]} {name[cut:]}"
-    return None
-
-
-def constant_value(scope: Scope, node: Node, what: str) -> float:
-    """The value of a formula of numbers only. Raises ActionError naming `what`."""
-    expression = scope.number(node)
-    if expression.paths or any(s.kind != "constant" for s in expression.symbols):
-        raise scope.error(f"{what} must be a number, without paths and couplings", node.span)
-    try:
-        value = complex(expression.evaluate({}, _MATH))
-    except (ValueError, OverflowError, ZeroDivisionError):
-        value = complex("nan")
-    if value.imag or not cmath.isfinite(value):
-        raise scope.error(f"{what} is no finite real number", node.span)
-    return value.real
-
-
-class _Math:
-    """Functions of numbers for `Expression.evaluate`, without NumPy."""
-
-    pi = math.pi
-
-    def __getattr__(self, name: str) -> Callable[[float], float]:
-        return abs if name == "abs" else getattr(math, name)
-
-
-_MATH = _Math()

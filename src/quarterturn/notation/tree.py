@@ -235,9 +235,8 @@ class Boundary:
 
     kind: str
     coordinate: str = ""
-    values: tuple[
-        tuple[str, Node, Node], ...
-    ] = ()  # (field, place, value) of fixed ends; ("", place, angle) of a twist
+    values: tuple[tuple[str, Node, Node], ...] = ()  # (field, place, value) of fixed ends
+    angle: Node | None = None  # of a twist
     span: Span = field(default=NOWHERE, compare=False, repr=False)
 
 

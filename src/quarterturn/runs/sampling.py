@@ -29,7 +29,7 @@ from quarterturn.runs.layout import Layout, lay_out, observables
 from quarterturn.runs.progress import Progress, Watcher
 from quarterturn.runs.recording import sample_record
 from quarterturn.runs.run import Run
-from quarterturn.runs.settings import Goal, Settings, goal, resolve
+from quarterturn.runs.settings import Goal, Settings, goal, require_paths, resolve
 from quarterturn.sampling.driver import Chain, Request, run_chains
 from quarterturn.sampling.program import Program, default_chains, program_for
 
@@ -85,6 +85,7 @@ def sample(
     ActionError
         A finding at these couplings makes the path integral diverge.
     """
+    require_paths(action, "sampling")
     settings = resolve(action, keywords)
     wanted = goal(error, time, draws)
     lattice = discretise(action.euclidean, settings.sites, settings.spacing)

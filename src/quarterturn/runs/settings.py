@@ -74,6 +74,17 @@ def resolve(action: Action, keywords: Mapping[str, Any]) -> Settings:
     return Settings(couplings, sites, spacing, examined(action, couplings))
 
 
+def require_paths(action: Action, what: str) -> None:
+    """Raises ActionError for what the rooms of paths can't treat: fields, lattice actions, spheres, sources."""
+    euclidean = action.euclidean
+    if euclidean.dimension > 1:
+        raise ActionError(f"{what} of fields on space is not available yet; {action.name} is declared and turned only")
+    for there, words in ((euclidean.links, "a lattice action SE"), (euclidean.spheres, "unit vectors"),
+                         (euclidean.sources, "an action with a source")):  # fmt: skip
+        if there:
+            raise ActionError(f"{what} of {words} is not available yet; {action.name} is declared and turned only")
+
+
 def split(action: Action, keywords: Mapping[str, Any]) -> tuple[dict[str, float], dict[str, float]]:
     """The couplings, complete with their defaults, and the words of the lattice. Raises RequestError for others."""
     couplings = {name: coupling.default for name, coupling in action.couplings.items()}

@@ -25,7 +25,7 @@ from quarterturn.reports.report import Curve, Report, Row
 from quarterturn.reports.text import text as render_text
 from quarterturn.runs.exact import ENERGY, ExactColumn
 from quarterturn.runs.recording import base_record
-from quarterturn.runs.settings import NO_SPECTRUM, Settings, examined, resolve, split
+from quarterturn.runs.settings import NO_SPECTRUM, Settings, examined, require_paths, resolve, split
 
 Floats = NDArray[np.float64]
 CURVE_POINTS = 101
@@ -160,6 +160,7 @@ def levels(action: Action, *, count: int = 6, spacing: str | None = None, **keyw
         raise RequestError(f"count must be a whole number of levels, at least 1, got {count!r}")
     if spacing not in (None, "lattice"):
         raise RequestError(f"spacing must be 'lattice' (the action's own) or absent (the continuum), got {spacing!r}")
+    require_paths(action, "the spectrum")
     if spacing == "lattice":
         return _lattice(action, resolve(action, keywords), int(count))
     couplings, lattice = split(action, keywords)
