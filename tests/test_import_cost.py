@@ -22,4 +22,4 @@ def test_the_public_calls_are_there() -> None:
     import quarterturn as qt
 
     assert set(qt.__all__) <= set(dir(qt))
-    assert callable(qt.action) and callable(qt.sample) and callable(qt.levels) and callable(qt.verify)
+    assert all(callable(call) for call in (qt.action, qt.sample, qt.levels, qt.saddle, qt.verify))

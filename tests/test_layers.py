@@ -8,12 +8,13 @@ import pytest
 
 SOURCE = Path(__file__).parent.parent / "src" / "quarterturn"
 ORDER = [
-    "errors", "notation", "actions", "lattice", "compiled", "sampling", "imaginary", "estimates", "records", "reports",
-    "runs", "magics", "cli",
+    "errors", "notation", "actions", "lattice", "compiled", "sampling", "imaginary", "saddles", "estimates", "records",
+    "reports", "runs", "magics", "cli",
 ]  # fmt: skip
 NEVER = {
     "imaginary": {"lattice", "compiled", "sampling"},
-    "estimates": {"actions", "compiled", "sampling", "imaginary"},
+    "saddles": {"lattice", "compiled", "sampling"},
+    "estimates": {"actions", "compiled", "sampling", "imaginary", "saddles"},
 }
 
 

@@ -9,10 +9,12 @@ import { MOST_MARKERS, onAxis, picture, type AxisKind, type Panel } from './plot
 
 const WIDE_RANGE = 5; // a correlator that falls by less opens on a linear axis
 
+const IN_POTENTIAL = ['wave', 'potential', 'course'];
+
 /** Chains of one history share a figure, and wave functions stand in their potential. */
 export function panelsOf(curves: readonly Curve[]): Panel[] {
   const found: Panel[] = [];
-  const levels = curves.filter(({ style }) => style === 'wave' || style === 'potential');
+  const levels = curves.filter(({ style }) => IN_POTENTIAL.includes(style));
   for (const curve of curves) {
     if (levels.includes(curve)) {
       continue;
@@ -20,6 +22,10 @@ export function panelsOf(curves: readonly Curve[]): Panel[] {
     const last = found.at(-1);
     if (curve.style === 'history' && last?.kind === 'history' && last.curves[0].label === curve.label) {
       last.curves.push(curve);
+    } else if (curve.style === 'path' && last?.kind === 'paths') {
+      last.curves.push(curve);
+    } else if (curve.style === 'path') {
+      found.push({ kind: 'paths', curves: [curve] });
     } else {
       found.push({ kind: curve.style === 'history' ? 'history' : 'points', curves: [curve] });
     }
@@ -46,7 +52,7 @@ export function figureOf(panel: Panel, typeset: Typeset): HTMLElement {
   let kind: AxisKind = opensLogarithmic(first) ? 'logarithmic' : 'linear';
   const draw = (): void => {
     const words = wordsFor(panel, kind);
-    const name = panel.kind === 'waves' ? 'wave functions' : first.label;
+    const name = panel.kind === 'waves' ? nameOfWaves(panel) : first.label;
     canvas.replaceChildren(picture(panel, kind, `${name} against ${first.xLabel || 'its argument'}. ${words}`));
     caption.textContent = words;
     button.textContent = kind === 'linear' ? 'logarithmic axis' : 'linear axis';
@@ -66,6 +72,10 @@ export function figureOf(panel: Panel, typeset: Typeset): HTMLElement {
   return figure;
 }
 
+function nameOfWaves(panel: Panel): string {
+  return panel.curves.some(({ style }) => style === 'wave') ? 'wave functions' : 'the potential';
+}
+
 function opensLogarithmic(curve: Curve): boolean {
   const low = curve.points.reduce((least, point) => Math.min(least, point.y), Infinity);
   const high = curve.points.reduce((most, point) => Math.max(most, point.y), -Infinity);
@@ -80,7 +90,13 @@ function wordsFor(panel: Panel, kind: AxisKind): string {
     parts.push(...wordsForPoints(first, kind));
   } else if (panel.kind === 'waves') {
     const waves = panel.curves.filter(({ style }) => style === 'wave').map(({ label }) => label);
-    parts.push(`Wave functions, each on its energy: ${waves.join(', ')}. Thick line: potential.`);
+    if (waves.length > 0) {
+      parts.push(`Wave functions, each on its energy: ${waves.join(', ')}. Thick line: potential.`);
+    } else {
+      parts.push('Thick line: potential. Line upon it: the part that the path passes.');
+    }
+  } else if (panel.kind === 'paths') {
+    parts.push(`Lines: ${panel.curves.map(({ label }) => label).join(', ')}.`);
   } else if (panel.curves.length > 1) {
     parts.push(`${panel.curves.length} chains.`);
   }

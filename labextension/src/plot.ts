@@ -30,7 +30,7 @@ export type AxisKind = 'linear' | 'logarithmic';
 
 /** Curves that are drawn together. */
 export interface Panel {
-  readonly kind: 'points' | 'history' | 'waves';
+  readonly kind: 'points' | 'history' | 'paths' | 'waves';
   readonly curves: [Curve, ...Curve[]];
 }
 

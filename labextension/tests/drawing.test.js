@@ -62,6 +62,14 @@ test('chains of one history share a figure, and so do waves and their potential'
   assert.deepEqual(figures.map(figure => all(figure, 'polyline').length), [2, 3]);
 });
 
+test('paths share a figure, and the potential carries the part that they pass', () => {
+  const path = { label: 'x(t)', style: 'path', x: [0, 1], y: [1, 2] };
+  const potential = { label: 'V', style: 'potential', x: [0, 1, 2], y: [1, 0, 1] };
+  const { figures } = draw({ curves: [path, { ...path, label: 'y(t)' }, potential, { ...potential, style: 'course' }] });
+  assert.deepEqual(figures.map(figure => all(figure, 'polyline').length), [2, 2]);
+  assert.deepEqual(figures.map(figure => all(figure, 'button').length), [0, 0]);
+});
+
 test('a logarithmic axis is offered for correlators with something above zero', () => {
   const buttons = curve => all(draw({ curves: [{ x: [0, 1], ...curve }] }).figures[0], 'button').length;
   assert.equal(buttons({ y: [1, 0.5] }), 1);

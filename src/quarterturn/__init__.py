@@ -12,11 +12,13 @@ from quarterturn.errors import (
     QuarterturnError,
     RecordError,
     RequestError,
+    SaddleError,
     SpectrumError,
 )
 
 if TYPE_CHECKING:
     from quarterturn.runs.declaration import action
+    from quarterturn.runs.saddle import saddle
     from quarterturn.runs.sampling import sample
     from quarterturn.runs.spectrum import levels
     from quarterturn.runs.verification import verify
@@ -29,9 +31,11 @@ __all__ = [
     "QuarterturnError",
     "RecordError",
     "RequestError",
+    "SaddleError",
     "SpectrumError",
     "action",
     "levels",
+    "saddle",
     "sample",
     "verify",
 ]
@@ -40,6 +44,7 @@ _ROOMS = {
     "action": "quarterturn.runs.declaration",
     "sample": "quarterturn.runs.sampling",
     "levels": "quarterturn.runs.spectrum",
+    "saddle": "quarterturn.runs.saddle",
     "verify": "quarterturn.runs.verification",
 }
 

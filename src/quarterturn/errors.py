@@ -114,6 +114,12 @@ class SpectrumError(QuarterturnError):
     kind = "spectrum error"
 
 
+class SaddleError(QuarterturnError):
+    """There is no such stationary path, or it was not found."""
+
+    kind = "saddle error"
+
+
 class EstimateError(QuarterturnError):
     """The samples do not support the number asked for."""
 

@@ -31,6 +31,9 @@ def completed(person: Any, text: str) -> list[str]:
         ("%levels well ", [*COUPLINGS, *LATTICE, "count=", "spacing="]),
         ("%levels well spacing=", ["lattice"]),
         ("%levels well spacing=l", ["lattice"]),
+        ("%saddle well ", [*COUPLINGS, *LATTICE, "vacuum=", "kind="]),
+        ("%saddle well kind=", ["instanton", "bounce"]),
+        ("%saddle well kind=b", ["bounce"]),
     ],
 )
 def test_actions_then_couplings_lattice_and_options(person: Any, typed: str, offers: list[str]) -> None:

@@ -10,7 +10,7 @@ from IPython.core.interactiveshell import InteractiveShell
 from IPython.utils.capture import capture_output
 
 HEAVY = ("jax", "scipy", "matplotlib", "lark", "numpy", "nbformat", "jsonschema")
-MAGICS = ("sample", "levels", "record", "verify")
+MAGICS = ("sample", "levels", "saddle", "record", "verify")
 
 
 @pytest.fixture

@@ -54,6 +54,20 @@ def test_python_variables_are_filled_in(person: Any) -> None:
     assert person.gets("%levels well lam={strength} v2=$strength count=2").couplings == {"lam": 0.7, "v2": 0.7}
 
 
+def test_saddles_take_their_options(person: Any) -> None:
+    found = person.gets("%saddle well lam=1 as tunnel")
+    assert found.kind == "instanton" and person.shell.user_ns["tunnel"] is found
+    assert found["S"] == pytest.approx(32**0.5 / 3, rel=1e-10)
+    assert person.gets("%saddle well vacuum=-1 kind=instanton")["S"] > 0
+    assert "kind is instanton or bounce" in person.types("%saddle well kind=kink").written
+    assert "nothing decays" in person.types("%saddle well beta=4").written
+
+
+def test_a_saddle_in_a_notebook_is_verified(person: Any, notebook_of: Callable[..., Path]) -> None:
+    path = notebook_of(person.gets("%saddle well lam=1"))
+    assert person.gets(f"%verify {path}").answer == "identical"
+
+
 def test_levels_take_their_options(person: Any) -> None:
     assert len(person.gets("%levels well count=3").energies) == 3
     assert person.gets("%levels well beta=2").beta == 2

@@ -72,6 +72,19 @@ def test_waves_are_small_too(solved):
     assert picture.words == "wave functions in the potential: V(q), psi_0, psi_1"
 
 
+def test_paths_share_a_panel_on_a_linear_axis_and_the_potential_carries_its_course():
+    x = tuple(np.linspace(0, 1, 50).tolist())
+    path = Curve("x(t)", "x(t)", "t", x, tuple(np.exp(5 * np.array(x)).tolist()), style="path")
+    potential = Curve("V", "V", "q", x, x, style="potential")
+    curves = (path, replace(path, label="y(t)"), potential, replace(potential, label="the path", style="course"))
+    first, second = panels(curves)
+    assert (first.kind, len(first.curves)) == ("paths", 2)
+    assert second.words == "the path in the potential: V, the path"
+    sheet = drawn(*curves[:2])
+    assert sheet.axes[0].get_yscale() == "linear"
+    assert len({line.get_linestyle() for line in sheet.axes[0].lines}) == 2
+
+
 def test_png_is_transparent(sampled):
     pixels = imread(io.BytesIO(png(sampled)))
     assert pixels.shape[2] == 4

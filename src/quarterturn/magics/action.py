@@ -29,7 +29,7 @@ class ActionMagic(Magics):
         comment. The cell shows the action as read, the Euclidean action after t = -i tau, and what was
         found about it. Declaring a name again replaces the action; results made before stay.
 
-        NAME          what %sample and %levels know the action by
+        NAME          what %sample, %levels and %saddle know the action by
         as VARIABLE   also put the action into a Python variable, for qt.sample(VARIABLE, ...)
 
         Statements

@@ -15,9 +15,13 @@ from quarterturn.magics.levels import OPTIONS as LEVELS_OPTIONS
 from quarterturn.magics.record import VIEWS
 from quarterturn.magics.registry import session
 from quarterturn.magics.request import LATTICE_WORDS
+from quarterturn.magics.saddle import KINDS as SADDLE_KINDS
+from quarterturn.magics.saddle import OPTIONS as SADDLE_OPTIONS
 from quarterturn.magics.sample import OPTIONS as SAMPLE_OPTIONS
 
-LINE = re.compile(r"^\s*(?:[^\W\d]\w*\s*=\s*)?%(?P<magic>sample|levels|record)\s+(?P<before>.*?)(?P<typed>[^\s,=]*)$")
+LINE = re.compile(
+    r"^\s*(?:[^\W\d]\w*\s*=\s*)?%(?P<magic>sample|levels|saddle|record)\s+(?P<before>.*?)(?P<typed>[^\s,=]*)$"
+)
 
 
 @context_matcher()
@@ -38,6 +42,8 @@ def _settings(options: tuple[str, ...]) -> Callable[[str], list[str]]:
             return list(session.actions)
         if re.search(r"spacing\s*=\s*$", before) and "spacing" in options:
             return ["lattice"]
+        if re.search(r"kind\s*=\s*$", before) and "kind" in options:
+            return list(SADDLE_KINDS)
         action = session.actions.get(name)
         if action is None or before.rstrip().endswith("="):
             return []
@@ -57,5 +63,6 @@ def _results(before: str) -> list[str]:
 OFFERS: dict[str, Callable[[str], list[str]]] = {
     "sample": _settings(tuple(SAMPLE_OPTIONS)),
     "levels": _settings(tuple(LEVELS_OPTIONS)),
+    "saddle": _settings(tuple(SADDLE_OPTIONS)),
     "record": _results,
 }

@@ -8,10 +8,11 @@ from quarterturn.magics.action import ActionMagic
 from quarterturn.magics.completion import complete_line
 from quarterturn.magics.levels import LevelsMagic
 from quarterturn.magics.record import RecordMagic
+from quarterturn.magics.saddle import SaddleMagic
 from quarterturn.magics.sample import SampleMagic
 from quarterturn.magics.verify import VerifyMagic
 
-MAGICS = (ActionMagic, SampleMagic, LevelsMagic, RecordMagic, VerifyMagic)
+MAGICS = (ActionMagic, SampleMagic, LevelsMagic, SaddleMagic, RecordMagic, VerifyMagic)
 
 
 def load(ip: Any) -> None:

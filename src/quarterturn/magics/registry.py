@@ -16,6 +16,7 @@ from quarterturn.magics.words import Line, Token, Words, required_name
 if TYPE_CHECKING:
     from quarterturn.runs.declaration import DeclaredAction
     from quarterturn.runs.run import Run
+    from quarterturn.runs.saddle import Saddles
     from quarterturn.runs.spectrum import Levels
 
 FEWEST_LETTERS = 4  # of a record's name, to count as a name
@@ -26,7 +27,7 @@ SHORT_NAME = 12  # letters of a record's name that are shown
 class Kept:
     """A result, and the line that made it; empty for one that a call in Python made."""
 
-    result: Run | Levels
+    result: Run | Levels | Saddles
     line: str
 
     @property
@@ -59,7 +60,7 @@ class Registry:
             raise words.line.at(name, f"no action is called {name.text}; {self._declared()}", near)
         return self.actions[name.text]
 
-    def keep(self, result: Run | Levels, words: Words, shell: Any) -> None:
+    def keep(self, result: Run | Levels | Saddles, words: Words, shell: Any) -> None:
         """Keep a result, and give it to the variable that the line asks for."""
         self.results.insert(0, Kept(result, words.line.text))
         _assign(result, words, shell)
@@ -73,7 +74,7 @@ class Registry:
             value = shell.user_ns[name.text]
             return next((kept for kept in self.results if kept.result is value), Kept(value, ""))
         if not self.results:
-            raise RequestError("there is no result in this session yet: %sample and %levels make some")
+            raise RequestError("there is no result in this session yet: %sample, %levels and %saddle make some")
         if name is None or name.text == "last":
             return self.results[0]
         found = next((kept for kept in self.results if kept.answers_to(name.text)), None)

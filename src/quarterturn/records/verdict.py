@@ -115,7 +115,7 @@ def compare(recorded: Mapping[str, Any], rerun: Mapping[str, Any]) -> Verdict:
         reason = f"all {len(numbers)} numbers and their errors agree bit for bit"
         return Verdict("identical", reason, compared=len(numbers))
     notes = _notes(recorded, rerun, numbers)
-    judged = _judged_levels if recorded["kind"] == "levels" else _judged_sample
+    judged = _judged_sample if recorded["kind"] == "sample" else _judged_levels
     return judged([number for number in numbers if not number.undefined], unmatched, notes)
 
 

@@ -91,7 +91,7 @@ def curve_text(report: Report) -> list[str]:
     """One line for each curve that has a label: what it is and where it lies."""
     lines = []
     for curve in report.curves:
-        if curve.style in ("correlator", "gap") and curve.x:
+        if curve.style in ("correlator", "gap", "path") and curve.x:
             variable = one_line(curve.x_label)
             span = f"{len(curve.x)} points, {variable} = {curve.x[0]:.6g} to {curve.x[-1]:.6g}"
             lines.append(f"{one_line(curve.label)}: {span}")

@@ -26,11 +26,13 @@ LOG_RATIO = 5.0  # a correlator that falls by less is drawn on a linear axis
 WAVE_FILL = 0.8  # height of the largest wave function over the smallest distance of levels
 WAVE_ENDS = 0.003  # of the tallest; what is lower all the way out is not worth paper
 HEADROOM = 1.15
+IN_POTENTIAL = ("wave", "potential", "course")  # styles that share one panel
+DASHES = ("-", "--", "-.", ":")
 
 
 @dataclass(frozen=True, slots=True)
 class Panel:
-    """Curves that are drawn together. kind: correlator | gap | history | waves."""
+    """Curves that are drawn together. kind: correlator | gap | history | paths | waves."""
 
     kind: str
     curves: tuple[Curve, ...]
@@ -40,21 +42,26 @@ class Panel:
 def panels(curves: Sequence[Curve]) -> list[Panel]:
     """The panels of a report, in the order of its curves. An effective gap joins the correlator before it."""
     found: list[Panel] = []
-    waves = tuple(curve for curve in curves if curve.style in ("wave", "potential") and curve.x)
+    waves = tuple(curve for curve in curves if curve.style in IN_POTENTIAL and curve.x)
     for curve in curves:
-        if not curve.x or curve.style in ("wave", "potential"):
+        if not curve.x or curve.style in IN_POTENTIAL:
             continue
         last = found[-1] if found else None
         if curve.style == "gap" and last and last.kind == "correlator" and len(last.curves) == 1:
             found[-1] = Panel("correlator", (*last.curves, curve), f"{last.words}; below, {_words(curve)}")
         elif curve.style == "history" and last and last.kind == "history" and last.curves[0].label == curve.label:
             found[-1] = Panel("history", (*last.curves, curve), last.words)
+        elif curve.style == "path" and last and last.kind == "paths":
+            found[-1] = Panel("paths", (*last.curves, curve), f"{last.words}; {_words(curve)}")
         else:
-            kind = curve.style if curve.style in ("gap", "history") else "correlator"
+            kind = {"gap": "gap", "history": "history", "path": "paths"}.get(curve.style, "correlator")
             found.append(Panel(kind, (curve,), _words(curve)))
     if waves:
         names = ", ".join(one_line(curve.label) for curve in waves)
-        found.append(Panel("waves", waves, f"wave functions in the potential: {names}"))
+        what = (
+            "wave functions in the potential" if any(c.style == "wave" for c in waves) else "the path in the potential"
+        )
+        found.append(Panel("waves", waves, f"{what}: {names}"))
     return found
 
 
@@ -76,6 +83,8 @@ def draw(panel: Panel, figure: Figure | SubFigure, ink: str) -> None:
         _gap(axes, panel.curves[0], ink)
     elif panel.kind == "history":
         _history(axes, panel.curves)
+    elif panel.kind == "paths":
+        _paths(axes, panel.curves, ink)
     else:
         _waves(axes, panel.curves, ink)
     _dress(axes, panel.curves[0], ink)
@@ -151,6 +160,16 @@ def _history(axes: Axes, curves: Sequence[Curve]) -> None:
         _note_above(axes, f"means of {block} points")
 
 
+def _paths(axes: Axes, curves: Sequence[Curve], ink: str) -> None:
+    """Paths in time, told apart by their dashes as well as by colour."""
+    for index, curve in enumerate(curves):
+        dashes, colour = DASHES[index % len(DASHES)], SERIES[index % len(SERIES)]
+        label = one_line(curve.label)
+        axes.plot(curve.x, curve.y, color=colour, linestyle=dashes, linewidth=1.4, label=label)
+    if len(curves) > 1:
+        axes.legend(frameon=False, fontsize="small", labelcolor=ink)
+
+
 def _waves(axes: Axes, curves: Sequence[Curve], ink: str) -> None:
     """Wave functions, each on its energy and all to one scale, in the potential."""
     potential = [curve for curve in curves if curve.style == "potential"]
@@ -163,6 +182,10 @@ def _waves(axes: Axes, curves: Sequence[Curve], ink: str) -> None:
     scale = WAVE_FILL * (distance or 1.0) / tallest
     for curve in potential:
         axes.plot(curve.x, curve.y, color=ink, linewidth=1.0, zorder=3)
+    for curve in curves:
+        if curve.style == "course":
+            axes.plot(curve.x, curve.y, color=DATA, linewidth=2.6, alpha=0.8, zorder=4, solid_capstyle="butt")
+            axes.plot([curve.x[0], curve.x[-1]], [curve.y[0], curve.y[-1]], color=DATA, linestyle="", marker="o")
     for index, curve in enumerate(waves):
         base, colour = curve.baseline or 0.0, SERIES[index % len(SERIES)]
         x, y = _numbers(curve.x), base + scale * _numbers(curve.y)

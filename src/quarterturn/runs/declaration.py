@@ -12,7 +12,21 @@ from quarterturn.reports.action_card import ActionCard, action_bundle, render_te
 from quarterturn.runs.settings import LATTICE_WORDS
 
 RESERVED = frozenset(
-    {"action", "error", "time", "draws", "chains", "seed", "progress", "stop", "count", "spacing", *LATTICE_WORDS}
+    {
+        "action",
+        "error",
+        "time",
+        "draws",
+        "chains",
+        "seed",
+        "progress",
+        "stop",
+        "count",
+        "spacing",
+        "vacuum",
+        "kind",
+        *LATTICE_WORDS,
+    }
 )
 
 

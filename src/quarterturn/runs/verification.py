@@ -17,6 +17,7 @@ from quarterturn.records.canonical import short_name
 from quarterturn.records.notebook import Found, embedded
 from quarterturn.records.verdict import Verdict, altered, cannot_be_rerun, compare, severest
 from quarterturn.runs.declaration import action
+from quarterturn.runs.saddle import saddle
 from quarterturn.runs.sampling import sample
 from quarterturn.runs.spectrum import levels
 
@@ -133,6 +134,9 @@ def rerun(record: dict[str, Any]) -> dict[str, Any]:
             settings["beta"] = request["beta"]
         spacing = None if lattice is None else "lattice"
         return levels(declared, count=request["count"], spacing=spacing, **settings).record
+    if record["kind"] == "saddle":
+        asked = {key: request[key] for key in ("vacuum", "kind", "beta") if request.get(key) is not None}
+        return saddle(declared, **asked, **settings).record
     _refuse_the_endless(record, len(declared.euclidean.variables))
     run = sample(declared, draws=request["draws"], chains=request["chains"], seed=request["seed"], **settings)
     if run.stop == "interrupted":  # half a rerun proves nothing: Ctrl-C ends the verification

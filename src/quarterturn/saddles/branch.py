@@ -1,0 +1,250 @@
+"""Periodic paths by continuation in their period, from the top of a barrier.
+
+A particle near the top x_b of a barrier, where the one negative curvature is -omega_b^2, oscillates in imaginary time
+with the period 2 pi / omega_b: there the branch of bounces leaves the static path (the crossover temperature T_c =
+omega_b / 2 pi; Affleck, Phys. Rev. Lett. 46 (1981) 388). From there it is followed by Newton's method along its arc
+length, so that turning points of the period are passed (Keller, in Applications of Bifurcation Theory, 1977). Where
+the path has come to rest at a minimum for most of its period, the period is lengthened by waiting longer.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from quarterturn.errors import SaddleError
+from quarterturn.saddles.cosine import midpoints, resampled, second_derivative, tail
+from quarterturn.saddles.problem import Problem
+from quarterturn.saddles.rest import Rest
+
+Floats = NDArray[np.float64]
+NEWTON_STEPS = 30
+SETTLED = 1e-11  # relative size of the last step
+RESOLVED = 1e-11  # of the highest cosine coefficients
+MOST_POINTS = 1024
+FIRST_POINTS = 32
+MOST_STEPS = 300
+AT_REST = 1e-2  # distance from the minimum over the extent of the path, where waiting longer begins
+AMPLITUDE = 0.03  # of the first path of a branch, over a length set by the potential
+
+
+@dataclass(frozen=True, eq=False)
+class Half:
+    """x on [0, L] at midpoints, (n, N), at rest at both ends: half of a path of period 2L."""
+
+    x: Floats
+    length: float
+
+    @property
+    def points(self) -> int:
+        return int(self.x.shape[-1])
+
+
+@dataclass(eq=False)
+class Branch:
+    """The paths of one branch: (L, action of half a period) along it, its turning points in the period."""
+
+    steps: list[Half] = field(default_factory=list)
+    turning: list[float] = field(default_factory=list)  # periods
+
+
+def residual(problem: Problem, half: Half) -> Floats:
+    """x'' - V'(x), in units of time of L."""
+    return np.asarray(half.x @ second_derivative(half.points).T - half.length**2 * problem.slope(half.x))
+
+
+def jacobian(problem: Problem, half: Half) -> Floats:
+    """Of `residual` by x, (nN, nN), components slowest."""
+    n, points = half.x.shape
+    curvature = problem.curvature(half.x)  # (N, n, n)
+    matrix = np.zeros((n, points, n, points))
+    inner = np.arange(points)
+    for i in range(n):
+        matrix[i, :, i, :] = second_derivative(points)
+        for j in range(n):
+            matrix[i, inner, j, inner] -= half.length**2 * curvature[:, i, j]
+    return matrix.reshape(n * points, n * points)
+
+
+def newton(problem: Problem, half: Half) -> Half | None:
+    """The stationary path of the same period next to `half`; None where Newton's method does not settle."""
+    x, extent = half.x, _extent(half.x)
+    previous = np.inf
+    for _ in range(NEWTON_STEPS):
+        here = Half(x, half.length)
+        rest, matrix = residual(problem, here).ravel(), jacobian(problem, here)
+        if not (np.isfinite(rest).all() and np.isfinite(matrix).all()):
+            return None
+        step = np.linalg.lstsq(matrix, -rest, rcond=1e-13)[0].reshape(x.shape)
+        size = float(np.max(np.abs(step)))
+        x = x + step * min(1.0, 0.3 * extent / max(size, 1e-300))
+        if size <= SETTLED * extent or (size <= 1e-8 * extent and size > 0.3 * previous):
+            return Half(x, half.length)
+        previous = size
+    return None
+
+
+def _extent(x: Floats) -> float:
+    return float(np.max(np.ptp(x, axis=-1))) or 1.0
+
+
+def resolved(problem: Problem, half: Half) -> Half | None:
+    """The same path on as many points as it needs, sharpened on each grid; None where it is lost.
+
+    Raises SaddleError where even the largest grid does not resolve it.
+    """
+    while (last := tail(half.x)) > RESOLVED:
+        if half.points >= MOST_POINTS:
+            if last < 1e-7:
+                return half
+            raise SaddleError(
+                f"the path is not resolved by {half.points} points: the potential is too rough or its times "
+                "differ too much"
+            )
+        finer = newton(problem, Half(resampled(half.x, 2 * half.points), half.length))
+        if finer is None:
+            return None
+        half = finer
+    return half
+
+
+def follow(problem: Problem, barrier: Rest, vacuum: Rest, length: float, away: float) -> Branch:
+    """Follow the branch that leaves `barrier` until the half period is `length` or the path rests at `vacuum`.
+
+    `away` is the sign of the first step along the unstable direction. A branch that ends elsewhere is cut there.
+    """
+    omega = float(barrier.frequencies[0])
+    unit = _unit(problem, barrier, vacuum)
+    shape = np.cos(np.pi * midpoints(FIRST_POINTS))
+    x = barrier.x[:, None] + away * AMPLITUDE * unit * barrier.axes[:, :1] * shape
+    here = Half(x, np.pi / omega)
+    tangent = (away * barrier.axes[:, :1] * shape * unit / np.sqrt(FIRST_POINTS), 0.0)
+    branch, step, slope = Branch(), AMPLITUDE * unit, 0.0
+    # the first point: the amplitude is held, the period adapts
+    found = _corrected(problem, here, tangent, (here.x, here.length), unit)
+    if found is None:
+        return branch
+    here = found
+    step *= 2
+    previous = Half(np.broadcast_to(barrier.x[:, None], here.x.shape).copy(), np.pi / omega)
+    for _ in range(MOST_STEPS):
+        branch.steps.append(here)
+        change = here.length - previous.length
+        if slope * change < 0:
+            branch.turning.append(
+                2 * max(here.length, previous.length) if slope > 0 else 2 * min(here.length, previous.length)
+            )
+        slope = change or slope
+        if here.length > 3 * length or rests_at(here, vacuum):
+            break
+        direction = (here.x - previous.x, change)
+        norm = _norm(direction, unit)
+        direction = (direction[0] / norm, direction[1] / norm)
+        while True:
+            guess = Half(here.x + step * direction[0], here.length + step * direction[1])
+            found = _corrected(problem, guess, direction, (guess.x, guess.length), unit) if guess.length > 0 else None
+            if found is not None and tail(found.x) > 1e-5 and found.points < MOST_POINTS:
+                here, previous = (Half(resampled(h.x, 2 * h.points), h.length) for h in (here, previous))
+                direction = (resampled(direction[0], here.points), direction[1])
+                continue
+            if found is not None:
+                break
+            step /= 2
+            if step < 1e-6 * unit:
+                return branch
+        previous, here, step = here, found, min(1.3 * step, 0.5 * unit)
+    return branch
+
+
+def _unit(problem: Problem, barrier: Rest, vacuum: Rest) -> float:
+    """A length over which the potential changes: from the vacuum to the barrier."""
+    return float(np.linalg.norm(barrier.x - vacuum.x))
+
+
+def _norm(direction: tuple[Floats, float], unit: float) -> float:
+    x, length = direction
+    return float(np.sqrt(np.mean(np.sum(x**2, axis=0)) + (unit * length) ** 2 * 1e-2))
+
+
+def _corrected(
+    problem: Problem, guess: Half, tangent: tuple[Floats, float], base: tuple[Floats, float], unit: float
+) -> Half | None:
+    """Newton's method on the path and its period at once, on the plane through `base` normal to `tangent`."""
+    x, length = guess.x, guess.length
+    n, points = x.shape
+    weights = tangent[0].ravel() / points, tangent[1] * unit**2 * 1e-2
+    if np.all(weights[0] == 0):
+        return None
+    for _ in range(12):
+        here = Half(x, length)
+        slope = problem.slope(x)
+        rest = np.asarray(x @ second_derivative(points).T - length**2 * slope).ravel()
+        matrix = np.zeros((n * points + 1, n * points + 1))
+        matrix[:-1, :-1] = jacobian(problem, here)
+        matrix[:-1, -1] = -2 * length * slope.ravel()
+        matrix[-1, :-1], matrix[-1, -1] = weights
+        plane = weights[0] @ (x - base[0]).ravel() + weights[1] * (length - base[1])
+        if not (np.isfinite(matrix).all() and np.isfinite(rest).all()):
+            return None
+        try:
+            step = np.linalg.solve(matrix, -np.append(rest, plane))
+        except np.linalg.LinAlgError:
+            return None
+        x, length = x + step[:-1].reshape(x.shape), length + float(step[-1])
+        if not length > 0 or np.max(np.abs(step[:-1])) > unit:
+            return None
+        if np.max(np.abs(step[:-1])) <= 1e-9 * unit:
+            return Half(x, length)
+    return None
+
+
+def rests_at(half: Half, vacuum: Rest) -> bool:
+    """Whether one end of the path lies at the vacuum, closely."""
+    ends = half.x[:, [0, -1]] - vacuum.x[:, None]
+    return bool(np.min(np.linalg.norm(ends, axis=0)) < AT_REST * _extent(half.x))
+
+
+def at_period(problem: Problem, branch: Branch, length: float) -> list[Half]:
+    """All paths of the branch with half period `length`, sharpened."""
+    found: list[Half] = []
+    for before, after in zip(branch.steps, branch.steps[1:], strict=False):
+        low, high = before.length, after.length
+        if (low - length) * (high - length) > 0 or low == high:
+            continue
+        part = (length - low) / (high - low)
+        points = max(before.points, after.points)
+        mixed = (1 - part) * resampled(before.x, points) + part * resampled(after.x, points)
+        path = newton(problem, Half(mixed, length))
+        path = None if path is None else resolved(problem, path)
+        if path is not None and _extent(path.x) > 1e-6:
+            found.append(path)
+    return found
+
+
+def prolonged(problem: Problem, half: Half, vacuum: Rest, length: float) -> Half | None:
+    """The path that waits at the vacuum until its half period is `length`; None where it is lost."""
+    ends = np.linalg.norm(half.x[:, [0, -1]] - vacuum.x[:, None], axis=0)
+    x = half.x if ends[1] < ends[0] else half.x[:, ::-1]
+    points = half.points
+    while half.length < length * (1 - 1e-12):
+        longer = min(1.4 * half.length, length)
+        while points < 2 * longer / half.length * half.points / 1.6 and points < MOST_POINTS:
+            points *= 2
+        s = midpoints(points) * longer / half.length
+        omega = float(vacuum.frequencies[0])
+        last = vacuum.x[:, None] + (x[:, -1:] - vacuum.x[:, None]) * np.exp(-omega * half.length * np.maximum(s - 1, 0))
+        inside = np.where(s <= 1, resampled_at(x, np.minimum(s, 1.0)), last)
+        found = newton(problem, Half(inside, longer))
+        found = None if found is None else resolved(problem, found)
+        if found is None:
+            return None
+        half, x, points = found, found.x, found.points
+    return Half(x, half.length)
+
+
+def resampled_at(x: Floats, s: Floats) -> Floats:
+    from quarterturn.saddles.cosine import at
+
+    return at(x, s)

@@ -1,0 +1,113 @@
+"""Instantons: paths from one minimum of the potential to another of the same height.
+
+Such a path is a minimum of the action but for its free centre. It is found from a straight path, and with several
+variables also from bent ones, by Newton's method with a Levenberg-Marquardt shift that falls to zero, steps along the
+free motion in time taken out; the lowest action is kept, the others are told.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+import numpy as np
+from numpy.typing import NDArray
+
+from quarterturn.errors import SaddleError
+from quarterturn.saddles.branch import MOST_POINTS, RESOLVED, Half, jacobian, residual
+from quarterturn.saddles.cosine import at, kinetic, midpoints, resampled, tail
+from quarterturn.saddles.problem import Problem
+from quarterturn.saddles.rest import Rest
+
+Floats = NDArray[np.float64]
+WAITING = 25.0  # omega L / 2: what is left of the path at its ends is exp(-WAITING)
+FIRST_POINTS = 128
+MOST_STEPS = 120
+BENDS = (0.0, 0.5, -0.5, 1.0, -1.0)  # over the distance of the minima
+
+
+def instantons(problem: Problem, start: Rest, end: Rest) -> list[Half]:
+    """The different paths from `start` to `end` that were found, lowest action first; empty where there is none."""
+    found: list[tuple[Floats, Half]] = []
+    omega = float(min(start.frequencies[0], end.frequencies[0]))
+    extent = float(np.linalg.norm(end.x - start.x))
+    for guess in _guesses(start, end, 2 * WAITING / omega):
+        path = _relaxed(problem, guess, start, end)
+        if path is None:
+            continue
+        mark = _mark(path)
+        if all(np.max(np.abs(mark - other)[1:]) > 1e-4 * extent for other, _ in found):
+            found.append((mark, path))
+    return [path for _, path in sorted(found, key=lambda item: float(item[0][0]))]
+
+
+def _mark(path: Half) -> Floats:
+    """The action, and the mean place weighted by the speed squared: equal for paths that differ by their centre
+    only."""
+    speed = np.sum(at(path.x, midpoints(path.points), order=1) ** 2, axis=0)
+    return np.append(kinetic(path.x, path.length), path.x @ speed / np.sum(speed))
+
+
+def _guesses(start: Rest, end: Rest, length: float) -> Iterator[Half]:
+    s = midpoints(FIRST_POINTS)
+    omega = float(max(start.frequencies[0], end.frequencies[0]))
+    step = (1 + np.tanh(omega * length * (s - 0.5) / 2)) / 2
+    across = end.x - start.x
+    straight = start.x[:, None] + across[:, None] * step
+    yield Half(straight, length)
+    normals = np.linalg.svd(across[None])[2][1:]
+    for normal in normals:
+        for bend in BENDS[1:]:
+            bump = 4 * step * (1 - step) * bend * np.linalg.norm(across)
+            yield Half(straight + normal[:, None] * bump, length)
+
+
+def _relaxed(problem: Problem, half: Half, start: Rest, end: Rest) -> Half | None:
+    path = _downhill(problem, half)
+    while path is not None and (last := tail(path.x)) > RESOLVED:
+        if path.points >= MOST_POINTS:
+            if last < 1e-7:
+                break
+            raise SaddleError(f"the path from minimum to minimum is not resolved by {path.points} points")
+        path = _downhill(problem, Half(resampled(path.x, 2 * path.points), path.length))
+    if path is None:
+        return None
+    ends = at(path.x, np.array([0.0, 1.0]))
+    miss = max(np.linalg.norm(ends[:, 0] - start.x), np.linalg.norm(ends[:, 1] - end.x))
+    return path if miss < 1e-3 * np.linalg.norm(end.x - start.x) else None
+
+
+def _action(problem: Problem, half: Half, floor: float) -> float:
+    return kinetic(half.x, half.length) / 2 + half.length * float(np.mean(problem.value(half.x) - floor))
+
+
+def _downhill(problem: Problem, half: Half) -> Half | None:
+    """Newton's method on the action, shifted until each step lowers it; None where it does not settle."""
+    x, shift, extent = half.x, 1e-3, float(np.max(np.ptp(half.x, axis=-1)))
+    floor = float(np.min(problem.value(at(half.x, np.array([0.0, 1.0])))))
+    value = _action(problem, half, floor)
+    unit = half.length**2
+    previous = np.inf
+    for _ in range(MOST_STEPS):
+        here = Half(x, half.length)
+        rest, matrix = residual(problem, here).ravel() / unit, -jacobian(problem, here) / unit
+        if not (np.isfinite(rest).all() and np.isfinite(matrix).all()):
+            return None
+        # the free motion: x' by the series
+        free = at(x, midpoints(here.points), order=1).ravel()
+        free = free / np.linalg.norm(free)
+        matrix = matrix + np.outer(free, free) * np.trace(matrix) / len(free)
+        matrix[np.diag_indices(len(free))] += shift
+        rest = rest - free * (free @ rest)
+        step = np.linalg.solve(matrix, rest).reshape(x.shape)
+        size = float(np.max(np.abs(step)))
+        new = x + step * min(1.0, 0.3 * extent / max(size, 1e-300))
+        after = _action(problem, Half(new, half.length), floor)
+        if size <= 1e-9 * extent or (size <= 1e-6 * extent and size > 0.5 * previous and shift < 1e-12):
+            return Half(new, half.length)
+        if after <= value + 1e-12 * abs(value):
+            x, value, shift, previous = new, after, shift / 10 if shift > 1e-13 else 0.0, size
+        else:
+            shift = max(shift * 8, 1e-8)
+            if shift > 1e8:
+                return None
+    return None

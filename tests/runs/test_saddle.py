@@ -1,0 +1,242 @@
+"""`saddle` end to end: instantons, bounces, temperatures, fields, records, and what is refused."""
+
+import math
+import sys
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pytest
+
+from quarterturn.errors import ActionError, RequestError, SaddleError
+from quarterturn.records.verdict import compare
+from quarterturn.runs.declaration import DeclaredAction, action
+from quarterturn.runs.saddle import saddle
+from quarterturn.runs.spectrum import levels
+from quarterturn.runs.verification import rerun
+from quarterturn.saddles.cosine import at
+
+sys.path.insert(0, str(Path(__file__).parents[1] / "outside"))
+from values import value
+
+
+@pytest.fixture(scope="module")
+def well() -> DeclaredAction:
+    return action("q(t)\nL = 1/2 q'^2 - lam (q^2 - v2)^2\nlam = 1, v2 = 1", "well")
+
+
+@pytest.fixture(scope="module")
+def pendulum() -> DeclaredAction:
+    return action("theta(t) mod 2 pi\nL = 1/2 theta'^2 - K (1 - cos(theta))\nK = 1", "pendulum")
+
+
+@pytest.fixture(scope="module")
+def cubic() -> DeclaredAction:
+    return action("q(t)\nL = 1/2 q'^2 - 1/2 w^2 q^2 (1 - q/q0)\nw = 1, q0 = 3", "cubic")
+
+
+# --- against closed forms ---------------------------------------------------------------------------------------
+@pytest.mark.parametrize("v2", [1, 2])
+def test_the_double_well_has_its_exact_instanton(well: DeclaredAction, v2: int) -> None:
+    """Coleman, The Uses of Instantons (1979)."""
+    exact = {key: float(v) for key, v in value(f"inst-dw-lam1-v2{v2}")["value"].items()}
+    found = saddle(well, v2=v2)
+    assert found.kind == "instanton"
+    assert found["S"] == pytest.approx(exact["S0"], rel=1e-11)
+    assert found["omega"] == pytest.approx(exact["w"], rel=1e-12)
+    assert found["det'/det_0"] == pytest.approx(exact["detratio"], rel=1e-9)
+    assert found["det'/det_0, on a lattice"] == pytest.approx(exact["detratio"], rel=1e-5)
+    assert found["K exp(-S)"] == pytest.approx(exact["density"], rel=1e-8)
+    assert (found["negative modes"], found["zero modes"]) == (0, 1)
+    profile = math.sqrt(v2) * np.tanh(exact["w"] * found.t / 2)
+    assert np.abs(found.path[0]) == pytest.approx(np.abs(profile), abs=1e-8)
+
+
+@pytest.mark.parametrize("strength", [1, 4])
+def test_the_pendulum_has_its_exact_band(pendulum: DeclaredAction, strength: int) -> None:
+    """The leading width of the lowest Mathieu band, DLMF 28.8."""
+    exact = {key: float(v) for key, v in value(f"inst-cos-K{strength}")["value"].items()}
+    found = saddle(pendulum, K=strength)
+    assert found["S"] == pytest.approx(exact["S0"], rel=1e-11)
+    assert found["width of the band"] == pytest.approx(exact["lead"], rel=1e-8)
+
+
+def test_the_cubic_bounce_has_its_exact_rate(cubic: DeclaredAction) -> None:
+    """Caldeira and Leggett, Ann. Phys. 149 (1983) 374."""
+    exact = {key: float(v) for key, v in value("bounce-cubic-w1-x03")["value"].items()}
+    found = saddle(cubic)
+    assert found.kind == "bounce"
+    assert found["S"] == pytest.approx(exact["B"], rel=1e-11)
+    assert found["V_b"] == pytest.approx(exact["Vb"], rel=1e-12)
+    assert found["decay rate"] == pytest.approx(exact["Gamma"], rel=1e-8)
+    assert found["lambda_-"] == pytest.approx(-1.25, abs=1e-6)  # of -d^2 + 1 - 3 sech^2(t/2)
+    assert (found["negative modes"], found["zero modes"]) == (1, 1)
+    assert found["decay rate"] == pytest.approx(float(value("bounce-cubic-exact-q03")["value"]["lead"]), rel=1e-8)
+
+
+@pytest.mark.parametrize("g", ["0.05", "0.08"])
+def test_the_inverted_quartic_decays_to_both_sides(g: str) -> None:
+    """Bender and Wu, Phys. Rev. D 7 (1973) 1620: |Im E| = Gamma/2 = sqrt(2 / pi g) exp(-1/3g)."""
+    exact = {key: float(v) for key, v in value(f"bounce-invquartic-g{g}")["value"].items()}
+    found = saddle(action("q(t)\nL = 1/2 q'^2 - 1/2 q^2 + g q^4\ng = 0.1"), g=float(g))
+    assert found["S"] == pytest.approx(exact["SB"], rel=1e-8)
+    rate = found["decay rate"]
+    assert rate is not None
+    assert rate / 2 == pytest.approx(exact["lead"], rel=1e-8)
+
+
+# --- against what else this program knows ----------------------------------------------------------------------
+def test_the_splitting_agrees_with_levels_in_the_semiclassical_limit(well: DeclaredAction) -> None:
+    """E_1 - E_0 = 2 K exp(-S) [1 - (71/72)/S - (6299/10368)/S^2 ...]: Zinn-Justin and Jentschura, Ann. Phys. 313
+    (2004) 197, with their g = 1/(6 S); so (1 - exact/one loop) S tends to 71/72 from above, linearly in 1/S."""
+    sizes, defects = [], []
+    for lam in (0.4, 0.3, 0.2):  # at fixed w^2 = 8 lam v2 = 8
+        found = saddle(well, lam=lam, v2=1 / lam)
+        spectrum = levels(well, lam=lam, v2=1 / lam, count=2)
+        exact = float(spectrum.energies[1] - spectrum.energies[0])
+        action_, splitting = found["S"], found["E_1 - E_0"]
+        assert action_ is not None and splitting is not None
+        sizes.append(1 / action_)
+        defects.append((1 - exact / splitting) * action_)
+    line = np.polynomial.Polynomial.fit(sizes, defects, 2).convert()
+    assert line.coef[0] == pytest.approx(71 / 72, rel=0.02)
+
+
+def test_two_coupled_paths_reduce_to_one(well: DeclaredAction) -> None:
+    """A spectator with its own oscillator changes neither action nor splitting."""
+    pair = action("x(t)\ny(t)\nL = 1/2 x'^2 + 1/2 y'^2 - (x^2 - 1)^2 - 9/2 y^2")
+    one, two = saddle(well), saddle(pair)
+    assert two["S"] == pytest.approx(one["S"], rel=1e-10)
+    assert two["E_1 - E_0"] == pytest.approx(one["E_1 - E_0"], rel=1e-7)
+
+
+def test_a_hill_between_the_wells_is_passed_on_both_sides() -> None:
+    """The straight path over a high hill is no minimum; two mirrored ones are, and the splitting counts both."""
+    hill = action("x(t)\ny(t)\nL = 1/2 x'^2 + 1/2 y'^2 - (x^2 + y^2 - 1)^2 - 1/2 y^2")
+    found = saddle(hill)
+    assert np.max(np.abs(found.path[1])) > 0.3
+    assert found["negative modes"] == 0
+    assert found["E_1 - E_0"] == pytest.approx(4 * (found["K exp(-S)"] or 0), rel=1e-12)
+
+
+# --- temperatures -----------------------------------------------------------------------------------------------
+def test_above_the_crossover_the_path_rests_on_the_barrier(cubic: DeclaredAction) -> None:
+    """Affleck, Phys. Rev. Lett. 46 (1981) 388; T_c = omega_b / 2 pi, here omega_b = 1."""
+    found = saddle(cubic, beta=3)
+    assert found["T_c"] == pytest.approx(1 / (2 * math.pi), rel=1e-12)
+    assert found.kind == "static"
+    expected = math.sinh(1.5) / math.sin(1.5) * math.exp(-2) / (2 * math.pi)
+    assert found["decay rate"] == pytest.approx(expected, rel=1e-12)
+    classical = saddle(cubic, beta=1e-3)["decay rate"]
+    assert classical == pytest.approx(math.exp(-1e-3 * 2 / 3) / (2 * math.pi), rel=1e-6)
+
+
+def test_below_the_crossover_bounces_are_periodic_and_tend_to_the_cold_one(cubic: DeclaredAction) -> None:
+    cold = saddle(cubic)
+    actions, rates = zip(
+        *[(f["S"], f["decay rate"]) for f in (saddle(cubic, beta=b) for b in (8, 12, 16, 200))], strict=True
+    )
+    assert list(actions) == sorted(actions)
+    assert all(a <= cold["S"] * (1 + 1e-12) for a in actions)
+    assert list(rates) == sorted(rates, reverse=True)
+    assert rates[-1] == pytest.approx(cold["decay rate"], rel=1e-9)
+    assert rates[2] == pytest.approx(cold["decay rate"], rel=1e-3)
+
+
+def test_the_slope_of_the_thermal_action_is_the_energy(cubic: DeclaredAction) -> None:
+    """dS/dbeta = E, the energy of the periodic orbit (Hamilton and Jacobi)."""
+    low, high = saddle(cubic, beta=7.999), saddle(cubic, beta=8.001)
+    middle = saddle(cubic, beta=8.0)
+    assert low["S"] is not None and high["S"] is not None
+    turning = float(at(middle.path[:, len(middle.t) // 2 :], np.zeros(1))[0, 0])
+    energy = 0.5 * turning**2 * (1 - turning / 3)
+    assert (high["S"] - low["S"]) / 0.002 == pytest.approx(energy, rel=1e-4)
+
+
+def test_next_to_the_crossover_the_rate_is_withheld(cubic: DeclaredAction) -> None:
+    found = saddle(cubic, beta=6.4)
+    assert found["decay rate"] is None
+    assert "crossover" in repr(found)
+
+
+# --- what is shown, recorded, verified -------------------------------------------------------------------------
+@pytest.mark.parametrize("keywords", [{}, {"beta": 8.0}, {"beta": 3.0}, {"beta": 6.4}])
+def test_a_record_is_made_again_bit_for_bit(cubic: DeclaredAction, keywords: dict[str, float]) -> None:
+    first = saddle(cubic, q0=4, **keywords)
+    assert compare(first.record, rerun(first.record)).answer == "identical"
+
+
+def test_a_changed_number_is_found(well: DeclaredAction) -> None:
+    found = saddle(well)
+    record = {**found.record, "results": [dict(r) for r in found.record["results"]]}
+    record["results"][0]["value"] *= 1 + 1e-6
+    verdict = compare(record, rerun(record))
+    assert verdict.answer == "different" and "S" in str(verdict)
+    record["results"][0]["value"] = found["S"] * (1 + 1e-13)
+    assert compare(record, rerun(record)).answer == "consistent"
+
+
+def test_it_shows_itself(cubic: DeclaredAction) -> None:
+    found = saddle(cubic)
+    data, metadata = found._repr_mimebundle_()
+    assert metadata["quarterturn"]["record"] == found.record
+    assert "decay rate" in data["text/plain"] and "<svg" not in data["text/html"]
+    assert r"\Gamma" in data["text/latex"]
+    assert [c.style for c in found.curves] == ["path", "potential", "course"]
+    with pytest.raises(RequestError, match="there is S, "):
+        found["nothing"]
+
+
+def test_small_actions_carry_a_warning(well: DeclaredAction) -> None:
+    assert any("not large" in w for w in saddle(well, v2=1).warnings)
+    assert not saddle(well, v2=2).warnings
+
+
+# --- what is refused --------------------------------------------------------------------------------------------
+@pytest.mark.parametrize(
+    ("body", "words"),
+    [
+        ("q(t)\nL = 1/2 q'^2 - 1/2 q^2", "no barrier .* levels"),
+        ("q(t)\nL = 1/2 q'^2 - q^4", "no curvature .* levels"),
+        ("q(t)\nL = 1/2 q'^2 + q^2", "no minimum"),
+        ("r[2](t)\nL = 1/2 r'.r' - (r.r - 1)^2", "continuous family .* sample"),
+        ("r[2](t)\nL = 1/2 r'.r' - 1/2 r.r + 1/10 (r.r)^2", "continuous family .* one path"),
+        ("r[5](t)\nL = 1/2 r'.r' - 1/2 r.r", "up to 4 paths; there are 5 .* sample"),
+        ("q(t)\nL = 1/2 q'^2 - 1/q^2 - q^2", "infinite wall"),
+        ("q(t)\nL = 1/2 q'^2 - (q^2 - 1)^2 (q - 3)^2 - 1/20 q^2", "vacuum="),
+    ],
+)
+def test_what_has_no_saddle_is_refused_with_the_reason(body: str, words: str) -> None:
+    with pytest.raises(SaddleError, match=words):
+        saddle(action(body))
+
+
+def test_a_wrong_sign_of_the_kinetic_term_is_still_an_error() -> None:
+    with pytest.raises(ActionError, match="kinetic"):
+        saddle(action("q(t)\nL = - 1/2 q'^2 - (q^2 - 1)^2"))
+
+
+@pytest.mark.parametrize(
+    ("keywords", "error", "words"),
+    [
+        ({"nothing": 1}, RequestError, "no coupling nothing"),
+        ({"a": 0.1}, RequestError, "a has no meaning"),
+        ({"beta": -1}, RequestError, "beta must be positive"),
+        ({"beta": 9}, SaddleError, "nothing decays"),
+        ({"kind": "kink"}, RequestError, "kind must be"),
+        ({"kind": "bounce"}, SaddleError, "no bounce leads out"),
+        ({"vacuum": "left"}, RequestError, "vacuum must be"),
+        ({"vacuum": (1, 2)}, RequestError, "vacuum must be one finite number"),
+    ],
+)
+def test_a_bad_request_is_told(well: DeclaredAction, keywords: dict[str, Any], error: Any, words: str) -> None:
+    with pytest.raises(error, match=words):
+        saddle(well, **keywords)
+
+
+def test_vacuum_chooses_the_minimum() -> None:
+    triple = action("q(t)\nL = 1/2 q'^2 - q^2 (q^2 - 1)^2 - eps (q - q^3/6)\neps = 0.1")
+    left = saddle(triple, vacuum=0.0)
+    right = saddle(triple, vacuum=1.0)
+    assert left.kind == right.kind == "bounce"
+    assert left["S"] != pytest.approx(right["S"], rel=1e-3)

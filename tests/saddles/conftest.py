@@ -1,0 +1,6 @@
+"""Outside values for the tests of this room."""
+
+import sys
+from pathlib import Path
+
+sys.path.insert(0, str(Path(__file__).parents[1] / "outside"))
