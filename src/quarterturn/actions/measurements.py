@@ -225,6 +225,7 @@ class MeasureScope(Scope):
             else:
                 place: Point = self.here if isinstance(point, str) else point
                 groups[place] = groups.get(place, ONE) * e
+        self.note_order(factors, whole)
         fixed = [point for point in groups if all(isinstance(p, Fraction) for p in point)]
         moving = [point for point in groups if point not in fixed]
         if len(moving) > 1:
@@ -242,6 +243,17 @@ class MeasureScope(Scope):
             groups.items(), key=lambda item: (item[0] not in moving, [p or 0 for p in item[0] if p != SUMMED])
         )
         return number * (self.bracket(tuple(ordered)) if ordered else ONE)
+
+    def note_order(self, factors: Sequence[tuple[Point | str, Expression]], whole: Average) -> None:
+        """Said once: factors stand in any order."""
+        times = [p[0] for p, _ in factors if not isinstance(p, str)]
+        ranks = [float("inf") if time is FREE else float(time) for time in times if not isinstance(time, str)]
+        if ranks != sorted(ranks, reverse=True):
+            words = (
+                "expectation values are those of time-ordered products: the order in which factors are written does "
+                "not matter"
+            )
+            self.notes.append((words, whole.span))
 
     def check_point(self, point: Point, whole: Average) -> None:
         if sum(p is FREE for p in point) > 1:

@@ -19,16 +19,14 @@ from quarterturn.magics.saddle import KINDS as SADDLE_KINDS
 from quarterturn.magics.saddle import OPTIONS as SADDLE_OPTIONS
 from quarterturn.magics.sample import OPTIONS as SAMPLE_OPTIONS
 
-LINE = re.compile(
-    r"^\s*(?:[^\W\d]\w*\s*=\s*)?%(?P<magic>sample|levels|saddle|record)\s+(?P<before>.*?)(?P<typed>[^\s,=]*)$"
-)
+LINE = re.compile(r"^\s*(?:[^\W\d]\w*\s*=\s*)?%(?P<magic>\w+)\s+(?P<before>.*?)(?P<typed>[^\s,=]*)$")
 
 
 @context_matcher()
 def complete_line(context: CompletionContext) -> SimpleMatcherResult:
     """The matcher for IPython's completer: our words alone where a line of ours is being typed."""
     line = LINE.match(context.text_until_cursor)
-    if line is None:
+    if line is None or line["magic"] not in OFFERS:
         return {"completions": [], "suppress": False}
     offers = OFFERS[line["magic"]](line["before"])
     found = [SimpleCompletion(offer, type="magic") for offer in offers if offer.startswith(line["typed"])]
@@ -65,4 +63,5 @@ OFFERS: dict[str, Callable[[str], list[str]]] = {
     "levels": _settings(tuple(LEVELS_OPTIONS)),
     "saddle": _settings(tuple(SADDLE_OPTIONS)),
     "record": _results,
+    "turn": lambda before: [] if before.strip() else list(session.actions),
 }

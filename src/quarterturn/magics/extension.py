@@ -10,9 +10,18 @@ from quarterturn.magics.levels import LevelsMagic
 from quarterturn.magics.record import RecordMagic
 from quarterturn.magics.saddle import SaddleMagic
 from quarterturn.magics.sample import SampleMagic
+from quarterturn.magics.turn import TurnMagic
 from quarterturn.magics.verify import VerifyMagic
 
-MAGICS = (ActionMagic, SampleMagic, LevelsMagic, SaddleMagic, RecordMagic, VerifyMagic)
+MAGICS = (
+    ActionMagic,
+    TurnMagic,
+    SampleMagic,
+    LevelsMagic,
+    SaddleMagic,
+    RecordMagic,
+    VerifyMagic,
+)
 
 
 def load(ip: Any) -> None:

@@ -26,6 +26,7 @@ class ActionCard:
     measurements: tuple[str, ...]
     lattice: str
     digest: str
+    metric: str = ""  # the signature in which L is read
 
 
 def render_text(card: ActionCard) -> str:
@@ -34,7 +35,15 @@ def render_text(card: ActionCard) -> str:
     parts = [
         f"action {one_line(card.name)}",
         "\n".join(body),
-        "\n".join(_columns([("lattice", card.lattice), *(("measured", label) for label in card.measurements)])),
+        "\n".join(
+            _columns(
+                [
+                    ("metric", card.metric),
+                    ("lattice", card.lattice),
+                    *(("measured", label) for label in card.measurements),
+                ]
+            )
+        ),
         "\n".join(_coupling_lines(card)),
         "\n".join(_sentence(severity, message) for severity, _, message in card.findings),
         f"digest{GAP}{card.digest[:SHORT_NAME]}" if card.digest else "",
@@ -47,6 +56,7 @@ def render_html(card: ActionCard) -> str:
     pairs = [
         ("real time", formula(card.latex, "") if card.latex else ""),
         ("imaginary time", formula(card.euclidean_latex, "") if card.euclidean_latex else ""),
+        ("metric", words(card.metric)),
         ("lattice", words(card.lattice)),
         ("measured", "<br>".join(f"<code>{words(label)}</code>" for label in card.measurements)),
         ("notation", verbatim(card.canonical) if card.canonical else ""),

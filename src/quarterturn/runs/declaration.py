@@ -6,9 +6,11 @@ from dataclasses import dataclass, fields
 from typing import Any
 
 from quarterturn.actions.declare import declare
-from quarterturn.actions.model import Action
+from quarterturn.actions.model import Action, Geometry
+from quarterturn.actions.steps import turn_steps
 from quarterturn.errors import ActionError
 from quarterturn.reports.action_card import ActionCard, action_bundle, render_text
+from quarterturn.reports.turn_steps import TurnSteps
 from quarterturn.runs.settings import LATTICE_WORDS
 
 RESERVED = frozenset(
@@ -36,8 +38,6 @@ class DeclaredAction(Action):
 
     def card(self) -> ActionCard:
         """What a person sees of a declaration, as plain data."""
-        geometry = self.geometry
-        lattice = f"{geometry.sites} sites, a = {geometry.spacing:g}, beta = {geometry.beta:g}" if geometry else "none"
         couplings = tuple(
             (name, c.default, "" if c.dimension is None else str(c.dimension)) for name, c in self.couplings.items()
         )
@@ -49,15 +49,42 @@ class DeclaredAction(Action):
             findings=tuple((f.severity, f.topic, f.message) for f in self.findings),
             couplings=couplings,
             measurements=tuple(m.label for m in self.measurements),
-            lattice=lattice,
+            lattice=_in_words(self.geometry),
+            metric=_metric_in_words(self),
             digest=self.digest,
         )
+
+    @property
+    def steps(self) -> TurnSteps:
+        """The quarter turn step by step; shows itself."""
+        return TurnSteps(self.name, tuple((s.words, s.notation, s.latex) for s in turn_steps(self)))
 
     def __repr__(self) -> str:
         return render_text(self.card())
 
     def _repr_mimebundle_(self, include: Any = None, exclude: Any = None) -> Any:
         return action_bundle(self.card())
+
+
+def _in_words(geometry: Geometry | None) -> str:
+    """The lattice as a person reads it."""
+    if geometry is None:
+        return "none"
+    edges = "" if not geometry.edges else "; " + ", ".join(edge.kind for edge in geometry.edges)
+    if geometry.vacuum is not None:
+        return f"a = {geometry.spacing:g}, beta such that exp(-beta gap) < {geometry.vacuum:g}{edges}"
+    if not geometry.space:
+        return f"{geometry.sites} sites, a = {geometry.spacing:g}, beta = {geometry.beta:g}{edges}"
+    spacings = sorted(set(geometry.spacings))
+    a = f"a = {spacings[0]:g}" if len(spacings) == 1 else f"a = {', '.join(f'{s:g}' for s in geometry.spacings)}"
+    return f"{' x '.join(map(str, geometry.extents))} sites, {a}, beta = {geometry.beta:g}{edges}"
+
+
+def _metric_in_words(action: Action) -> str:
+    if action.form != "L":
+        return ""
+    kind = "mostly minus" if action.metric.startswith("+") else "mostly plus"
+    return f"{action.metric} ({kind})"
 
 
 def action(text: str, name: str = "action") -> DeclaredAction:

@@ -70,7 +70,7 @@ def resolve(action: Action, keywords: Mapping[str, Any]) -> Settings:
     ActionError where a finding at these couplings makes the integral diverge.
     """
     couplings, lattice = split(action, keywords)
-    sites, spacing = _geometry(action, lattice)
+    sites, spacing = _geometry(action, couplings, lattice)
     return Settings(couplings, sites, spacing, examined(action, couplings))
 
 
@@ -99,6 +99,7 @@ def split(action: Action, keywords: Mapping[str, Any]) -> tuple[dict[str, float]
     return couplings, lattice
 
 
+MOST_SITES = 200_000  # that `beta = vacuum` chooses
 DIVERGES = ("fatal", "unconfined")  # on a periodic lattice
 NO_SPECTRUM = ("fatal",)  # in the continuum, where bound states may lie below a threshold
 
@@ -134,8 +135,10 @@ def _number(word: str, value: Any) -> float:
     return number
 
 
-def _geometry(action: Action, asked: Mapping[str, float]) -> tuple[int, float]:
+def _geometry(action: Action, couplings: Mapping[str, float], asked: Mapping[str, float]) -> tuple[int, float]:
     given = action.geometry
+    if given is not None and given.vacuum is not None and not set(asked) & {"beta", "sites"}:
+        return cold_enough(action, couplings, asked.get("a", given.spacing), given.vacuum)
     if len(asked) == 3:
         raise RequestError("a, beta and sites together say one thing twice: beta = sites a; give two of them")
     if given is None and len(asked) < 2:
@@ -165,6 +168,31 @@ def _geometry(action: Action, asked: Mapping[str, float]) -> tuple[int, float]:
         assert beta is not None
         spacing = beta / sites
     return int(sites), float(spacing)
+
+
+def cold_enough(action: Action, couplings: Mapping[str, float], spacing: float, tolerance: float) -> tuple[int, float]:
+    """Sites and spacing for `beta = vacuum`: the smallest lattice with exp(-beta gap) below the tolerance.
+
+    Raises RequestError where the gap of the action isn't known without sampling, or there is none.
+    """
+    from quarterturn.imaginary.binding import one_path
+    from quarterturn.imaginary.levels import levels
+
+    problem = one_path(action.euclidean, couplings)
+    if problem is None:
+        raise RequestError(
+            f"beta = vacuum needs the gap of {action.name}, which is known beforehand for one path only; give beta or "
+            "sites, and look at the size of exp(-beta gap) in the report"
+        )
+    energies = levels(problem, 2).energies
+    gap = float(energies[1] - energies[0])
+    wanted = -math.log(tolerance) / gap if gap > 0 else math.inf
+    if not wanted / spacing < MOST_SITES:
+        raise RequestError(
+            f"the gap of {action.name} is {gap:.3g} here, so that beta = vacuum would need {wanted / spacing:.3g} "
+            "sites; give beta yourself, or a larger tolerance"
+        )
+    return max(math.ceil(wanted / spacing), 3), spacing
 
 
 def goal(error: Any, time: Any, draws: Any) -> Goal:
