@@ -54,12 +54,12 @@ TEXTBOOK = {
     ),
     # quartic form with a symmetric tensor of couplings (Zinn-Justin (2002), section 11.1: cubic anisotropy)
     "tensor of couplings": (
-        "phi[2](t,x)", "1/2 (d phi)^2 - 1/2 phi.phi - g[a,b] phi[a]^2 phi[b]^2",
+        "phi[2](t,x)", "1/2 (d phi)^2 - 1/2 phi.phi - sum_a sum_b g[a,b] phi[a]^2 phi[b]^2",
         "1/2 phi'.phi' + 1/2 d_x phi . d_x phi + 1/2 phi.phi + g_11 phi[1]^4 + g_22 phi[2]^4"
         " + 2 g_12 phi[1]^2 phi[2]^2",
         "g = [[1, 0.5], [0.5, 2]]",
     ),
-    # a field with an external source (Peskin and Schroeder, eq. (9.34)): the source term is + J phi in L, - J phi in L_E
+    # an external source (Peskin and Schroeder, eq. (9.34)): + J phi in L, so - J phi in L_E
     "source": (
         "phi(t,x)", "1/2 (d phi)^2 - 1/2 phi^2 + J phi", "1/2 phi'^2 + 1/2 (d_x phi)^2 + 1/2 phi^2 - J phi",
         "j0 = 1; J(t,x) = j0 exp(-t^2 - x^2)",
@@ -111,7 +111,9 @@ def test_canonical_notation_of_a_field_theory_parses_back(name: str) -> None:
 
 def test_a_chemical_potential_becomes_the_phase() -> None:
     """S_E = int |(d_tau - mu) psi|^2 + ... (Kapusta and Gale, Finite-Temperature Field Theory (2006), section 2.4)."""
-    text = "psi(t,x) complex\nL = |psi' + i mu psi|^2 - |d_x psi|^2 - m2 |psi|^2 - lam |psi|^4\nmu = 0.5, m2 = 1, lam = 1"
+    text = (
+        "psi(t,x) complex\nL = |psi' + i mu psi|^2 - |d_x psi|^2 - m2 |psi|^2 - lam |psi|^4\nmu = 0.5, m2 = 1, lam = 1"
+    )
     euclidean = declare(text).euclidean
     assert notation(euclidean.potential).count("mu^2") == 2  # - mu^2 |psi|^2
     phase = euclidean.phase

@@ -49,6 +49,7 @@ from quarterturn.notation.tree import (
     Statement,
     Units,
 )
+from quarterturn.notation.vocabulary import Names
 
 MOST_SYMMETRIC = 6  # variables up to which all sign vectors are tried
 OTHER_NAMES_OF_L = ("S", "Lagrangian", "Le", "L_E", "S_E", "Lag", "action")
@@ -280,7 +281,7 @@ def _default_items(paths: Mapping[str, Path], dynamics: Dynamics) -> list[Measur
         else:
             texts = [f"<{path.name}>", f"<{path.name}^2>"]
         for text in texts:
-            body = read_formula(Written(text), 0, len(text), lambda name, rest: name == "cos")
+            body = read_formula(Written(text), 0, len(text), Names({path.name: () for path in paths.values()}))
             items.append(MeasureItem("", text, body, dynamics.span))
     return items
 

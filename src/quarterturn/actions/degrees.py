@@ -10,16 +10,15 @@ from quarterturn.actions.model import Path
 from quarterturn.actions.numbers import constant_value
 from quarterturn.actions.scope import Scope
 from quarterturn.errors import ActionError, Span
-from quarterturn.notation.symbols import CONSTANTS, FUNCTIONS, GEOMETRY, MEASURES
+from quarterturn.notation.symbols import COMPLEX, CONSTANTS, COORDINATES, FUNCTIONS, GEOMETRY, MEASURES, PIECES
 from quarterturn.notation.tree import Constraint, Number, PathStatement
 
 MOST_VARIABLES = 64
-COORDINATES = ("t", "x", "y", "z")
 
 
 def taken(name: str) -> bool:
     """Whether a name has a meaning of its own."""
-    return name in FUNCTIONS or name in CONSTANTS or name in MEASURES or name in GEOMETRY
+    return any(name in table for table in (FUNCTIONS, CONSTANTS, MEASURES, GEOMETRY, COMPLEX, PIECES))
 
 
 def degrees(

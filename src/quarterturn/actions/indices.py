@@ -11,6 +11,7 @@ from collections.abc import Callable, Collection, Iterator
 from dataclasses import dataclass
 
 from quarterturn.errors import ActionError, Span
+from quarterturn.notation.symbols import COORDINATES
 from quarterturn.notation.tree import (
     Array,
     Average,
@@ -49,9 +50,8 @@ class Index:
 
 @dataclass(frozen=True)
 class IndexRules:
-    """Where an index may stand: `coordinates` are no indices, `bound` ones have a value already."""
+    """Where an index may stand: coordinates are no indices, `bound` ones have a value already."""
 
-    coordinates: tuple[str, ...]
     bound: Collection[str]
     heights: bool  # whether an index of space-time must stand once up and once down
     error: Complaint
@@ -68,11 +68,11 @@ class IndexRules:
                 return self.distinct((*self.open(node.base), *own))
             case Derivative():
                 inner = self.open(node.base)
-                if node.index in self.coordinates or node.index in self.bound:
+                if node.index in COORDINATES or node.index in self.bound:
                     return inner
                 return self.distinct((Index(node.index, "direction", node.up, node.span), *inner))
             case Neighbour():
-                own_direction = node.direction not in self.coordinates and node.direction not in self.bound
+                own_direction = node.direction not in COORDINATES and node.direction not in self.bound
                 here = (Index(node.direction, "direction", False, node.span),) if own_direction else ()
                 return (*self.open(node.base), *here)
             case Negative():
@@ -95,7 +95,7 @@ class IndexRules:
         return ()
 
     def within(self, node: SumOver) -> IndexRules:
-        return IndexRules(self.coordinates, {*self.bound, node.index}, self.heights, self.error)
+        return IndexRules({*self.bound, node.index}, self.heights, self.error)
 
     def closed(self, node: Node) -> None:
         """Raises ActionError for an index that is left over."""

@@ -10,7 +10,7 @@ from quarterturn.actions.model import Bracket
 from quarterturn.actions.points import SUMMED, Point
 from quarterturn.actions.printing import latex, notation, placeholder, typeset_name
 from quarterturn.errors import NotationError
-from quarterturn.notation.statements import label_of
+from quarterturn.notation.labels import label_of
 from quarterturn.notation.tree import Average, MeasureItem
 
 ENERGY = Symbol("observable", "energy")

@@ -17,9 +17,8 @@ from quarterturn.actions.expression import (
     Symbol,
     Tabulated,
 )
-from quarterturn.notation.symbols import LATEX_NAMES
+from quarterturn.notation.symbols import COORDINATES, LATEX_NAMES
 
-COORDINATES = ("t", "x", "y", "z")
 LATEX_FUNCTIONS = frozenset({"exp", "log", "sin", "cos", "tan", "sinh", "cosh", "tanh"})
 
 

@@ -26,7 +26,7 @@ from quarterturn.actions.values import (
     scaled,
 )
 from quarterturn.errors import ActionError, QuarterturnError, Span
-from quarterturn.notation.symbols import FUNCTIONS, LATER
+from quarterturn.notation.symbols import COMPLEX, FUNCTIONS
 from quarterturn.notation.tree import (
     Array,
     Assignment,
@@ -55,7 +55,6 @@ from quarterturn.notation.tree import (
 
 LARGEST_FACTORIAL = 20
 DEEPEST_DEFINITION = 20
-COMPLEX = ("conj", "Re", "Im")
 
 
 @dataclass
@@ -91,7 +90,7 @@ class Scope:
 
     @property
     def rules(self) -> IndexRules:
-        return IndexRules(self.coordinates, self.bound, self.heights, self.error)
+        return IndexRules(self.bound, self.heights, self.error)
 
     @property
     def is_complex(self) -> bool:
@@ -317,8 +316,6 @@ class Scope:
 
     def call(self, node: Call) -> Value:
         name = node.name
-        if name in LATER:
-            raise self.error(LATER[name], node.span)
         if name in self.paths or name in self.momenta or name in self.sources:
             return self.name(Name(name, node.span))
         if name in (*COMPLEX, "abs") and len(node.arguments) == 1:

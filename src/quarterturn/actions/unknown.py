@@ -6,7 +6,7 @@ import difflib
 from typing import TYPE_CHECKING
 
 from quarterturn.errors import ActionError, Span
-from quarterturn.notation.symbols import FUNCTIONS, LATER, MEASURES
+from quarterturn.notation.symbols import COMPLEX, FUNCTIONS, MEASURES
 from quarterturn.notation.tree import Call, Name
 
 if TYPE_CHECKING:
@@ -31,12 +31,10 @@ def _special(scope: Scope, node: Name) -> ActionError | None:
     name, first = node.name, next(iter(scope.paths), "q")
     if name in FUNCTIONS and follows(scope.text, node.span).startswith(("^", "²", "³")):
         return scope.error(f"a power stands behind the whole function, as in {name}(x)^2", node.span, f"{name}(…)^2")
-    if name in FUNCTIONS:
+    if name in FUNCTIONS or name in COMPLEX:
         return scope.error(f"{name} is a function and needs its argument in brackets", node.span, f"{name}(…)")
     if name in MEASURES:
         return scope.error(f"{name} needs its argument, as in {MEASURES[name].rsplit(': ', 1)[-1]}", node.span)
-    if name in LATER:
-        return scope.error(LATER[name], node.span)
     if name in scope.coordinates or name == "t":
         words = f"{name} stands in sources only: define J({name}) = … and couple it, as in J {first}"
         return scope.error(words, node.span)

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from fractions import Fraction
 from functools import cache
 from importlib.resources import files
@@ -10,16 +9,20 @@ from typing import Any
 
 from quarterturn.errors import NotationError
 from quarterturn.notation.complaints import unexpected
-from quarterturn.notation.tokens import Lexeme, Source, lexemes
+from quarterturn.notation.tokens import Lexeme, Source, Vocabulary, lexemes
 from quarterturn.notation.tree import (
+    Array,
     Average,
     Call,
     Component,
+    Derivative,
     Dot,
     Factorial,
+    Gradient,
     Mean,
     Name,
     Negative,
+    Neighbour,
     Node,
     Number,
     Prime,
@@ -27,6 +30,8 @@ from quarterturn.notation.tree import (
     Quotient,
     Raised,
     Sum,
+    SumOver,
+    Text,
 )
 
 DEEPEST = 60  # brackets inside brackets
@@ -52,11 +57,11 @@ def _parser() -> Any:
     return Lark(grammar, parser="lalr", lexer=Feed, start="formula", propagate_positions=True)
 
 
-def read_formula(source: Source, start: int, end: int, is_call: Callable[[str, str], bool]) -> Node:
+def read_formula(source: Source, start: int, end: int, names: Vocabulary) -> Node:
     """The syntax tree of source.text[start:end]. Raises NotationError with the place."""
     from lark.exceptions import UnexpectedInput
 
-    tokens = lexemes(source, start, end, is_call)
+    tokens = lexemes(source, start, end, names)
     if not tokens:
         raise source.error("a formula is missing here", max(start, end - 1), end)
     _check_size(source, tokens)
@@ -67,7 +72,7 @@ def read_formula(source: Source, start: int, end: int, is_call: Callable[[str, s
         kind = getattr(getattr(trouble, "token", None), "type", "$END")
         place = len(tokens) if kind == "$END" or position is None else position
         raise unexpected(source, tokens, place) from None
-    return _Builder(source, tokens).node(tree)
+    return _Builder(source, tokens, names).node(tree)
 
 
 def _check_size(source: Source, tokens: list[Lexeme]) -> None:
@@ -83,8 +88,8 @@ def _check_size(source: Source, tokens: list[Lexeme]) -> None:
 class _Builder:
     """The parser's tree as nodes with places."""
 
-    def __init__(self, source: Source, tokens: list[Lexeme]) -> None:
-        self.source, self.tokens = source, tokens
+    def __init__(self, source: Source, tokens: list[Lexeme], names: Vocabulary) -> None:
+        self.source, self.tokens, self.names = source, tokens, names
 
     def node(self, tree: Any) -> Node:
         """Iterative where chains are long (sums, products), recursive in depth, which is bounded."""
@@ -114,6 +119,8 @@ class _Builder:
             return Quotient(left, right, False, span)
         if kind == "dot":
             return Dot(left, right, span)
+        if kind == "times_sum_over":
+            right = SumOver(str(tree.children[1]), right, self.span_between(tree.children[1], tree))
         if kind == "juxtaposed" and isinstance(left, Quotient):
             left = Quotient(left.left, left.right, True, left.span)
         return Product(left, right, span)
@@ -143,13 +150,34 @@ class _Builder:
             case "root":
                 return Call("sqrt", (self.node(children[1]),), span)
             case "derivative":
-                return Prime(self.node(children[1]), span)
+                index = str(children[0])
+                return Derivative(self.node(children[1]), index[1:], index[0] == "^", span)
+            case "gradient":
+                return Gradient(self.node(children[1]), span)
+            case "conjugate":
+                return Call("conj", (self.node(children[0]),), span)
+            case "neighbour":
+                step = str(children[1])
+                return Neighbour(self.node(children[0]), step[1:], 1 if step[0] == "+" else -1, span)
+            case "sum_over":
+                return SumOver(str(children[0]), self.node(children[1]), span)
+            case "functional":
+                return Call("log Z", (Name(str(children[2]), span),), span)
+            case "array":
+                return Array(tuple(self.node(c) for c in children[1].children if hasattr(c, "data")), span)
+            case "text":
+                return Text(str(children[0]), span)
+            case "cases":
+                from quarterturn.notation.cases import read_cases
+
+                lexeme = self.tokens[children[0].start_pos]
+                return read_cases(self.source, lexeme.start, lexeme.end, self.names)
             case "prime":
                 return Prime(self.node(children[0]), span)
             case "factorial":
                 return Factorial(self.node(children[0]), span)
             case "component":
-                return Component(self.node(children[0]), (self.whole(children[2], span),), span)
+                return Component(self.node(children[0]), self.indices(children[2], span), span)
             case "at_time":
                 return self.at_time(children, span)
             case "power":
@@ -172,6 +200,14 @@ class _Builder:
             raise self.source.error("an exponent beyond 300", lexeme.start, lexeme.end)
         return Fraction(text)
 
+    def indices(self, tree: Any, span: Any) -> tuple[int | str, ...]:
+        tokens = [c for c in tree.children if c.type != "COMMA"]
+        return tuple(self.whole(c, span) if c.type == "NUMBER" else str(c) for c in tokens)
+
+    def span_between(self, first: Any, tree: Any) -> Any:
+        """From a token to the end of a tree."""
+        return self.source.span(self.tokens[first.start_pos].start, self.tokens[tree.meta.end_pos - 1].end)
+
     def whole(self, token: Any, span: Any) -> int:
         value = self.number(token)
         if value.denominator != 1:
@@ -179,4 +215,4 @@ class _Builder:
         return int(value)
 
 
-LEFT_CHAINS = {"add", "subtract", "juxtaposed", "times", "over", "dot"}
+LEFT_CHAINS = {"add", "subtract", "juxtaposed", "times", "over", "dot", "times_sum_over"}

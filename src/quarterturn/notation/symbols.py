@@ -20,15 +20,21 @@ MEASURES: dict[str, str] = {
     "gap": "energy of the lowest state that the operators create: gap(q), gap(q, q^3)",
     "binder": "cumulant 1 - <(mean q)^4>/(3 <(mean q)^2>^2): binder(q)",
     "charge": "winding number of an angle: <charge(theta)^2>",
+    "xi2": "second-moment correlation length of a field on space: xi2(phi)",
 }
 
-LATER: dict[str, str] = {
-    "xi2": "the correlation length is a measurement of fields on space, which are not available yet",
-    "sum_x": "a sum over space needs a field on space, which is not available yet",
-    "sum_mu": "a sum over directions needs a field on space, which is not available yet",
+COMPLEX: dict[str, str] = {
+    "conj": "complex conjugate, also psi^*",
+    "Re": "real part",
+    "Im": "imaginary part",
+}
+
+PIECES: dict[str, str] = {
+    "table": 'a function given by points: table([[-1, 0.5], [0, 0], [1, 0.5]], q, cubic), table("well.csv", q, linear)',
 }
 
 CONSTANTS = ("pi",)
+COORDINATES = ("t", "x", "y", "z")
 GEOMETRY = ("vol", "beta")  # in measurements
 WORDS = ("L", "LE", "H", "SE", "lattice", "measure", "metric", "units", "mod", "mean", "energy", "t", "d_t", "d")
 
