@@ -74,7 +74,7 @@ class Registry:
             value = shell.user_ns[name.text]
             return next((kept for kept in self.results if kept.result is value), Kept(value, ""))
         if not self.results:
-            raise RequestError("there is no result in this session yet: %sample, %levels and %saddle make some")
+            raise RequestError("there is no result in this session yet: run %sample or %levels first")
         if name is None or name.text == "last":
             return self.results[0]
         found = next((kept for kept in self.results if kept.answers_to(name.text)), None)
