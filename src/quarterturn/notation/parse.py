@@ -187,11 +187,18 @@ class _Builder:
         raise AssertionError(kind)
 
     def at_time(self, children: Any, span: Any) -> Node:
-        """r[2](t): the component of the path at a time."""
-        part = self.node(children[0])
-        assert isinstance(part, Component) and isinstance(part.base, Name)
+        """r[2](t), psi^*(t): the component, or the conjugate, of the path at a time."""
         inside = tuple(self.node(c) for c in children[2].children if hasattr(c, "data"))
-        return Component(Call(part.base.name, inside, part.span), part.indices, span)
+        return self.placed(self.node(children[0]), inside, span)
+
+    def placed(self, part: Node, inside: tuple[Node, ...], span: Any) -> Node:
+        match part:
+            case Component(base=base, indices=indices):
+                return Component(self.placed(base, inside, span), indices, span)
+            case Call(name="conj", arguments=(base,)):
+                return Call("conj", (self.placed(base, inside, span),), span)
+        assert isinstance(part, Name)
+        return Call(part.name, inside, part.span)
 
     def number(self, token: Any) -> Fraction:
         text = str(token)

@@ -166,7 +166,10 @@ def _bracket(source: Source, found: list[Lexeme], position: int, end: int, names
     if path and names.is_call(path, rest):
         words = f"a velocity has no bracket: {path}' is taken at the time t; write {path}'"
         raise source.error(words, position, source.text.find(")", position, end) + 1 or end, f"{path}'")
-    if owner and found[-1].kind == "SQUARE_CLOSE" and names.is_call(owner, rest):
+    conjugated = _owner(found[:-1]) if found and found[-1].kind == "CONJUGATE" else ""
+    if (owner and found[-1].kind == "SQUARE_CLOSE" and names.is_call(owner, rest)) or (
+        conjugated and names.is_call(conjugated, rest)
+    ):
         return "AT_OPEN", "(", position + 1
     return "OPEN", "(", position + 1
 
