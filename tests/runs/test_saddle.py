@@ -2,6 +2,8 @@
 
 import math
 import sys
+from dataclasses import replace
+from fractions import Fraction
 from pathlib import Path
 from typing import Any
 
@@ -15,6 +17,7 @@ from quarterturn.runs.saddle import saddle
 from quarterturn.runs.spectrum import levels
 from quarterturn.runs.verification import rerun
 from quarterturn.saddles.cosine import at
+from quarterturn.saddles.radial import radial_bounce
 
 sys.path.insert(0, str(Path(__file__).parents[1] / "outside"))
 from values import value
@@ -48,6 +51,8 @@ def test_the_double_well_has_its_exact_instanton(well: DeclaredAction, v2: int) 
     assert found["det'/det_0, on a lattice"] == pytest.approx(exact["detratio"], rel=1e-5)
     assert found["K exp(-S)"] == pytest.approx(exact["density"], rel=1e-8)
     assert (found["negative modes"], found["zero modes"]) == (0, 1)
+    spread = 2 / exact["w"] * math.sqrt((math.pi**2 - 6) / 12)  # of t, weighted with sech^4(w t / 2)
+    assert found["duration"] == pytest.approx(spread, rel=1e-9)
     profile = math.sqrt(v2) * np.tanh(exact["w"] * found.t / 2)
     assert np.abs(found.path[0]) == pytest.approx(np.abs(profile), abs=1e-8)
 
@@ -153,10 +158,57 @@ def test_the_slope_of_the_thermal_action_is_the_energy(cubic: DeclaredAction) ->
     assert (high["S"] - low["S"]) / 0.002 == pytest.approx(energy, rel=1e-4)
 
 
+def test_the_thermal_rate_agrees_with_the_period_of_the_orbit(cubic: DeclaredAction) -> None:
+    """Gamma = 2 sinh(omega beta/2) sqrt(|dE/dbeta| / 2 pi) exp(-S): the determinant of one path from the slope of its
+    period alone (Dashen, Hasslacher and Neveu, Phys. Rev. D 10 (1974) 4114; Affleck 1981), here by differences of S."""
+    h, beta = 0.02, 8.0
+    low, middle, high = (saddle(cubic, beta=beta + k * h) for k in (-1, 0, 1))
+    curvature = (high["S"] - 2 * middle["S"] + low["S"]) / h**2
+    expected = 2 * math.sinh(beta / 2) * math.sqrt(abs(curvature) / (2 * math.pi)) * math.exp(-middle["S"])
+    assert middle["decay rate"] == pytest.approx(expected, rel=1e-4)
+
+
 def test_next_to_the_crossover_the_rate_is_withheld(cubic: DeclaredAction) -> None:
     found = saddle(cubic, beta=6.4)
     assert found["decay rate"] is None
     assert "crossover" in repr(found)
+
+
+# --- theta terms, units of length and mass ---------------------------------------------------------------------
+def test_two_ways_around_a_circle_interfere(pendulum: DeclaredAction) -> None:
+    """The levels of a rotor with two wells and a theta term, from this program's own spectrum."""
+    rotor = action(
+        "theta(t) mod 2 pi\nL = 1/2 theta'^2 - K (1 - cos(2 theta)) + vartheta/(2 pi) theta'\nK = 3, vartheta = 0"
+    )
+    for vartheta in (0.0, 2.0):
+        found = saddle(rotor, vartheta=vartheta)
+        energies = levels(rotor, vartheta=vartheta, count=2).energies
+        ratio = float(energies[1] - energies[0]) / (found["E_1 - E_0"] or 0)
+        assert ratio == pytest.approx(1 - 7 / 8 / (found["S"] or 1), abs=0.02)  # DLMF 28.8: 1 - 7/(16 h) of each width
+
+
+@pytest.mark.parametrize("scale", [1e-5, 1e5])
+@pytest.mark.parametrize("height", [1e-6, 1e6])
+def test_no_scale_is_built_in(cubic: DeclaredAction, scale: float, height: float) -> None:
+    """q0 -> s q0, V -> h V: with w^2 = h/s^2 the action is sqrt(h) s times that of h = s = 1."""
+    w = math.sqrt(height) / scale
+    assert saddle(cubic, q0=3 * scale, w=w)["S"] == pytest.approx(4.8 * math.sqrt(height) * scale, rel=1e-9)
+
+
+# --- fields -----------------------------------------------------------------------------------------------------
+def test_a_field_decays_by_a_bubble(cubic: DeclaredAction) -> None:
+    """An action with three coordinates and two speeds: S scales with the product of the roots of the coefficients."""
+    body = action("phi(t)\nLE = 2 phi'^2 + 1/2 phi^2 - 1/6 phi^3")
+    slower = ((body.euclidean.mass[0][0].scaled(Fraction(1, 4)),),)
+    turned = replace(body.euclidean, coordinates=("t", "x", "y"), stiffness=(slower, slower))
+    found = saddle(replace(body, euclidean=turned))
+    unit = radial_bounce(body.euclidean.potential, body.euclidean.variables[0], {}, 3)
+    assert found.kind == "field bounce"
+    assert found["S"] == pytest.approx(2 * unit.action, rel=1e-9)
+    assert found["radius"] == pytest.approx(2 * unit.radius, rel=1e-9)
+    assert [c.style for c in found.curves] == ["path", "potential", "course"]
+    with pytest.raises(RequestError, match="beta is for paths"):
+        saddle(found.action, beta=3)
 
 
 # --- what is shown, recorded, verified -------------------------------------------------------------------------

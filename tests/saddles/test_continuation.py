@@ -31,7 +31,7 @@ def test_bounces_begin_at_the_crossover() -> None:
     land = land_of("+ 1/2 q^2 - q^3")
     vacuum = chosen(land, None)
     (barrier,) = land.barriers(vacuum)
-    branch = follow(land.problem, barrier, vacuum, 20.0, 1.0)
+    branch = follow(land.problem, barrier, vacuum, 20.0)
     assert 2 * branch.steps[0].length == pytest.approx(2 * math.pi / barrier.frequencies[0], rel=1e-2)
     assert not branch.turning
     assert all(np.max(np.abs(residual(land.problem, h))) < 1e-6 * h.length**2 for h in branch.steps)
@@ -43,7 +43,7 @@ def test_a_stiffening_barrier_has_a_turning_point_and_two_bounces_of_one_period(
     land = land_of("- 1/2 q^2 - q^4 + q^6 + 1/50 q")
     vacuum = chosen(land, None)
     (barrier,) = land.barriers(vacuum)
-    found = follow(land.problem, barrier, vacuum, 10.0, 1.0)
+    found = follow(land.problem, barrier, vacuum, 10.0)
     (turn,) = found.turning
     critical = 2 * math.pi / float(barrier.frequencies[0])
     assert turn < 0.9 * critical

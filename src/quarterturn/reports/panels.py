@@ -90,6 +90,8 @@ def draw(panel: Panel, figure: Figure | SubFigure, ink: str) -> None:
     _dress(axes, panel.curves[0], ink)
     if panel.kind == "waves":
         axes.set_ylabel("energy")
+    elif panel.kind == "paths" and len(panel.curves) > 1:
+        axes.set_ylabel("")  # the legend names them
 
 
 def _words(curve: Curve) -> str:

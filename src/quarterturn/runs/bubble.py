@@ -36,14 +36,15 @@ def field_saddle(action: Action, couplings: Mapping[str, float], start: Sequence
     volume, unit = math.prod(scales), scales[0]
     name = atom.name
     rows = [
-        Row("S", "S", volume * found.action, volume * found.action_error),
-        Row("radius", "R", unit * found.radius, 1e-9 * unit * found.radius),
-        Row("thickness", r"\Delta R", unit * found.thickness, 1e-6 * unit * found.thickness),
-        Row(f"{name}(0)", rf"{name}(0)", found.centre, 1e-8 * abs(found.centre)),
-        Row("false vacuum", rf"{name}_f", found.false_vacuum),
+        Row("S", "S", volume * found.action, volume * found.errors["action"]),
+        Row("radius", "R", unit * found.radius, unit * found.errors["radius"]),
+        Row(f"{name}(0)", f"{name}(0)", found.centre, found.errors.get("centre")),
+        Row("false vacuum", f"{name}_f", found.false_vacuum),
     ]
+    if found.thickness is not None:
+        rows.append(Row("thickness", r"\Delta R", unit * found.thickness, unit * found.errors["thickness"]))
     if found.negative_mode is not None:
-        rows.append(Row("lambda_-", r"\lambda_-", found.negative_mode, 1e-4 * abs(found.negative_mode)))
+        rows.append(Row("lambda_-", r"\lambda_-", found.negative_mode, found.errors["negative_mode"]))
     if found.thin_wall is not None and found.tension is not None:
         rows += [
             Row("tension", r"\sigma", found.tension),
@@ -85,7 +86,7 @@ def _curves(
     action: Action, atom: PathAtom, couplings: Mapping[str, float], found: RadialBounce, unit: float
 ) -> list[Curve]:
     name = atom.name
-    r = np.linspace(0.0, float(min(found.r[-1], found.radius + 8 * found.thickness)), DRAWN)
+    r = np.linspace(0.0, float(min(found.r[-1], found.radius + 8 * (found.thickness or found.radius))), DRAWN)
     phi = np.interp(r, found.r, found.phi)
     low, high = float(np.min(found.phi)), float(np.max(found.phi))
     problem = field_problem(action.euclidean.potential, atom, couplings)

@@ -10,7 +10,6 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from quarterturn.actions.boundedness import value_at
 from quarterturn.actions.expression import Expression
 from quarterturn.actions.findings import check
 from quarterturn.actions.model import Action
@@ -191,16 +190,22 @@ def _paths(
                 "leave beta out "
                 "for the splitting, or use levels with beta"
             )
-        return _instanton(action, land, tunnelling(land, vacuum), couplings)
+        return _instanton(action, land, tunnelling(land, vacuum))
     return _bounce(action, problem, escape(land, vacuum, beta))
 
 
-def _instanton(
-    action: Action, land: Landscape, found: Sequence[Saddle], couplings: Mapping[str, float]
-) -> dict[str, Any]:
+def _phase_of_a_turn(action: Action, problem: Problem) -> float:
+    """The integral of A once around the circle of a single angle; zero elsewhere."""
+    period, drift = problem.periods[0], action.euclidean.drift[0]
+    if period is None or problem.size > 1:
+        return 0.0
+    angles = np.arange(DRAWN) * period / DRAWN
+    return period * float(np.mean(drift.evaluate({**problem.scalars, problem.variables[0]: angles}, np)))
+
+
+def _instanton(action: Action, land: Landscape, found: Sequence[Saddle]) -> dict[str, Any]:
     first = found[0]
-    drift, period = action.euclidean.drift[0], land.problem.periods[0]
-    theta = 0.0 if period is None else period * value_at(drift, couplings)
+    theta = _phase_of_a_turn(action, land.problem)
     rates = tunnelling_rates(land, equivalents(found), theta)
     rows = [*_rows(first), *(_rate_row(r.label, r.latex, r.value, r.error, r.why) for r in rates)]
     assert first.end is not None
@@ -317,15 +322,17 @@ def _curves(action: Action, problem: Problem, first: Saddle) -> list[Curve]:
     names = _names(action)
     curves = [Curve(f"{name}(t)", f"{name}(t)", "t", _plain(t), _plain(q), style="path")
               for name, q in zip(names, shown, strict=True)]  # fmt: skip
-    along = problem.value(problem.x(shown))
     if problem.size > 1:
+        shown = shown if first.end is not None else shown[:, : DRAWN // 2 + 1]  # a bounce comes back the same way
+        along = problem.value(problem.x(shown))
         length = np.concatenate([[0.0], np.cumsum(np.linalg.norm(np.diff(shown, axis=1), axis=0))])
         if length[-1] > 0:
             curves.append(Curve("V along the path", "V", "length", _plain(length), _plain(along), style="potential"))
         return curves
     low, high = float(np.min(first.path)), float(np.max(first.path))
-    beyond = MARGIN * (high - low or 1.0)
-    q = np.linspace(low - beyond, high + beyond, DRAWN)
+    left, right = min(low, float(problem.q(first.vacuum.x)[0])), max(high, float(problem.q(first.vacuum.x)[0]))
+    beyond = MARGIN * (right - left)
+    q = np.linspace(left - beyond, right + beyond, DRAWN)
     value = problem.value(problem.x(q[None]))
     course = np.linspace(low, high, DRAWN)
     curves.append(Curve("V", "V", names[0], _plain(q), _plain(value), style="potential"))

@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from quarterturn.errors import SaddleError
-from quarterturn.saddles.cosine import midpoints, resampled, second_derivative, tail
+from quarterturn.saddles.cosine import at, midpoints, resampled, second_derivative, tail
 from quarterturn.saddles.problem import Problem
 from quarterturn.saddles.rest import Rest
 
@@ -27,6 +27,8 @@ MOST_POINTS = 1024
 FIRST_POINTS = 32
 MOST_STEPS = 300
 AT_REST = 1e-2  # distance from the minimum over the extent of the path, where waiting longer begins
+UNRESOLVED = 1e-5  # the same on the way, above which the grid is refined
+CORRECTIONS = 12  # steps of Newton's method on the way
 AMPLITUDE = 0.03  # of the first path of a branch, over a length set by the potential
 
 
@@ -77,7 +79,10 @@ def newton(problem: Problem, half: Half) -> Half | None:
         rest, matrix = residual(problem, here).ravel(), jacobian(problem, here)
         if not (np.isfinite(rest).all() and np.isfinite(matrix).all()):
             return None
-        step = np.linalg.lstsq(matrix, -rest, rcond=1e-13)[0].reshape(x.shape)
+        try:
+            step = np.linalg.solve(matrix, -rest).reshape(x.shape)
+        except np.linalg.LinAlgError:
+            return None
         size = float(np.max(np.abs(step)))
         x = x + step * min(1.0, 0.3 * extent / max(size, 1e-300))
         if size <= SETTLED * extent or (size <= 1e-8 * extent and size > 0.3 * previous):
@@ -110,82 +115,75 @@ def resolved(problem: Problem, half: Half) -> Half | None:
     return half
 
 
-def follow(problem: Problem, barrier: Rest, vacuum: Rest, length: float, away: float) -> Branch:
-    """Follow the branch that leaves `barrier` until the half period is `length` or the path rests at `vacuum`.
+@dataclass(frozen=True)
+class _Scales:
+    """A length of the problem, from the vacuum to the barrier; and what a change of L counts for in units of it."""
 
-    `away` is the sign of the first step along the unstable direction. A branch that ends elsewhere is cut there.
+    unit: float
+    pace: float
+
+    def norm(self, x: Floats, length: float) -> float:
+        return float(np.sqrt(np.mean(np.sum(x**2, axis=0)) + (self.pace * length) ** 2))
+
+
+def follow(problem: Problem, barrier: Rest, vacuum: Rest, length: float) -> Branch:
+    """Follow the branch that leaves `barrier` until the path rests at `vacuum` or L is three times `length`.
+
+    A branch that ends elsewhere is cut there.
     """
-    omega = float(barrier.frequencies[0])
-    unit = _unit(problem, barrier, vacuum)
-    shape = np.cos(np.pi * midpoints(FIRST_POINTS))
-    x = barrier.x[:, None] + away * AMPLITUDE * unit * barrier.axes[:, :1] * shape
-    here = Half(x, np.pi / omega)
-    tangent = (away * barrier.axes[:, :1] * shape * unit / np.sqrt(FIRST_POINTS), 0.0)
-    branch, step, slope = Branch(), AMPLITUDE * unit, 0.0
-    # the first point: the amplitude is held, the period adapts
-    found = _corrected(problem, here, tangent, (here.x, here.length), unit)
-    if found is None:
-        return branch
-    here = found
-    step *= 2
-    previous = Half(np.broadcast_to(barrier.x[:, None], here.x.shape).copy(), np.pi / omega)
+    omega, unit = float(barrier.frequencies[0]), float(np.linalg.norm(barrier.x - vacuum.x))
+    scales, branch = _Scales(unit, 0.1 * omega * unit), Branch()
+    shape = barrier.axes[:, :1] * np.cos(np.pi * midpoints(FIRST_POINTS))
+    previous = Half(np.broadcast_to(barrier.x[:, None], shape.shape).copy(), np.pi / omega)
+    first = Half(previous.x + AMPLITUDE * unit * shape, np.pi / omega)
+    here = _corrected(problem, first, (unit * shape, 0.0), scales)  # the amplitude is held, the period adapts
+    step, slope = 2 * AMPLITUDE * unit, 0.0
     for _ in range(MOST_STEPS):
+        if here is None:
+            break
         branch.steps.append(here)
         change = here.length - previous.length
         if slope * change < 0:
-            branch.turning.append(
-                2 * max(here.length, previous.length) if slope > 0 else 2 * min(here.length, previous.length)
-            )
+            extreme = max if slope > 0 else min
+            branch.turning.append(2 * extreme(here.length, previous.length))
         slope = change or slope
         if here.length > 3 * length or rests_at(here, vacuum):
             break
-        direction = (here.x - previous.x, change)
-        norm = _norm(direction, unit)
-        direction = (direction[0] / norm, direction[1] / norm)
-        while True:
-            guess = Half(here.x + step * direction[0], here.length + step * direction[1])
-            found = _corrected(problem, guess, direction, (guess.x, guess.length), unit) if guess.length > 0 else None
-            if found is not None and tail(found.x) > 1e-5 and found.points < MOST_POINTS:
-                here, previous = (Half(resampled(h.x, 2 * h.points), h.length) for h in (here, previous))
-                direction = (resampled(direction[0], here.points), direction[1])
-                continue
-            if found is not None:
-                break
-            step /= 2
-            if step < 1e-6 * unit:
-                return branch
-        previous, here, step = here, found, min(1.3 * step, 0.5 * unit)
+        previous, here, step = _advanced(problem, previous, here, step, scales)
     return branch
 
 
-def _unit(problem: Problem, barrier: Rest, vacuum: Rest) -> float:
-    """A length over which the potential changes: from the vacuum to the barrier."""
-    return float(np.linalg.norm(barrier.x - vacuum.x))
+def _advanced(
+    problem: Problem, previous: Half, here: Half, step: float, scales: _Scales
+) -> tuple[Half, Half | None, float]:
+    """The last two paths one step further on, and the length of the next step; None where the branch is lost."""
+    while step > 1e-6 * scales.unit:
+        x, length = here.x - previous.x, here.length - previous.length
+        norm = scales.norm(x, length)
+        x, length = x / norm, length / norm
+        guess = Half(here.x + step * x, here.length + step * length)
+        found = _corrected(problem, guess, (x, length), scales) if guess.length > 0 else None
+        if found is None:
+            step /= 2
+        elif tail(found.x) > UNRESOLVED and found.points < MOST_POINTS:
+            here, previous = (Half(resampled(h.x, 2 * h.points), h.length) for h in (here, previous))
+        else:
+            return here, found, min(1.3 * step, 0.5 * scales.unit)
+    return previous, None, step
 
 
-def _norm(direction: tuple[Floats, float], unit: float) -> float:
-    x, length = direction
-    return float(np.sqrt(np.mean(np.sum(x**2, axis=0)) + (unit * length) ** 2 * 1e-2))
-
-
-def _corrected(
-    problem: Problem, guess: Half, tangent: tuple[Floats, float], base: tuple[Floats, float], unit: float
-) -> Half | None:
-    """Newton's method on the path and its period at once, on the plane through `base` normal to `tangent`."""
+def _corrected(problem: Problem, guess: Half, tangent: tuple[Floats, float], scales: _Scales) -> Half | None:
+    """Newton's method on the path and its period at once, on the plane through `guess` normal to `tangent`."""
     x, length = guess.x, guess.length
     n, points = x.shape
-    weights = tangent[0].ravel() / points, tangent[1] * unit**2 * 1e-2
-    if np.all(weights[0] == 0):
-        return None
-    for _ in range(12):
-        here = Half(x, length)
-        slope = problem.slope(x)
-        rest = np.asarray(x @ second_derivative(points).T - length**2 * slope).ravel()
+    weights = tangent[0].ravel() / points, tangent[1] * scales.pace**2
+    for _ in range(CORRECTIONS):
+        rest = residual(problem, Half(x, length)).ravel()
         matrix = np.zeros((n * points + 1, n * points + 1))
-        matrix[:-1, :-1] = jacobian(problem, here)
-        matrix[:-1, -1] = -2 * length * slope.ravel()
+        matrix[:-1, :-1] = jacobian(problem, Half(x, length))
+        matrix[:-1, -1] = -2 * length * problem.slope(x).ravel()
         matrix[-1, :-1], matrix[-1, -1] = weights
-        plane = weights[0] @ (x - base[0]).ravel() + weights[1] * (length - base[1])
+        plane = weights[0] @ (x - guess.x).ravel() + weights[1] * (length - guess.length)
         if not (np.isfinite(matrix).all() and np.isfinite(rest).all()):
             return None
         try:
@@ -193,9 +191,10 @@ def _corrected(
         except np.linalg.LinAlgError:
             return None
         x, length = x + step[:-1].reshape(x.shape), length + float(step[-1])
-        if not length > 0 or np.max(np.abs(step[:-1])) > unit:
+        size = float(np.max(np.abs(step[:-1])))
+        if not length > 0 or size > scales.unit:
             return None
-        if np.max(np.abs(step[:-1])) <= 1e-9 * unit:
+        if size <= 1e-9 * scales.unit:
             return Half(x, length)
     return None
 
@@ -235,16 +234,10 @@ def prolonged(problem: Problem, half: Half, vacuum: Rest, length: float) -> Half
         s = midpoints(points) * longer / half.length
         omega = float(vacuum.frequencies[0])
         last = vacuum.x[:, None] + (x[:, -1:] - vacuum.x[:, None]) * np.exp(-omega * half.length * np.maximum(s - 1, 0))
-        inside = np.where(s <= 1, resampled_at(x, np.minimum(s, 1.0)), last)
+        inside = np.where(s <= 1, at(x, np.minimum(s, 1.0)), last)
         found = newton(problem, Half(inside, longer))
         found = None if found is None else resolved(problem, found)
         if found is None:
             return None
         half, x, points = found, found.x, found.points
     return Half(x, half.length)
-
-
-def resampled_at(x: Floats, s: Floats) -> Floats:
-    from quarterturn.saddles.cosine import at
-
-    return at(x, s)

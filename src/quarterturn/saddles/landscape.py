@@ -37,7 +37,8 @@ class Landscape:
 
     def partners(self, vacuum: Rest) -> list[Rest]:
         """The other minima of the same height."""
-        return [m for m in self.level_with(vacuum) if not np.allclose(m.x, vacuum.x, rtol=1e-9, atol=1e-9)]
+        spread = max(float(np.linalg.norm(m.x - vacuum.x)) for m in self.minima)
+        return [m for m in self.level_with(vacuum) if np.linalg.norm(m.x - vacuum.x) > 1e-7 * spread]
 
     def same_place(self, one: Rest, other: Rest) -> bool:
         """Whether the two differ by turns of a circle only."""

@@ -23,11 +23,11 @@ DECADES = (-6.0, 6.0)
 POINTS_A_DECADE = 60
 POINTS_LINEAR = 4001  # more of them within a few units of zero, where most potentials have their structure
 REACH = 12.0
-STARTS = 2048
+STARTS = 4096
 MOST_KEPT = 60
-SAME = 1e-6  # relative distance below which two points are one
+SAME = 1e-5  # relative distance below which two points are one
 FLAT = 1e-6  # of the curvature nearby, below which a curvature is none
-NEARBY = 0.01  # as a distance, in units of 1 + |x|
+NEARBY = 0.05  # as a part of the distance to the next point of rest, or of 1 + |x| where there is no other
 EQUAL = 1e-9  # of the barrier, within which two minima are degenerate
 
 
@@ -60,14 +60,17 @@ def rest_points(problem: Problem) -> list[Rest]:
     points = list(_one(problem)) if problem.size == 1 else list(_many(problem))
     points = sorted(points, key=lambda x: float(np.linalg.norm(x)))[:MOST_KEPT]
     found: list[Rest] = []
-    for x in points:
+    for k, x in enumerate(points):
+        others = [float(np.linalg.norm(x - y)) for y in points[:k] + points[k + 1 :]]
+        near = NEARBY * min(others, default=1 + float(np.linalg.norm(x)))
         values, vectors = np.linalg.eigh(problem.curvature(x))
         height = float(problem.value(x))
         if np.isfinite(values).all() and np.isfinite(height):
-            around = x[:, None] + NEARBY * (1 + np.abs(x[:, None])) * np.array([-1.0, 1.0])
+            around = x[:, None] + near * np.array([-1.0, 1.0])
             scale = np.nanmax(np.abs([*values, *np.ravel(problem.curvature(around))]))
             found.append(Rest(x, height, values, vectors, float(scale)))
-    return sorted(found, key=lambda r: (round(r.height, 9), *map(float, r.x)))
+    scale = float(np.ptp([r.height for r in found])) if found else 0.0
+    return sorted(found, key=lambda r: (round(r.height / (scale or 1.0), 9), *map(float, r.x)))
 
 
 def _samples(problem: Problem) -> Floats:
@@ -101,7 +104,7 @@ def _many(problem: Problem) -> Iterator[Floats]:
     n = problem.size
     unit = qmc.Sobol(n + 1, scramble=False).random(STARTS)
     direction = 2 * unit[:, :n] - 1
-    x = (direction * 10.0 ** (4 * unit[:, n:] - 2)).T
+    x = (direction * 10.0 ** (6 * unit[:, n:] - 3)).T
     for _ in range(80):
         slope, curvature = problem.slope(x), problem.curvature(x)
         good = np.isfinite(slope).all(axis=0) & np.isfinite(curvature).all(axis=(1, 2))
@@ -120,11 +123,12 @@ def _many(problem: Problem) -> Iterator[Floats]:
 
 def _different(points: Floats) -> Iterator[Floats]:
     points = points[np.linalg.norm(points, axis=1) < 1e6]
-    scale = float(np.median(np.linalg.norm(points, axis=1))) if len(points) else 1.0
+    sizes = np.linalg.norm(points, axis=1)
+    scale = float(np.median(sizes[sizes > 1e-9])) if (sizes > 1e-9).any() else 1.0
     while len(points):
         first = points[0]
         yield first + 0.0
-        points = points[np.linalg.norm(points - first, axis=1) > SAME * max(scale, 1.0) * 10]
+        points = points[np.linalg.norm(points - first, axis=1) > SAME * scale]
 
 
 def curved_minima(problem: Problem, points: list[Rest]) -> list[Rest]:

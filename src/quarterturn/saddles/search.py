@@ -100,7 +100,7 @@ def escape(land: Landscape, vacuum: Rest, beta: float | None) -> list[Saddle]:
     cold = beta is None or beta / 2 >= longest
     found: list[Saddle] = []
     for barrier in barriers:
-        branch = follow(land.problem, barrier, vacuum, length, 1.0)
+        branch = follow(land.problem, barrier, vacuum, length)
         if _joins_level_minima(land, branch, vacuum):
             continue
         halves = _halves(land, branch, vacuum, length, cold)
