@@ -10,6 +10,7 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -177,5 +178,5 @@ def _negative_mode(problem: Problem, profile: Profile, dimension: int) -> tuple[
         diagonal = (area[1:] + area[:-1]) / (h * volume) + problem.curvature(piece(middle)[None])[:, 0, 0]
         beside = -area[1:-1] / (h * np.sqrt(volume[1:] * volume[:-1]))
         values.append(float(eigh_tridiagonal(diagonal, beside, select="i", select_range=(0, 0))[0][0]))
-    coarse, best = (fine + (fine - rough) / (RATIO**2 - 1) for rough, fine in zip(values, values[1:], strict=False))
+    coarse, best = (fine + (fine - rough) / (RATIO**2 - 1) for rough, fine in pairwise(values))
     return (best if best < 0 else None), abs(best - coarse)
