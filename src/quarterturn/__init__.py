@@ -20,6 +20,7 @@ if TYPE_CHECKING:
     from quarterturn.runs.declaration import action
     from quarterturn.runs.saddle import saddle
     from quarterturn.runs.sampling import sample
+    from quarterturn.runs.series import series
     from quarterturn.runs.spectrum import levels
     from quarterturn.runs.verification import verify
 
@@ -37,6 +38,7 @@ __all__ = [
     "levels",
     "saddle",
     "sample",
+    "series",
     "verify",
 ]
 
@@ -45,6 +47,7 @@ _ROOMS = {
     "sample": "quarterturn.runs.sampling",
     "levels": "quarterturn.runs.spectrum",
     "saddle": "quarterturn.runs.saddle",
+    "series": "quarterturn.runs.series",
     "verify": "quarterturn.runs.verification",
 }
 

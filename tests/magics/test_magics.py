@@ -68,6 +68,16 @@ def test_a_saddle_in_a_notebook_is_verified(person: Any, notebook_of: Callable[.
     assert person.gets(f"%verify {path}").answer == "identical"
 
 
+def test_a_series_takes_its_options_and_is_kept(person: Any, registry: Any) -> None:
+    person.gets("%%action quartic\nq(t)\nL = 1/2 q'^2 - 1/2 w^2 q^2 - lam q^4\nw = 1, lam = 0.1")
+    series = person.gets("%series quartic lam=1/4 order=12 level=1 coupling=lam as aho")
+    assert (series.order, series.level, series.couplings["lam"]) == (12, 1, 0.25)
+    assert series is person.gets("aho") is registry.results[0].result
+    assert "series of quartic" in repr(person.gets("%record aho"))
+    refused = person.types("%series quartic beta=2")
+    assert "beta has no meaning for a series" in str(refused.error)
+
+
 def test_levels_take_their_options(person: Any) -> None:
     assert len(person.gets("%levels well count=3").energies) == 3
     assert person.gets("%levels well beta=2").beta == 2

@@ -18,6 +18,7 @@ from quarterturn.magics.request import LATTICE_WORDS
 from quarterturn.magics.saddle import KINDS as SADDLE_KINDS
 from quarterturn.magics.saddle import OPTIONS as SADDLE_OPTIONS
 from quarterturn.magics.sample import OPTIONS as SAMPLE_OPTIONS
+from quarterturn.magics.series import OPTIONS as SERIES_OPTIONS
 
 LINE = re.compile(r"^\s*(?:[^\W\d]\w*\s*=\s*)?%(?P<magic>\w+)\s+(?P<before>.*?)(?P<typed>[^\s,=]*)$")
 
@@ -33,7 +34,7 @@ def complete_line(context: CompletionContext) -> SimpleMatcherResult:
     return {"completions": found, "suppress": True, "matched_fragment": line["typed"], "ordered": True}
 
 
-def _settings(options: tuple[str, ...]) -> Callable[[str], list[str]]:
+def _settings(options: tuple[str, ...], lattice: tuple[str, ...] = LATTICE_WORDS) -> Callable[[str], list[str]]:
     def offers(before: str) -> list[str]:
         name, *rest = before.replace(",", " ").split() or [""]
         if not name:
@@ -43,10 +44,12 @@ def _settings(options: tuple[str, ...]) -> Callable[[str], list[str]]:
         if re.search(r"kind\s*=\s*$", before) and "kind" in options:
             return list(SADDLE_KINDS)
         action = session.actions.get(name)
+        if action is not None and re.search(r"coupling\s*=\s*$", before) and "coupling" in options:
+            return list(action.couplings)
         if action is None or before.rstrip().endswith("="):
             return []
         given = {word.partition("=")[0] for word in rest}
-        there = (*action.couplings, *LATTICE_WORDS, *options)
+        there = (*action.couplings, *lattice, *options)
         return [f"{word}=" for word in there if word not in given]
 
     return offers
@@ -62,6 +65,7 @@ OFFERS: dict[str, Callable[[str], list[str]]] = {
     "sample": _settings(tuple(SAMPLE_OPTIONS)),
     "levels": _settings(tuple(LEVELS_OPTIONS)),
     "saddle": _settings(tuple(SADDLE_OPTIONS)),
+    "series": _settings(tuple(SERIES_OPTIONS), ()),
     "record": _results,
     "turn": lambda before: [] if before.strip() else list(session.actions),
 }

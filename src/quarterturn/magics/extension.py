@@ -10,6 +10,7 @@ from quarterturn.magics.levels import LevelsMagic
 from quarterturn.magics.record import RecordMagic
 from quarterturn.magics.saddle import SaddleMagic
 from quarterturn.magics.sample import SampleMagic
+from quarterturn.magics.series import SeriesMagic
 from quarterturn.magics.turn import TurnMagic
 from quarterturn.magics.verify import VerifyMagic
 
@@ -19,6 +20,7 @@ MAGICS = (
     SampleMagic,
     LevelsMagic,
     SaddleMagic,
+    SeriesMagic,
     RecordMagic,
     VerifyMagic,
 )

@@ -7,7 +7,7 @@ leaves the results of the earlier one as they are.
 from __future__ import annotations
 
 from dataclasses import dataclass, field
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, TypeAlias
 
 from quarterturn.errors import RequestError
 from quarterturn.magics.request import nearest
@@ -17,7 +17,10 @@ if TYPE_CHECKING:
     from quarterturn.runs.declaration import DeclaredAction
     from quarterturn.runs.run import Run
     from quarterturn.runs.saddle import Saddles
+    from quarterturn.runs.series import Series
     from quarterturn.runs.spectrum import Levels
+
+    Result: TypeAlias = Run | Levels | Saddles | Series
 
 FEWEST_LETTERS = 4  # of a record's name, to count as a name
 SHORT_NAME = 12  # letters of a record's name that are shown
@@ -27,7 +30,7 @@ SHORT_NAME = 12  # letters of a record's name that are shown
 class Kept:
     """A result, and the line that made it; empty for one that a call in Python made."""
 
-    result: Run | Levels | Saddles
+    result: Result
     line: str
 
     @property
@@ -60,7 +63,7 @@ class Registry:
             raise words.line.at(name, f"no action is called {name.text}; {self._declared()}", near)
         return self.actions[name.text]
 
-    def keep(self, result: Run | Levels | Saddles, words: Words, shell: Any) -> None:
+    def keep(self, result: Result, words: Words, shell: Any) -> None:
         """Keep a result, and give it to the variable that the line asks for."""
         self.results.insert(0, Kept(result, words.line.text))
         _assign(result, words, shell)

@@ -5,7 +5,8 @@ thin ink, fits as a band over the stretch that was fitted.
 """
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 from matplotlib.axes import Axes
@@ -28,11 +29,13 @@ WAVE_ENDS = 0.003  # of the tallest; what is lower all the way out is not worth 
 HEADROOM = 1.15
 IN_POTENTIAL = ("wave", "potential", "course")  # styles that share one panel
 DASHES = ("-", "--", "-.", ":")
+ORDERS_REACH = 2.5  # times the distance of the first sum: where a diverging series leaves the picture
+MOST_MARKS = 25  # on one line
 
 
 @dataclass(frozen=True, slots=True)
 class Panel:
-    """Curves that are drawn together. kind: correlator | gap | history | paths | waves."""
+    """Curves that are drawn together. kind: correlator | gap | history | orders | paths | waves."""
 
     kind: str
     curves: tuple[Curve, ...]
@@ -53,8 +56,12 @@ def panels(curves: Sequence[Curve]) -> list[Panel]:
             found[-1] = Panel("history", (*last.curves, curve), last.words)
         elif curve.style == "path" and last and last.kind == "paths":
             found[-1] = Panel("paths", (*last.curves, curve), f"{last.words}; {_words(curve)}")
+        elif curve.style == "orders" and last and last.kind == "orders":
+            found[-1] = Panel("orders", (*last.curves, curve), f"{last.words}; {_words(curve)}")
         else:
-            kind = {"gap": "gap", "history": "history", "path": "paths"}.get(curve.style, "correlator")
+            kind = {"gap": "gap", "history": "history", "path": "paths", "orders": "orders"}.get(
+                curve.style, "correlator"
+            )
             found.append(Panel(kind, (curve,), _words(curve)))
     if waves:
         names = ", ".join(one_line(curve.label) for curve in waves)
@@ -75,6 +82,9 @@ def draw(panel: Panel, figure: Figure | SubFigure, ink: str) -> None:
         above.set_xlabel("")
         _dress(below, panel.curves[1], ink)
         figure.align_ylabels([above, below])
+        return
+    if panel.kind == "orders":
+        _orders(figure, panel.curves, ink)
         return
     axes = figure.subplots()
     if panel.kind == "correlator":
@@ -151,6 +161,41 @@ def _points(axes: Axes, curve: Curve, ink: str) -> None:
         axes.plot(x, y, color=DATA, linewidth=1.0, zorder=2, label="sampled")
     if exact.size == x.size and x.size:
         axes.plot(x, exact, color=ink, linewidth=0.8, zorder=3, label="exact")
+
+
+def _orders(figure: Figure | SubFigure, curves: Sequence[Curve], ink: str) -> None:
+    """Sums of a series against order, each method with a mark of its own; below, their distance from the exact one."""
+    exact = next((curve.exact[0] for curve in curves if curve.exact), None)
+    if exact is None:
+        above, below = figure.subplots(), None
+    else:
+        above, below = figure.subplots(2, 1, sharex=True, gridspec_kw={"height_ratios": (3, 3)})
+        above.axhline(exact, color=ink, linewidth=0.8, zorder=3, label="exact")
+    best = exact if exact is not None else float(_numbers(curves[-1].y)[-1])
+    reach = ORDERS_REACH * max(abs(curves[0].y[0] - best), 1e-9 * abs(best), 1e-300)
+    for index, curve in enumerate(curves):
+        x, y = _numbers(curve.x), _numbers(curve.y)
+        step = -(-len(x) // MOST_MARKS)
+        style: dict[str, Any] = {
+            "color": (*SERIES, ink)[index % 4],
+            "marker": "osx^"[index % 4],
+            "markersize": 2.6,
+            "linewidth": 0.7,
+        }
+        seen = np.isfinite(y) & (np.abs(y - best) <= reach)
+        above.plot(x, np.where(seen, y, np.nan), label=curve.label, markevery=step, **style)
+        if below is not None:
+            away = np.abs(y - best)
+            away[~np.isfinite(away) | (away == 0) | (away > ORDERS_REACH**2 * reach)] = np.nan
+            below.plot(x, away, markevery=step, **style)
+    above.legend(frameon=False, fontsize="x-small", labelcolor=ink, ncols=2, borderaxespad=0)
+    for axes, label in ((above, "sum"), (below, "distance from exact")):
+        if axes is not None:
+            _dress(axes, replace(curves[0], label=label, latex=""), ink)
+    if below is not None:
+        above.set_xlabel("")
+        below.set_yscale("log")
+        figure.align_ylabels([above, below])
 
 
 def _history(axes: Axes, curves: Sequence[Curve]) -> None:

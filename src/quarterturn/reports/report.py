@@ -40,7 +40,7 @@ class Curve:
     y: tuple[float, ...]
     error: tuple[float, ...] = ()
     exact: tuple[float, ...] = ()
-    style: str = "correlator"  # correlator | gap | history | wave | potential | course (a path in it) | path
+    style: str = "correlator"  # correlator | gap | history | orders | wave | potential | course (a path in it) | path
     plateau: tuple[float, float, float, float] | None = None  # value, error, x from, x to of a fit drawn in
     baseline: float | None = None  # wave: the energy at which the wave function is drawn
 
@@ -49,7 +49,7 @@ class Curve:
 class Report:
     """A whole result: `rows` and `curves` are data, `warnings` sentences, `facts` the method line by line."""
 
-    kind: str  # sample | levels | saddle
+    kind: str  # sample | levels | saddle | series
     title: str  # such as: quartic, sampled
     action_text: str  # canonical notation of the action
     latex: str  # Euclidean action, typeset, without dollar signs

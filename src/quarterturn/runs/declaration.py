@@ -27,6 +27,7 @@ RESERVED = frozenset(
         "spacing",
         "vacuum",
         "kind",
+        *("coupling", "order", "level"),
         *LATTICE_WORDS,
     }
 )

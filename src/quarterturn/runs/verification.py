@@ -19,6 +19,7 @@ from quarterturn.records.verdict import Verdict, altered, cannot_be_rerun, compa
 from quarterturn.runs.declaration import action
 from quarterturn.runs.saddle import saddle
 from quarterturn.runs.sampling import sample
+from quarterturn.runs.series import series
 from quarterturn.runs.spectrum import levels
 
 LONGEST = 1800.0  # seconds that one rerun may be expected to take
@@ -137,6 +138,9 @@ def rerun(record: dict[str, Any]) -> dict[str, Any]:
     if record["kind"] == "saddle":
         asked = {key: request[key] for key in ("vacuum", "kind", "beta") if request.get(key) is not None}
         return saddle(declared, **asked, **settings).record
+    if record["kind"] == "series":
+        asked = {word: request[word] for word in ("coupling", "order", "level")}
+        return series(declared, **asked, **settings).record
     _refuse_the_endless(record, len(declared.euclidean.variables))
     run = sample(declared, draws=request["draws"], chains=request["chains"], seed=request["seed"], **settings)
     if run.stop == "interrupted":  # half a rerun proves nothing: Ctrl-C ends the verification
