@@ -117,7 +117,7 @@ def test_two_coupled_paths_reduce_to_one(well: DeclaredAction) -> None:
 
 def test_a_hill_between_the_wells_is_passed_on_both_sides() -> None:
     """The straight path over a high hill is no minimum; two mirrored ones are, and the splitting counts both."""
-    hill = action("x(t)\ny(t)\nL = 1/2 x'^2 + 1/2 y'^2 - (x^2 + y^2 - 1)^2 - 1/2 y^2")
+    hill = action("x(t)\ny(t)\nL = 1/2 x'^2 + 1/2 y'^2 - 10 (x^2 + y^2 - 1)^2 - 5 y^2")
     found = saddle(hill)
     assert np.max(np.abs(found.path[1])) > 0.3
     assert found["negative modes"] == 0
@@ -244,6 +244,36 @@ def test_small_actions_carry_a_warning(well: DeclaredAction) -> None:
     assert not saddle(well, v2=2).warnings
 
 
+def test_numbers_that_make_no_sense_are_withheld() -> None:
+    """A splitting above omega, a rate above one decay for each swing, wells of different frequencies."""
+    shallow = saddle(action("q(t)\nL = 1/2 q'^2 - 1/10 (q^2 - 1)^2"))
+    assert shallow["K exp(-S)"] is None and "too shallow" in repr(shallow)
+    slight = saddle(action("q(t)\nL = 1/2 q'^2 - (q^2 - 1)^2 + q/100"))
+    assert slight["decay rate"] is None and "nearly level" in repr(slight)
+    uneven = saddle(action("q(t)\nL = 1/2 q'^2 - (q^2 - 1)^2 (1 + q/10)"))
+    assert uneven["K exp(-S)"] is None and "different frequencies" in repr(uneven)
+    assert uneven["S"] == pytest.approx(1.885146045449, rel=1e-10)  # int sqrt(2 V) dq by quadrature
+
+
+def test_instantons_in_a_row_are_not_taken_for_one() -> None:
+    """Four level minima on a square: the way to the opposite corner passes a third one, or a hill."""
+    square = action("x(t)\ny(t)\nL = 1/2 x'^2 + 1/2 y'^2 - 20 x^2 y^2 - 5 (x^2 + y^2 - 1)^2")
+    found = saddle(square)
+    ends = found.path[:, [0, -1]]
+    assert abs(float(ends[:, 0] @ ends[:, 1])) < 1e-3  # to a neighbour
+    assert found["negative modes"] == 0
+
+
+def test_three_paths_and_a_mass_matrix(well: DeclaredAction) -> None:
+    """V of the double well along one direction in a skewed frame: the same action, the same splitting."""
+    skewed = action(
+        "x(t)\ny(t)\nz(t)\nL = 1/2 (x' + y')^2 + 1/2 (y' - z')^2 + 1/2 z'^2 - ((x + y)^2 - 2)^2 - 8 (y - z)^2 - 9/2 z^2"
+    )
+    one, three = saddle(well, v2=2), saddle(skewed)
+    assert three["S"] == pytest.approx(one["S"], rel=1e-9)
+    assert three["E_1 - E_0"] == pytest.approx(one["E_1 - E_0"], rel=1e-6)
+
+
 # --- what is refused --------------------------------------------------------------------------------------------
 @pytest.mark.parametrize(
     ("body", "words"),
@@ -255,6 +285,10 @@ def test_small_actions_carry_a_warning(well: DeclaredAction) -> None:
         ("r[2](t)\nL = 1/2 r'.r' - 1/2 r.r + 1/10 (r.r)^2", "continuous family .* one path"),
         ("r[5](t)\nL = 1/2 r'.r' - 1/2 r.r", "up to 4 paths; there are 5 .* sample"),
         ("q(t)\nL = 1/2 q'^2 - 1/q^2 - q^2", "infinite wall"),
+        ("q(t)\nL = 1/2 q'^2 - 1/2 (1 - exp(-q))^2", "no barrier"),
+        ("q(t)\nL = 1/2 q'^2 - (abs(q) - 1)^2", "not resolved .* levels"),
+        ("q(t)\nL = 1/2 q'^2 - (q^2 - 1)^2 + q/10^8", "nearly level .* levels"),
+        ("x(t)\ny(t)\nL = 1/2 x'^2 + 1/2 y'^2 + x y' - (x^2 - 1)^2 - y^2", "linear in the velocity .* sample"),
         ("q(t)\nL = 1/2 q'^2 - (q^2 - 1)^2 (q - 3)^2 - 1/20 q^2", "vacuum="),
     ],
 )

@@ -26,7 +26,7 @@ RESOLVED = 1e-11  # of the highest cosine coefficients
 MOST_POINTS = 1024
 FIRST_POINTS = 32
 MOST_STEPS = 300
-AT_REST = 1e-2  # distance from the minimum over the extent of the path, where waiting longer begins
+AT_REST = (1e-2, 1e-4, 1e-6)  # distances from the minimum over the extent of the path, where waiting longer is tried
 UNRESOLVED = 1e-5  # the same on the way, above which the grid is refined
 CORRECTIONS = 12  # steps of Newton's method on the way
 AMPLITUDE = 0.03  # of the first path of a branch, over a length set by the potential
@@ -106,7 +106,7 @@ def resolved(problem: Problem, half: Half) -> Half | None:
                 return half
             raise SaddleError(
                 f"the path is not resolved by {half.points} points: the potential is too rough or its times "
-                "differ too much"
+                "differ too much; use levels"
             )
         finer = newton(problem, Half(resampled(half.x, 2 * half.points), half.length))
         if finer is None:
@@ -126,7 +126,7 @@ class _Scales:
         return float(np.sqrt(np.mean(np.sum(x**2, axis=0)) + (self.pace * length) ** 2))
 
 
-def follow(problem: Problem, barrier: Rest, vacuum: Rest, length: float) -> Branch:
+def follow(problem: Problem, barrier: Rest, vacuum: Rest, length: float, closeness: float = AT_REST[0]) -> Branch:
     """Follow the branch that leaves `barrier` until the path rests at `vacuum` or L is three times `length`.
 
     A branch that ends elsewhere is cut there.
@@ -147,7 +147,7 @@ def follow(problem: Problem, barrier: Rest, vacuum: Rest, length: float) -> Bran
             extreme = max if slope > 0 else min
             branch.turning.append(2 * extreme(here.length, previous.length))
         slope = change or slope
-        if here.length > 3 * length or rests_at(here, vacuum):
+        if here.length > 3 * length or rests_at(here, vacuum, closeness):
             break
         previous, here, step = _advanced(problem, previous, here, step, scales)
     return branch
@@ -199,10 +199,10 @@ def _corrected(problem: Problem, guess: Half, tangent: tuple[Floats, float], sca
     return None
 
 
-def rests_at(half: Half, vacuum: Rest) -> bool:
+def rests_at(half: Half, vacuum: Rest, closeness: float = AT_REST[0]) -> bool:
     """Whether one end of the path lies at the vacuum, closely."""
     ends = half.x[:, [0, -1]] - vacuum.x[:, None]
-    return bool(np.min(np.linalg.norm(ends, axis=0)) < AT_REST * _extent(half.x))
+    return bool(np.min(np.linalg.norm(ends, axis=0)) < closeness * _extent(half.x))
 
 
 def at_period(problem: Problem, branch: Branch, length: float) -> list[Half]:

@@ -22,6 +22,8 @@ Floats = NDArray[np.float64]
 WAITING = 25.0  # omega L / 2: what is left of the path at its ends is exp(-WAITING)
 FIRST_POINTS = 128
 MOST_STEPS = 120
+ENDS = 0.02  # parts of the action that belong to the ends of the path
+RESTING = 1e-3  # of the barrier: below, a path is at rest
 BENDS = (0.0, 0.5, -0.5, 1.0, -1.0)  # over the distance of the minima
 
 
@@ -32,12 +34,20 @@ def instantons(problem: Problem, start: Rest, end: Rest) -> list[Half]:
     extent = float(np.linalg.norm(end.x - start.x))
     for guess in _guesses(start, end, 2 * WAITING / omega):
         path = _relaxed(problem, guess, start, end)
-        if path is None:
+        if path is None or _composite(problem, path, start):
             continue
         mark = _mark(path)
         if all(np.max(np.abs(mark - other)[1:]) > 1e-4 * extent for other, _ in found):
             found.append((mark, path))
     return [path for _, path in sorted(found, key=lambda item: float(item[0][0]))]
+
+
+def _composite(problem: Problem, path: Half, start: Rest) -> bool:
+    """Whether the path comes to rest on its way, at a third minimum: instantons in a row, at a free distance."""
+    speed = np.sum(at(path.x, midpoints(path.points), order=1) ** 2, axis=0)
+    part = np.cumsum(speed) / np.sum(speed)
+    height = problem.value(path.x)[(part > ENDS) & (part < 1 - ENDS)] - start.height
+    return bool(np.min(height) < RESTING * np.max(height))
 
 
 def _mark(path: Half) -> Floats:
@@ -67,7 +77,10 @@ def _relaxed(problem: Problem, half: Half, start: Rest, end: Rest) -> Half | Non
         if path.points >= MOST_POINTS:
             if last < 1e-7:
                 break
-            raise SaddleError(f"the path from minimum to minimum is not resolved by {path.points} points")
+            raise SaddleError(
+                f"the path from minimum to minimum is not resolved by {path.points} points: the potential is too "
+                "rough, or its times differ too much; use levels"
+            )
         path = _downhill(problem, Half(resampled(path.x, 2 * path.points), path.length))
     if path is None:
         return None

@@ -56,6 +56,9 @@ def tunnelling_rates(land: Landscape, saddles: Sequence[Saddle], theta: float = 
         why = f"the path found has {first.modes.negative} negative modes, so that another one has a lower action"
         return [Rate(label, latex, None, why=why)]
     value, error = amplitude(first)
+    if 2 * value > first.vacuum.frequencies[0]:
+        why = "it would split levels by more than their distance omega: the wells are too shallow for tunnelling"
+        return [Rate(label, latex, None, why=why)]
     found = [Rate(label, latex, value, error)]
     level = land.level_with(first.vacuum)
     places = [m for i, m in enumerate(level) if not any(land.same_place(m, other) for other in level[:i])]
@@ -92,7 +95,19 @@ def decay_rate(saddle: Saddle, equivalent: int) -> Rate:
         why = f"the path has {saddle.modes.negative} negative modes, and a bounce has one"
         return Rate(label, latex, None, why=why)
     value, error = amplitude(saddle)
-    return Rate(label, latex, equivalent * value, equivalent * error)
+    return _bounded(saddle, equivalent * value, equivalent * error)
+
+
+def _bounded(saddle: Saddle, value: float, error: float) -> Rate:
+    """The rate, withheld where a state would decay before it has gone to and fro once."""
+    label, latex = "decay rate", r"\Gamma"
+    if value > saddle.vacuum.frequencies[0] / (2 * math.pi):
+        why = (
+            "it would exceed omega/(2 pi), one decay for each swing in the well: the barrier is too low, or the state "
+            "beyond it nearly level"
+        )
+        return Rate(label, latex, None, why=why)
+    return Rate(label, latex, value, error)
 
 
 def doubts(saddle: Saddle) -> list[str]:

@@ -27,7 +27,7 @@ STARTS = 4096
 MOST_KEPT = 60
 SAME = 1e-5  # relative distance below which two points are one
 FLAT = 1e-6  # of the curvature nearby, below which a curvature is none
-NEARBY = 0.05  # as a part of the distance to the next point of rest, or of 1 + |x| where there is no other
+NEARBY = 0.05  # as a part of the distance to the next point of rest, or of 1 + |x| where that is less
 EQUAL = 1e-9  # of the barrier, within which two minima are degenerate
 
 
@@ -62,7 +62,7 @@ def rest_points(problem: Problem) -> list[Rest]:
     found: list[Rest] = []
     for k, x in enumerate(points):
         others = [float(np.linalg.norm(x - y)) for y in points[:k] + points[k + 1 :]]
-        near = NEARBY * min(others, default=1 + float(np.linalg.norm(x)))
+        near = NEARBY * min([*others, 1 + float(np.linalg.norm(x))])
         values, vectors = np.linalg.eigh(problem.curvature(x))
         height = float(problem.value(x))
         if np.isfinite(values).all() and np.isfinite(height):
@@ -93,9 +93,9 @@ def _one(problem: Problem) -> Iterator[Floats]:
     for i in np.flatnonzero(np.isfinite(slope[:-1]) & np.isfinite(slope[1:])):
         if slope[i] == 0:
             yield x[i : i + 1].copy()
-        elif slope[i] * slope[i + 1] < 0:
+        elif np.sign(slope[i]) != np.sign(slope[i + 1]) and slope[i + 1] != 0:
             root = brentq(at, x[i], x[i + 1], xtol=1e-15 * max(abs(x[i]), step), rtol=8.9e-16, maxiter=500)
-            if abs(at(root)) <= 1e-6 * (abs(slope[i]) + abs(slope[i + 1])):  # not a pole
+            if abs(at(root)) <= 1e-6 * max(abs(slope[i]), abs(slope[i + 1])):  # not a pole
                 yield np.array([root])
 
 
@@ -104,7 +104,11 @@ def _many(problem: Problem) -> Iterator[Floats]:
     n = problem.size
     unit = qmc.Sobol(n + 1, scramble=False).random(STARTS)
     direction = 2 * unit[:, :n] - 1
-    x = (direction * 10.0 ** (6 * unit[:, n:] - 3)).T
+    q = (direction * 10.0 ** (6 * unit[:, n:] - 3)).T
+    for k, period in enumerate(problem.periods):
+        if period is not None:
+            q[k] = 1.5 * period * direction[:, k]
+    x = problem.x(q)
     for _ in range(80):
         slope, curvature = problem.slope(x), problem.curvature(x)
         good = np.isfinite(slope).all(axis=0) & np.isfinite(curvature).all(axis=(1, 2))

@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from quarterturn.errors import SaddleError
-from quarterturn.saddles.branch import Branch, Half, at_period, follow, prolonged, rests_at
+from quarterturn.saddles.branch import AT_REST, Branch, Half, at_period, follow, prolonged, rests_at
 from quarterturn.saddles.instanton import instantons
 from quarterturn.saddles.landscape import Landscape
 from quarterturn.saddles.rest import Rest
@@ -20,6 +20,8 @@ from quarterturn.saddles.saddle import Saddle, bounce, instanton, static
 
 Floats = NDArray[np.float64]
 ZERO_TEMPERATURE = 25.0  # omega beta / 2 beyond which exp(-omega beta) is below rounding
+NEARLY = 1e-5  # of all differences of height
+MOST_PARTNERS = 6  # minima, the closest ones, to which instantons are looked for
 SAME = 1e-8  # relative difference of actions, within which paths are equivalent
 
 
@@ -58,8 +60,16 @@ def tunnelling(land: Landscape, vacuum: Rest) -> list[Saddle]:
         right = sorted((m for m in partners if m.x[0] > vacuum.x[0]), key=lambda m: float(m.x[0]))[:1]
         left = sorted((m for m in partners if m.x[0] < vacuum.x[0]), key=lambda m: -float(m.x[0]))[:1]
         partners = right + left
-    halves = [(half, partner) for partner in partners for half in instantons(land.problem, vacuum, partner)]
-    found = [instanton(land.problem, half, vacuum, partner) for half, partner in halves]
+    partners = sorted(partners, key=lambda m: float(np.linalg.norm(m.x - vacuum.x)))[:MOST_PARTNERS]
+    found, refused = [], None
+    for partner in partners:
+        for half in instantons(land.problem, vacuum, partner):
+            try:
+                found.append(instanton(land.problem, half, vacuum, partner))
+            except SaddleError as reason:  # told only where no other path is sound
+                refused = reason
+    if refused is not None and not found:
+        raise refused
     if not found:
         raise SaddleError(
             "no path of finite action was found between the minima of equal height: an infinite wall or "
@@ -100,14 +110,16 @@ def escape(land: Landscape, vacuum: Rest, beta: float | None) -> list[Saddle]:
     cold = beta is None or beta / 2 >= longest
     found: list[Saddle] = []
     for barrier in barriers:
-        branch = follow(land.problem, barrier, vacuum, length)
-        if _joins_level_minima(land, branch, vacuum):
-            continue
-        halves = _halves(land, branch, vacuum, length, cold)
+        branch, halves = _followed(land, barrier, vacuum, length, cold)
         dressed = [bounce(land.problem, h, vacuum, barrier, None if cold else beta) for h in halves]
         found += [replace(s, turning=tuple(branch.turning)) for s in dressed]
         if not cold and beta is not None:
             found.append(static(land.problem, vacuum, barrier, beta))
+    if not found and any(abs(m.height - vacuum.height) < NEARLY * land.scale for m in _others(land, vacuum)):
+        raise SaddleError(
+            f"the minimum at {_place(land, vacuum)} and another are so nearly level that its bounce waits too long "
+            "to be found; nothing decays by such a difference: levels give the pair"
+        )
     if not found:
         raise SaddleError(
             f"no bounce leads out of the minimum at {_place(land, vacuum)}: beyond its barriers the "
@@ -115,6 +127,22 @@ def escape(land: Landscape, vacuum: Rest, beta: float | None) -> list[Saddle]:
             "lower before the next one; give vacuum=… to start from a higher minimum"
         )
     return sorted(found, key=lambda s: float(f"{s.action:.9g}"))
+
+
+def _others(land: Landscape, vacuum: Rest) -> list[Rest]:
+    return [m for m in land.minima if m.height != vacuum.height]
+
+
+def _followed(land: Landscape, barrier: Rest, vacuum: Rest, length: float, cold: bool) -> tuple[Branch, list[Half]]:
+    """A branch and its half paths of half period `length`; followed further where none is found yet."""
+    branch = Branch()
+    for closeness in AT_REST:
+        branch = follow(land.problem, barrier, vacuum, length, closeness)
+        if _joins_level_minima(land, branch, vacuum):
+            break
+        if halves := _halves(land, branch, vacuum, length, cold):
+            return branch, halves
+    return branch, []
 
 
 def _joins_level_minima(land: Landscape, branch: Branch, vacuum: Rest) -> bool:
