@@ -109,6 +109,8 @@ class Observables:
                 return state.winding[..., self.target.euclidean.variables.index(angle)]
             if atom == Symbol("observable", "energy"):
                 return self._energy(q, state, p)
+            if atom == Symbol("observable", "work"):
+                return self.target.work(state, p)
             if atom == Symbol("geometry", "a"):
                 return p.spacing
             if isinstance(atom, Symbol) and atom.kind == "geometry":

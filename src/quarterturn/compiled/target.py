@@ -21,6 +21,7 @@ from jax import Array
 from quarterturn.actions.expression import Atom, Expression, Symbol
 from quarterturn.actions.model import EuclideanAction
 from quarterturn.errors import ActionError
+from quarterturn.lattice.sources import source_values
 
 
 class Parameters(NamedTuple):
@@ -30,6 +31,7 @@ class Parameters(NamedTuple):
     spacing: Array  # (), a [time]
     whitening: Array  # (C, C), G of the mass matrix K = G G^T, lower triangular
     unwhitening: Array  # (C, C), its inverse
+    sources: Array  # (S, sites), each source at each site, times its strength
 
 
 class PathState(NamedTuple):
@@ -74,8 +76,8 @@ class Target:
         euclidean = self.euclidean
         return tuple(euclidean.potential.diff(atom) for atom in euclidean.variables)
 
-    def parameters(self, couplings: Mapping[str, float], spacing: float) -> Parameters:
-        """Traced arguments from plain numbers. Call inside `double()`.
+    def parameters(self, couplings: Mapping[str, float], spacing: float, strength: float = 1.0) -> Parameters:
+        """Traced arguments from plain numbers; all sources are scaled by `strength`. Call inside `double()`.
 
         Raises ActionError where the mass matrix is not positive definite at these couplings.
         """
@@ -86,7 +88,8 @@ class Target:
         except np.linalg.LinAlgError as error:
             raise ActionError(f"the kinetic form is not positive at these couplings: masses {mass.tolist()}") from error
         values = np.array([couplings[name] for name in self.names], dtype=np.float64)
-        arrays = (values, np.float64(spacing), factor, np.linalg.inv(factor))
+        given = source_values(self.euclidean.sources, couplings, ("t",), (self.sites,), (spacing,))
+        arrays = (values, np.float64(spacing), factor, np.linalg.inv(factor), strength * given)
         return Parameters(*(jnp.asarray(array) for array in arrays))
 
     def scalars(self, p: Parameters) -> dict[Atom, Array]:
@@ -126,6 +129,8 @@ class Target:
     def lookup(self, q: Array, p: Parameters) -> dict[Atom, Array]:
         """Values of every atom of the action for a path (…, C, sites)."""
         values: dict[Atom, Array] = dict(self.scalars(p))
+        for k, source in enumerate(self.euclidean.sources):
+            values[Symbol("source", source.name)] = p.sources[k]
         for i, atom in enumerate(self.euclidean.variables):
             values[atom] = q[..., i, :]
         return values
@@ -143,6 +148,16 @@ class Target:
         shape = q.shape[:-2] + q.shape[-1:]
         parts = [jnp.broadcast_to(g.evaluate(lookup, jnp), shape) for g in self.gradient]
         return self._mixed(p.unwhitening, jnp.stack(parts, axis=-2))
+
+    def work(self, state: PathState, p: Parameters) -> Array:
+        """-dS/ds times s, for sources of strength s: -sum_i a J_i dV/dJ_i, (chains,)."""
+        q = self.path(state, p)
+        lookup = self.lookup(q, p)
+        total = jnp.zeros(q.shape[:-2])
+        for k, source in enumerate(self.euclidean.sources):
+            slope = self.euclidean.potential.diff(Symbol("source", source.name)).evaluate(lookup, jnp)
+            total = total - p.spacing * jnp.sum(p.sources[k] * jnp.broadcast_to(slope, q[..., 0, :].shape), axis=-1)
+        return total
 
     def winding_action(self, winding: Array, p: Parameters) -> Array:
         """Kinetic action of the winding ramp, 1/2 (PW)^T K (PW) / beta, (chains,)."""

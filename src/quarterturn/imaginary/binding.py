@@ -38,7 +38,7 @@ def local_function(
 
 def one_path(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> OnePath | None:
     """The problem of one degree of freedom, or None where the action has more, or a drift that depends on the path."""
-    if len(euclidean.variables) != 1 or euclidean.drift[0].paths:
+    if len(euclidean.variables) != 1 or euclidean.drift[0].paths or euclidean.sources:
         return None
     scalars = coupling_values(couplings)
     period = euclidean.periods[0]

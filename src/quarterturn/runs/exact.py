@@ -7,16 +7,19 @@ form (a modulus of a mean, a third moment of a mean) has no exact value, and Non
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from quarterturn.actions.expression import Atom, Expression, Function, Symbol
+from quarterturn.actions.findings import without_sources
 from quarterturn.actions.model import Bracket, EuclideanAction, Measurement
 from quarterturn.compiled.observables import lattice_offsets
 from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.binding import local_function, one_path
 from quarterturn.imaginary.transfer import Transfer, transfer
+from quarterturn.lattice.sources import source_values
 
 Floats = NDArray[np.float64]
 ENERGY = Symbol("observable", "energy")
@@ -33,6 +36,8 @@ class ExactColumn:
         problem = one_path(euclidean, couplings)
         if problem is None:
             self.reason = "the transfer matrix is solved for one path; there is no exact column for several"
+            if euclidean.sources:
+                self.reason = "a source depends on time: only log Z[J] of one path has an exact value"
             return
         try:
             self.transfer = transfer(problem, spacing, sites)
@@ -62,6 +67,36 @@ class ExactColumn:
             return None
         combined = self._combine(measurement, values, constants)
         return None if combined is None else np.broadcast_to(combined, (steps,))
+
+    def functional(self) -> float | None:
+        """log Z[J]/Z[0] by one factor exp(-a [V(q, J_i) - V(q, 0)]) at each site; None where there is none."""
+        silent = replace(self.euclidean, sources=(), potential=without_sources(self.euclidean.potential))
+        problem = one_path(silent, self.couplings)
+        if problem is None:
+            return None
+        geometry = (self.sites,), (self.spacing,)
+        rows = source_values(self.euclidean.sources, self.couplings, ("t",), *geometry)
+        try:
+            solved = transfer(problem, self.spacing, self.sites)
+            ratio = solved.product([(n, self._kick(rows[:, n])) for n in range(self.sites)])
+        except SpectrumError:
+            return None
+        value = float(np.real(ratio))
+        return float(np.log(value)) if np.isfinite(value) and value > 0 else None
+
+    def _kick(self, strengths: Floats):  # type: ignore[no-untyped-def]
+        change = self.euclidean.potential - without_sources(self.euclidean.potential)
+        values = {s.name: float(v) for s, v in zip(self.euclidean.sources, strengths, strict=True)}
+        given = change.substitute(
+            lambda a: (
+                Expression.of(Symbol("coupling", f"source {a.name}"))
+                if isinstance(a, Symbol) and a.kind == "source"
+                else None
+            )
+        )
+        couplings = {**self.couplings, **{f"source {name}": v for name, v in values.items()}}
+        weight = local_function(given, self.euclidean, couplings)
+        return lambda q: np.exp(-self.spacing * weight(q))
 
     def average_phase(self) -> float | None:
         return None if self.transfer is None else float(self.transfer.average_phase())

@@ -9,8 +9,10 @@ from fractions import Fraction
 import numpy as np
 from numpy.typing import NDArray
 
-from quarterturn.actions.expression import Expression
+from quarterturn.actions.circles import phase_of
+from quarterturn.actions.expression import Expression, apply
 from quarterturn.actions.model import Bracket, EuclideanAction, Measurement
+from quarterturn.actions.printing import notation
 from quarterturn.compiled.observables import Observables, lattice_offsets
 from quarterturn.compiled.target import Target
 
@@ -81,7 +83,17 @@ def lay_out(measurements: Sequence[Measurement], euclidean: EuclideanAction, sit
         for bracket in brackets:
             (free if bracket.free else fixed).setdefault((bracket.groups, bracket.over), bracket)
     is_complex = any(a.terms for a in euclidean.drift)
+    if not fixed and not is_complex:  # curves alone: something has to tell whether the chains agree
+        watched = _watched(euclidean)
+        fixed[(watched.groups, watched.over)] = watched
     return Layout(tuple(fixed.values()), tuple(free.values()), sites // 2 + 1, is_complex)
+
+
+def _watched(euclidean: EuclideanAction) -> Bracket:
+    """The mean of the first variable, or of its cosine on a circle."""
+    variable, period = euclidean.variables[0], euclidean.periods[0]
+    watched = Expression.of(variable) if period is None else apply("cos", phase_of(variable, period))
+    return Bracket(f"<{notation(watched)}>", ((NOW, watched),))
 
 
 def observables(layout: Layout, target: Target, spacing: float) -> Observables:

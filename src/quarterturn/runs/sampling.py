@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import threading
 import time as clock
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
@@ -23,7 +23,8 @@ from quarterturn.lattice.path import discretise
 from quarterturn.records.canonical import record_name
 from quarterturn.runs import doubts
 from quarterturn.runs.evaluation import Evaluator, is_odd
-from quarterturn.runs.exact import ExactColumn
+from quarterturn.runs.exact import ENERGY, ExactColumn
+from quarterturn.runs.functional import functionals, measured, node_draws
 from quarterturn.runs.interruption import stoppable
 from quarterturn.runs.layout import Layout, lay_out, observables
 from quarterturn.runs.progress import Progress, Watcher
@@ -96,6 +97,7 @@ def sample(
     exact = ExactColumn(action.euclidean, settings.couplings, settings.sites, settings.spacing)
     session = _Session(action, settings, layout, wanted, exact, progress, clock.monotonic())
     session.check_labels()
+    _refuse_energy(action)
     event = stop or threading.Event()
     with stoppable(event):
         session.say("compiling" if program.compilations == 0 else "warming up", None)
@@ -108,7 +110,27 @@ def sample(
             event.is_set,
             session.satisfied,
         )
+        session.functionals = _functionals(session, chain, int(seed), event.is_set)
     return session.finish(chain, int(seed))
+
+
+def _functionals(session: _Session, chain: Chain, seed: int, interrupted: Callable[[], bool]) -> dict[str, Estimate]:
+    """log Z[J], sampled on a ladder of source strengths after the run itself."""
+    wanted = functionals(session.action)
+    if not wanted or chain.cut_in_warm_up:
+        return {}
+    session.say("climbing the ladder of source strengths", chain)
+    settings = session.settings
+    asked = Request(seed, node_draws(chain.draws))
+    edges = session.edges(chain.program)
+    e = measured(session.action, settings.couplings, settings.spacing, chain.program, asked, edges, interrupted)
+    return {m.label: e.with_exact(session.exact.functional()) for m in wanted}
+
+
+def _refuse_energy(action: Action) -> None:
+    for m in action.measurements if action.euclidean.sources else ():
+        if any(ENERGY in f.atoms() for b in m.brackets for _, f in b.groups):
+            raise RequestError(f"{m.label}: a source depends on time, so that energy is not conserved; leave it out")
 
 
 def _doubted(e: Estimate) -> Estimate:
@@ -142,6 +164,7 @@ class _Session:
     busy: float = 0.0  # seconds spent evaluating, kept a small share of the run
     met: bool = False
     basins: doubts.Basins | None = None
+    functionals: dict[str, Estimate] = field(default_factory=dict)
 
     # --- before ---------------------------------------------------------------------------------------------
     def check_labels(self) -> None:
@@ -267,6 +290,9 @@ class _Session:
         for m in self.action.measurements:
             if m.kind == "curve":
                 curves[m.label] = replace(evaluator.curve(m), exact=self.exact.curve(m, constants, self.layout.steps))
+                continue
+            if m.kind == "functional":
+                numbers[m.label] = self.functionals[m.label]
                 continue
             e = gaps[m.label].estimate if m.kind == "gap" else evaluator.number(m)
             numbers[m.label] = e.with_exact(self.exact.number(m, constants))

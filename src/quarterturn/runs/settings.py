@@ -75,12 +75,11 @@ def resolve(action: Action, keywords: Mapping[str, Any]) -> Settings:
 
 
 def require_paths(action: Action, what: str) -> None:
-    """Raises ActionError for what the rooms of paths can't treat: fields, lattice actions, spheres, sources."""
+    """Raises ActionError for what the rooms of paths can't treat: fields, lattice actions, spheres."""
     euclidean = action.euclidean
     if euclidean.dimension > 1:
         raise ActionError(f"{what} of fields on space is not available yet; {action.name} is declared and turned only")
-    for there, words in ((euclidean.links, "a lattice action SE"), (euclidean.spheres, "unit vectors"),
-                         (euclidean.sources, "an action with a source")):  # fmt: skip
+    for there, words in ((euclidean.links, "a lattice action SE"), (euclidean.spheres, "unit vectors")):
         if there:
             raise ActionError(f"{what} of {words} is not available yet; {action.name} is declared and turned only")
 

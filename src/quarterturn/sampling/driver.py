@@ -40,6 +40,7 @@ class Request:
     seed: int
     draws: int | None = None
     seconds: float | None = None
+    strength: float = 1.0  # of the sources
 
 
 @dataclass
@@ -82,7 +83,7 @@ def run_chains(
     """
     began = time.monotonic()
     with double():
-        p = program.target.parameters(couplings, spacing)
+        p = program.target.parameters(couplings, spacing, request.strength)
         points = PointAction(program.target, p)
         recipe = first_recipe(points)
         state = start_state(points, program.chains, request.seed, recipe)
