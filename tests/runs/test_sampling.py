@@ -217,5 +217,5 @@ def test_a_wall_is_named_and_not_mistaken_for_a_broken_integrator() -> None:
 
 
 def test_a_curve_can_be_measured_alone() -> None:
-    run = qt.sample(qt.action("q(t)\nL = 1/2 q'^2 - q^2\nlattice 32, a = 0.25\nmeasure <q(t) q(0)>"), draws=64)
+    run = sample(action("q(t)\nL = 1/2 q'^2 - q^2\nlattice 32, a = 0.25\nmeasure <q(t) q(0)>"), draws=64)
     assert list(run) == ["<q(t) q(0)>"] and np.isfinite(run["<q(t) q(0)>"].error).all()
