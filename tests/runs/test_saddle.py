@@ -2,13 +2,13 @@
 
 import math
 import sys
-from dataclasses import replace
-from fractions import Fraction
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 import pytest
+from scipy.integrate import quad
+from scipy.optimize import brentq, minimize
 
 from quarterturn.errors import ActionError, RequestError, SaddleError
 from quarterturn.records.verdict import compare
@@ -88,6 +88,57 @@ def test_the_inverted_quartic_decays_to_both_sides(g: str) -> None:
     rate = found["decay rate"]
     assert rate is not None
     assert rate / 2 == pytest.approx(exact["lead"], rel=1e-8)
+
+
+def test_several_barriers_in_a_row_are_passed_in_one_bounce() -> None:
+    """S = 2 int sqrt(2 V) dq up to the turning point, by SciPy's quadrature."""
+
+    def potential(q: float) -> float:
+        return q**2 / 2 * (1 - q / 6) + (1 - math.cos(3 * q)) / 2
+
+    end = brentq(potential, 5, 6.5)
+    exact = 2 * quad(lambda q: math.sqrt(2 * max(potential(q), 0)), 0, end, limit=400)[0]
+    bumpy = action("q(t)\nL = 1/2 q'^2 - 1/2 q^2 (1 - q/6) - (1 - cos(3 q))/2")
+    found = saddle(bumpy, vacuum=0)
+    assert found["S"] == pytest.approx(exact, rel=1e-9)
+    assert found["negative modes"] == 1
+
+
+def test_a_curved_valley_agrees_with_minimising_the_lattice_action() -> None:
+    """Two coupled paths, by SciPy's minimiser on three lattices, extrapolated; none of our code."""
+    k, c, length = 2.0, 0.4, 14.0
+
+    def potential(x: np.ndarray, y: np.ndarray) -> np.ndarray:
+        return (x**2 - 1) ** 2 + k / 2 * (y - c * x) ** 2 * (1 + x**2) + 0.3 * (y - c * x) * (1 - x**2)
+
+    def slope(x: np.ndarray, y: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+        w = y - c * x
+        fy = k * w * (1 + x**2) + 0.3 * (1 - x**2)
+        return 4 * x * (x**2 - 1) + k * w**2 * x - 0.6 * w * x - c * fy, fy
+
+    def least(sites: int) -> float:
+        a = length / sites
+        t = (np.arange(sites + 1) - sites / 2) * a
+        start = np.stack([np.tanh(t), c * np.tanh(t)])
+        start[:, [0, -1]] = np.array([[-1.0, 1.0], [-c, c]])
+
+        def cost(free: np.ndarray) -> tuple[float, np.ndarray]:
+            path = start.copy()
+            path[:, 1:-1] = free.reshape(2, -1)
+            step = np.diff(path, axis=1)
+            total = np.sum(step**2) / (2 * a) + a * np.sum(potential(*path))
+            force = a * np.stack(slope(*path))[:, 1:-1] - np.diff(step, axis=1) / a
+            return float(total), force.ravel()
+
+        options = {"maxiter": 20000, "maxfun": 40000, "ftol": 1e-15, "gtol": 1e-9}
+        return float(minimize(cost, start[:, 1:-1].ravel(), jac=True, method="L-BFGS-B", options=options).fun)
+
+    coarse, fine = least(100), least(200)
+    valley = action(
+        "x(t)\ny(t)\nL = 1/2 x'^2 + 1/2 y'^2 - V(x, y)\n"
+        f"V(x, y) = (x^2 - 1)^2 + {k}/2 (y - {c} x)^2 (1 + x^2) + 0.3 (y - {c} x) (1 - x^2)"
+    )
+    assert saddle(valley)["S"] == pytest.approx(fine + (fine - coarse) / 3, rel=2e-5)
 
 
 # --- against what else this program knows ----------------------------------------------------------------------
@@ -196,19 +247,48 @@ def test_no_scale_is_built_in(cubic: DeclaredAction, scale: float, height: float
 
 
 # --- fields -----------------------------------------------------------------------------------------------------
-def test_a_field_decays_by_a_bubble(cubic: DeclaredAction) -> None:
-    """An action with three coordinates and two speeds: S scales with the product of the roots of the coefficients."""
-    body = action("phi(t)\nLE = 2 phi'^2 + 1/2 phi^2 - 1/6 phi^3")
-    slower = ((body.euclidean.mass[0][0].scaled(Fraction(1, 4)),),)
-    turned = replace(body.euclidean, coordinates=("t", "x", "y"), stiffness=(slower, slower))
-    found = saddle(replace(body, euclidean=turned))
-    unit = radial_bounce(body.euclidean.potential, body.euclidean.variables[0], {}, 3)
+@pytest.mark.parametrize(("coupling", "key"), [("1/4", "a"), ("1/4!", "b")])
+def test_the_field_without_a_scale_has_its_exact_action(coupling: str, key: str) -> None:
+    """Fubini, Nuovo Cim. A 34 (1976) 521; Lipatov, Sov. Phys. JETP 45 (1977) 216."""
+    found = saddle(action(f"phi(t, x, y, z)\nL = 1/2 (d phi)^2 + {coupling} lam phi^4\nlam = 1"))
+    assert found["S"] == pytest.approx(float(value("fubini-lam1")["value"][key]), rel=1e-8)
+    assert any("every size" in w for w in found.warnings)
+
+
+def test_a_field_between_two_vacua_tends_to_the_thin_wall_and_is_verified() -> None:
+    """Coleman, Phys. Rev. D 15 (1977) 2929, with sigma = 2/3."""
+    body = "phi(t, x)\nL = 1/2 (d phi)^2 - 1/8 (phi^2 - 1)^2 - eps/2 (phi - 1)\neps = 0.1\nlattice 16 x 16"
+    found = saddle(action(body), eps=0.02)
+    assert found["S"] == pytest.approx(math.pi * (2 / 3) ** 2 / 0.02, rel=0.004)
+    assert found["S"] == pytest.approx(found["S, thin wall"], rel=0.004)
+    assert compare(found.record, rerun(found.record)).answer == "identical"
+
+
+@pytest.mark.parametrize(
+    ("body", "words"),
+    [
+        ("phi[2](t, x)\nL = 1/2 d_mu phi . d^mu phi - 1/2 phi.phi", "one real scalar field; .* 2 real components"),
+        ("phi(t, x)\nL = 1/2 (d phi)^2 - 1/8 (phi^2 - 1)^2", "level"),
+        ("phi(t, x)\nL = 1/2 (d phi)^2 - 1/2 phi^2 - phi^4", "no barrier"),
+        ("phi(t, x)\nL = 1/2 (d phi)^2 + phi^4", "no mass"),
+    ],
+)
+def test_a_field_without_a_bounce_is_refused_with_the_reason(body: str, words: str) -> None:
+    with pytest.raises(SaddleError, match=words):
+        saddle(action(body))
+
+
+def test_a_field_with_two_speeds_decays_by_a_bubble() -> None:
+    """S scales with the product of the roots of the coefficients."""
+    quick = action("phi(t, x, y)\nLE = 2 (d_t phi)^2 + 1/2 (d_x phi)^2 + 1/2 (d_y phi)^2 + 1/2 phi^2 - 1/6 phi^3")
+    found = saddle(quick)
+    unit = radial_bounce(quick.euclidean.potential, quick.euclidean.variables[0], {}, 3)
     assert found.kind == "field bounce"
     assert found["S"] == pytest.approx(2 * unit.action, rel=1e-9)
     assert found["radius"] == pytest.approx(2 * unit.radius, rel=1e-9)
     assert [c.style for c in found.curves] == ["path", "potential", "course"]
     with pytest.raises(RequestError, match="beta is for paths"):
-        saddle(found.action, beta=3)
+        saddle(quick, beta=3)
 
 
 # --- what is shown, recorded, verified -------------------------------------------------------------------------
@@ -310,7 +390,7 @@ def test_a_wrong_sign_of_the_kinetic_term_is_still_an_error() -> None:
         ({"beta": -1}, RequestError, "beta must be positive"),
         ({"beta": 9}, SaddleError, "nothing decays"),
         ({"kind": "kink"}, RequestError, "kind must be"),
-        ({"kind": "bounce"}, SaddleError, "no bounce leads out"),
+        ({"kind": "bounce"}, SaddleError, "no bounce was found"),
         ({"vacuum": "left"}, RequestError, "vacuum must be"),
         ({"vacuum": (1, 2)}, RequestError, "vacuum must be one finite number"),
     ],

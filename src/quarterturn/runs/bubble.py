@@ -110,7 +110,7 @@ def _facts(action: Action, found: RadialBounce, scales: Sequence[float]) -> list
         symmetry += ", each in units of the root of its coefficient; lengths are along t"
     method = "collocation with Newton's method, continued in the dimension from the bounce of a path, without shooting"
     if found.free_size:
-        method = "initial-value problem from phi(0) = 1; the potential has no scale"
+        method = "initial-value problem from 1 at the centre; the potential has no scale"
     return [
         ("symmetry", symmetry),
         ("method", method),
@@ -124,7 +124,7 @@ def _doubts(found: RadialBounce) -> list[str]:
         return [
             "the potential has no scale: there is a bounce of every size with this action, a continuous "
             "family, of which "
-            "the one with phi = 1 at its centre is shown; a rate needs an integral over sizes and quantum corrections"
+            "the one that is 1 at its centre is shown; a rate needs an integral over sizes and quantum corrections"
         ]
     if found.negative_mode is None:
         return ["no negative mode was found: this may be no bounce"]

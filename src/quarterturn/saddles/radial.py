@@ -30,6 +30,7 @@ from quarterturn.saddles.problem import Problem, field_problem
 from quarterturn.saddles.profile import Profile, RadialBounce, bubble, wall_radius
 from quarterturn.saddles.rest import Rest, curved_minima, rest_points
 from quarterturn.saddles.search import chosen
+from quarterturn.saddles.turning import run_back
 
 Floats = NDArray[np.float64]
 BEYOND = 16.0  # omega r beyond the wall, where the mesh is joined to the linear solution
@@ -130,11 +131,14 @@ def _one_dimensional(land: Landscape, false: Rest, barrier: Rest) -> Profile | N
     """The bounce of the path, as a function of the distance from its turning point; None where there is none."""
     omega = float(false.frequencies[0])
     branch = follow(land.problem, barrier, false, BEYOND / omega)
-    if not (branch.steps and rests_at(branch.steps[-1], false)):
-        return None
-    half = prolonged(land.problem, branch.steps[-1], false, max(BEYOND / omega + branch.steps[-1].length, 0.0))
-    if half is None:
-        return None
+    half = None
+    if branch.steps and rests_at(branch.steps[-1], false):
+        half = prolonged(land.problem, branch.steps[-1], false, BEYOND / omega + branch.steps[-1].length)
+    if half is None:  # several barriers in a row
+        way = run_back(land, false, float(np.sign(barrier.x[0] - false.x[0])), 2 * BEYOND / omega)
+        if way is None:
+            return None
+        half = way[0]
     x = half.x[0] if abs(half.x[0, -1] - false.x[0]) < abs(half.x[0, 0] - false.x[0]) else half.x[0, ::-1]
     r = half.length * midpoints(half.points)
     r, phi = np.concatenate([[0.0], r]), np.concatenate([[x[0]], x])

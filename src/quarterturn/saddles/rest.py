@@ -73,7 +73,8 @@ def rest_points(problem: Problem) -> list[Rest]:
     return sorted(found, key=lambda r: (round(r.height / (scale or 1.0), 9), *map(float, r.x)))
 
 
-def _samples(problem: Problem) -> Floats:
+def samples(problem: Problem) -> Floats:
+    """Points of one variable at which its potential is looked at, ascending."""
     scale = float(problem.to_q[0, 0])
     if problem.periods[0] is not None:
         return np.linspace(-1.5, 1.5, POINTS_LINEAR) * problem.periods[0] / scale
@@ -83,7 +84,7 @@ def _samples(problem: Problem) -> Floats:
 
 
 def _one(problem: Problem) -> Iterator[Floats]:
-    x = _samples(problem)
+    x = samples(problem)
     slope = problem.slope(x[None])[0]
 
     def at(point: float) -> float:

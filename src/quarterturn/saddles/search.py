@@ -17,6 +17,7 @@ from quarterturn.saddles.instanton import instantons
 from quarterturn.saddles.landscape import Landscape
 from quarterturn.saddles.rest import Rest
 from quarterturn.saddles.saddle import Saddle, bounce, instanton, static
+from quarterturn.saddles.turning import run_back
 
 Floats = NDArray[np.float64]
 ZERO_TEMPERATURE = 25.0  # omega beta / 2 beyond which exp(-omega beta) is below rounding
@@ -115,22 +116,25 @@ def escape(land: Landscape, vacuum: Rest, beta: float | None) -> list[Saddle]:
         found += [replace(s, turning=tuple(branch.turning)) for s in dressed]
         if not cold and beta is not None:
             found.append(static(land.problem, vacuum, barrier, beta))
-    if not found and any(abs(m.height - vacuum.height) < NEARLY * land.scale for m in _others(land, vacuum)):
-        raise SaddleError(
-            f"the minimum at {_place(land, vacuum)} and another are so nearly level that its bounce waits too long "
-            "to be found; nothing decays by such a difference: levels give the pair"
-        )
+    if not found and cold and land.problem.size == 1:
+        ways = [way for side in (-1.0, 1.0) if (way := run_back(land, vacuum, side, length)) is not None]
+        found = [bounce(land.problem, half, vacuum, barrier, None) for half, barrier in ways]
     if not found:
-        raise SaddleError(
-            f"no bounce leads out of the minimum at {_place(land, vacuum)}: beyond its barriers the "
-            "potential is nowhere "
-            "lower before the next one; give vacuum=… to start from a higher minimum"
-        )
+        raise _no_way_out(land, vacuum)
     return sorted(found, key=lambda s: float(f"{s.action:.9g}"))
 
 
-def _others(land: Landscape, vacuum: Rest) -> list[Rest]:
-    return [m for m in land.minima if m.height != vacuum.height]
+def _no_way_out(land: Landscape, vacuum: Rest) -> SaddleError:
+    others = [m for m in land.minima if 0 < abs(m.height - vacuum.height) < NEARLY * land.scale]
+    if others:
+        return SaddleError(
+            f"the minimum at {_place(land, vacuum)} and another are so nearly level that its bounce waits too long "
+            "to be found; nothing decays by such a difference: levels give the pair"
+        )
+    return SaddleError(
+        f"no bounce was found that leads out of the minimum at {_place(land, vacuum)}: where nothing beyond its "
+        "barriers is lower there is none; give vacuum=… to start from a higher minimum, or use levels"
+    )
 
 
 def _followed(land: Landscape, barrier: Rest, vacuum: Rest, length: float, cold: bool) -> tuple[Branch, list[Half]]:
