@@ -219,6 +219,15 @@ def test_the_thermal_rate_agrees_with_the_period_of_the_orbit(cubic: DeclaredAct
     assert middle["decay rate"] == pytest.approx(expected, rel=1e-4)
 
 
+@pytest.mark.parametrize("beta", [3.0, 8.0])
+def test_a_spectator_does_not_change_a_thermal_rate(cubic: DeclaredAction, beta: float) -> None:
+    pair = action("x(t)\ny(t)\nL = 1/2 x'^2 + 2 y'^2 - 1/2 x^2 (1 - x/3) - 3 y^2")
+    one, two = saddle(cubic, beta=beta), saddle(pair, beta=beta)
+    assert two.kind == one.kind
+    assert two["S"] == pytest.approx(one["S"], rel=1e-10)
+    assert two["decay rate"] == pytest.approx(one["decay rate"], rel=1e-7)
+
+
 def test_next_to_the_crossover_the_rate_is_withheld(cubic: DeclaredAction) -> None:
     found = saddle(cubic, beta=6.4)
     assert found["decay rate"] is None

@@ -252,7 +252,7 @@ def _rate_row(label: str, latex: str, value: float | None, error: float, why: st
 def _rows(first: Saddle) -> list[Row]:
     rows = [
         Row("S", "S", first.action, first.action_error),
-        *([Row("duration", r"\Delta t", first.duration, 1e-9 * first.duration)] if first.norm else []),
+        *([Row("duration", r"\Delta t", first.duration, first.duration_error)] if first.norm else []),
         Row("omega", r"\omega", float(first.vacuum.frequencies[0])),
     ]
     if first.modes is not None:
@@ -284,6 +284,7 @@ def _facts(first: Saddle, found: Sequence[Saddle]) -> list[tuple[str, str]]:
     determinant = "Gelfand and Yaglom, without the zero mode, over that of the oscillator at the minimum"
     return [
         ("method", how[first.kind]),
+        *([("grid", f"{len(first.t)} points, t = {first.t[0]:.6g} to {first.t[-1]:.6g}")] if first.norm else []),
         *([("determinant", determinant)] if first.kind != "static" else []),
         *([("other saddles", told)] if told else []),
         ("errors", "numerical; corrections to one loop are of relative order 1/S and not in them"),

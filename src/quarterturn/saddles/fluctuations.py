@@ -257,7 +257,8 @@ def _on_lattice(operator: Operator, harmonic: Floats, zero_modes: int, sites: in
     matrix = _lattice_matrix(operator.curvature(times), a, operator.ends)
     free = _lattice_matrix(operator.harmonic(harmonic).curvature(times), a, operator.ends)
     floor = float(np.min(np.linalg.eigvalsh(operator.curvature(times)))) - 0.1 * float(np.max(np.abs(harmonic)))
-    modes = np.sort(eigsh(matrix, k=MODES, sigma=floor, which="LM", v0=np.ones(n * sites), return_eigenvectors=False))
+    start = np.random.default_rng(1).normal(size=n * sites)  # of no symmetry, or modes would be missed; the same always
+    modes = np.sort(eigsh(matrix, k=MODES, sigma=floor, which="LM", v0=start, return_eigenvectors=False))
     (phase, log), (free_phase, free_log) = _log_determinant(matrix), _log_determinant(free)
     ratio = float(np.real(phase / free_phase)) * np.exp(log - free_log)
     for zero in sorted(modes, key=abs)[:zero_modes]:

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from quarterturn.saddles.branch import Half
-from quarterturn.saddles.cosine import at, kinetic, midpoints
+from quarterturn.saddles.cosine import at, kinetic, midpoints, tail
 from quarterturn.saddles.fluctuations import Determinant, Modes, Operator, gelfand_yaglom, lattice_modes
 from quarterturn.saddles.problem import Problem
 from quarterturn.saddles.rest import Rest
@@ -34,6 +34,7 @@ class Saddle:
     action_error: float
     norm: float  # integral of x'^2
     duration: float  # root mean square of t, weighted with x'^2
+    duration_error: float
     vacuum: Rest
     end: Rest | None = None  # of an instanton: where it leads
     barrier: Rest | None = None  # of a bounce: what it leads over
@@ -68,6 +69,7 @@ def instanton(problem: Problem, half: Half, start: Rest, end: Rest) -> Saddle:
         action_error=abs(direct - action) + 1e-14 * action,
         norm=action,
         duration=duration,
+        duration_error=duration * _unresolved(half),
         vacuum=start,
         end=end,
         ratio=gelfand_yaglom(whole, free, 1) if alike else None,
@@ -102,6 +104,7 @@ def bounce(problem: Problem, half: Half, vacuum: Rest, barrier: Rest, beta: floa
         action_error=(abs(action - norm) if beta is None else 2 * half.length * float(np.std(energy))) + 1e-14 * action,
         norm=norm,
         duration=duration,
+        duration_error=duration * _unresolved(half),
         vacuum=vacuum,
         barrier=barrier,
         beta=beta,
@@ -128,6 +131,7 @@ def static(problem: Problem, vacuum: Rest, barrier: Rest, beta: float) -> Saddle
         action_error=1e-14 * action,
         norm=0.0,
         duration=0.0,
+        duration_error=0.0,
         vacuum=vacuum,
         barrier=barrier,
         beta=beta,
@@ -135,6 +139,11 @@ def static(problem: Problem, vacuum: Rest, barrier: Rest, beta: float) -> Saddle
         modes=Modes(values, 1e-14 * np.abs(values), ratio, 1e-13 * abs(ratio), 0),
         mark=tuple(barrier.x),
     )
+
+
+def _unresolved(half: Half) -> float:
+    """A relative error from what is left in the highest cosine coefficients."""
+    return 1e-12 + 100 * tail(half.x)
 
 
 def _window(problem: Problem, curvature: Callable[[Floats], Floats], vacuum: Rest, duration: float) -> Operator:
