@@ -8,8 +8,8 @@ import pytest
 
 SOURCE = Path(__file__).parent.parent / "src" / "quarterturn"
 ORDER = [
-    "errors", "notation", "actions", "lattice", "compiled", "sampling", "imaginary", "saddles", "estimates", "records",
-    "reports", "runs", "magics", "cli",
+    "errors", "units", "notation", "actions", "lattice", "compiled", "sampling", "imaginary", "saddles", "estimates",
+    "records", "reports", "runs", "magics", "cli",
 ]  # fmt: skip
 NEVER = {
     "imaginary": {"lattice", "compiled", "sampling"},

@@ -13,12 +13,18 @@ MEASURES = {1: r"d\tau", 2: r"d\tau\, dx", 3: r"d\tau\, d^2x", 4: r"d\tau\, d^3x
 
 
 def canonical_text(
-    paths: Mapping[str, Path], coordinates: tuple[str, ...], form: str, action: Expression, sources: Iterable[Source]
+    paths: Mapping[str, Path],
+    coordinates: tuple[str, ...],
+    form: str,
+    action: Expression,
+    sources: Iterable[Source],
+    units: tuple[str, ...] = (),
 ) -> str:
-    """Degrees of freedom, sources and the action, one a line, in a fixed order."""
+    """Degrees of freedom, sources, units and the action, one a line, in a fixed order."""
     lines = [_declared(path, coordinates) for path in paths.values()]
     given = [f"{s.name}({', '.join(s.coordinates)}) = {notation(s.body)}" for s in sources]
-    return "\n".join([*sorted(lines), *sorted(given), f"{form} = {notation(action)}"])
+    named = [f"units {', '.join(units)}"] if units else []
+    return "\n".join([*sorted(lines), *sorted(given), *named, f"{form} = {notation(action)}"])
 
 
 def _declared(path: Path, coordinates: tuple[str, ...]) -> str:

@@ -15,13 +15,24 @@ from quarterturn.actions.canonical import canonical_text, digest, on_spheres, ty
 from quarterturn.actions.circles import phase_of
 from quarterturn.actions.couplings import Assigned, assigned
 from quarterturn.actions.degrees import degrees
-from quarterturn.actions.dimensions import coupling_dimensions
+from quarterturn.actions.dimensions import Dimensions, dimensions
 from quarterturn.actions.expression import IMAGINARY, ZERO, Atom, Expression, PathAtom
 from quarterturn.actions.findings import check, phase_finding
 from quarterturn.actions.geometry import geometry_of
+from quarterturn.actions.in_units import HBAR, counted, counted_measurements, system_of, through_the_seam, with_hbar
 from quarterturn.actions.lattice_form import joined, sorted_links
 from quarterturn.actions.measurements import MeasureScope, measurement_of
-from quarterturn.actions.model import Action, Coupling, EuclideanAction, Finding, Geometry, Measurement, Path, Source
+from quarterturn.actions.model import (
+    Action,
+    Coupling,
+    EuclideanAction,
+    Finding,
+    Geometry,
+    Measurement,
+    Path,
+    Source,
+    UnitSystem,
+)
 from quarterturn.actions.printing import notation
 from quarterturn.actions.scope import Scope
 from quarterturn.actions.turn import (
@@ -47,13 +58,12 @@ from quarterturn.notation.tree import (
     Metric,
     PathStatement,
     Statement,
-    Units,
 )
 from quarterturn.notation.vocabulary import Names
+from quarterturn.units.system import System
 
 MOST_SYMMETRIC = 6  # variables up to which all sign vectors are tried
 OTHER_NAMES_OF_L = ("S", "Lagrangian", "Le", "L_E", "S_E", "Lag", "action")
-NATURAL = ((), ("natural",))
 
 
 def declare(text: str, name: str = "action") -> Action:
@@ -138,13 +148,12 @@ class _Declaration:
 
     # --- the whole ------------------------------------------------------------------------------------------
     def action(self) -> Action:
-        for s in self.of(Units):
-            if s.names not in NATURAL:
-                raise self.error("units other than natural ones (hbar = c = 1) are not available yet", s.span)
         started = self.of(Dynamics) or self.statements
         paths, coordinates = degrees(self.text, self.of(PathStatement), self.of(Constraint), started[0].span)
         dynamics = self.dynamics()
+        system = system_of(self.text, self.statements, coordinates)
         given = assigned(self.text, self.statements, paths, coordinates)
+        given.couplings = with_hbar(given.couplings, system)
         metric = self.metric(len(coordinates))
         scope = self.scope(paths, coordinates, given, metric, dynamics)
         variables = tuple(atom for path in paths.values() for atom in path.atoms)
@@ -157,16 +166,19 @@ class _Declaration:
         lagrangian, bare = self.turned(on_spheres(written, paths), dynamics, paths, variables, scope)
         geometry = geometry_of(self.text, self.of(LatticeStatement), coordinates)
         measurements, used = self.measurements(scope, paths, geometry, dynamics, _defaults(given.couplings))
-        couplings = _with_dimensions(given.couplings, bare, paths)
+        known = _dimensions(bare, paths, system)
+        couplings, bare = counted(given.couplings, known), through_the_seam(bare, system)
         found = (*check(bare, _defaults(couplings)), *phase_finding(bare))
         findings = tuple(Finding(f.severity, f.topic, f.message, f.span or dynamics.span) for f in found)
         notes = self.notes(scope, bare.findings, given, sources, used)
         euclidean = _completed(bare, paths, sources, (*findings, *notes))
         form = dynamics.form if dynamics.form in ("LE", "SE") else "L"
-        canonical = canonical_text(paths, coordinates, form, lagrangian, sources)
+        canonical = canonical_text(paths, coordinates, form, lagrangian, sources, system.names)
         return Action(
-            self.name, self.text, tuple(paths.values()), metric, form, lagrangian, couplings, geometry, measurements,
-            euclidean, digest(canonical), canonical, typeset(form, lagrangian, len(coordinates)), files=scope.files,
+            self.name, self.text, tuple(paths.values()), metric, form, lagrangian, couplings, geometry,
+            counted_measurements(measurements, known), euclidean, digest(canonical), canonical,
+            typeset(form, lagrangian, len(coordinates)), UnitSystem(system.names) if system.names else None,
+            scope.files,
         )  # fmt: skip
 
     def real(self, written: Expression, dynamics: Dynamics) -> Expression:
@@ -244,7 +256,7 @@ class _Declaration:
             )
             found.append(Finding("note", "source", words, s.span))
         for n, c in given.couplings.items():
-            if n not in scope.used | used:
+            if n not in scope.used | used | {HBAR}:
                 found.append(Finding("note", "couplings", f"{n} has a value but does not occur in the action", c.span))
         named = {s.name for s in sources}
         for n, a in given.sources.items():
@@ -324,12 +336,9 @@ def _completed(
     )  # fmt: skip
 
 
-def _with_dimensions(
-    couplings: Mapping[str, Coupling], euclidean: EuclideanAction, paths: Mapping[str, Path]
-) -> dict[str, Coupling]:
-    angles = frozenset(name for name, path in paths.items() if path.period is not None)
-    dimensions = coupling_dimensions(whole_action(euclidean), angles)
-    return {n: Coupling(n, c.default, dimensions.get(n), c.span) for n, c in sorted(couplings.items())}
+def _dimensions(euclidean: EuclideanAction, paths: Mapping[str, Path], system: System) -> Dimensions:
+    pure = frozenset(name for name, path in paths.items() if path.period is not None or path.kind == "unit")
+    return dimensions(whole_action(euclidean), euclidean.dimension, pure, system, bool(euclidean.links))
 
 
 def _symmetries(

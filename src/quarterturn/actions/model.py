@@ -12,6 +12,8 @@ from fractions import Fraction
 
 from quarterturn.actions.expression import Expression, PathAtom
 from quarterturn.errors import Span
+from quarterturn.units.quantity import UNKNOWN, Quantity
+from quarterturn.units.system import System, system
 
 
 @dataclass(frozen=True, slots=True)
@@ -59,7 +61,7 @@ class Edge:
 
 @dataclass(frozen=True, slots=True)
 class UnitSystem:
-    """The units of a cell, such as amu, angstrom, 1/cm: one name each for mass, length, and time or energy."""
+    """The units of a cell, such as amu, angstrom, 1/cm, in the order of `units.system`; one name: a natural scale."""
 
     names: tuple[str, ...]
 
@@ -72,6 +74,7 @@ class Coupling:
     default: float
     dimension: Fraction | None = None
     span: Span | None = field(default=None, compare=False)
+    quantity: Quantity = UNKNOWN  # what its number counts
 
 
 @dataclass(frozen=True, slots=True)
@@ -140,6 +143,7 @@ class Measurement:
     operators: tuple[Expression, ...] = ()
     source: str = ""  # canonical notation of the whole item, such as G(t) = <q(t) q(0)>
     span: Span | None = field(default=None, compare=False)
+    quantity: Quantity = field(default=UNKNOWN, compare=False)  # what its number counts
 
 
 @dataclass(frozen=True, slots=True)
@@ -175,6 +179,11 @@ class Action:
     @property
     def findings(self) -> tuple[Finding, ...]:
         return self.euclidean.findings
+
+    @property
+    def system(self) -> System:
+        """The units of its numbers."""
+        return system(self.units.names if self.units else ())
 
     @property
     def coordinates(self) -> tuple[str, ...]:

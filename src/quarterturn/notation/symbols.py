@@ -46,7 +46,7 @@ LETTERS: dict[str, str] = {
     "Λ": "Lambda", "Ξ": "Xi", "Π": "Pi", "Σ": "Sigma", "Φ": "Phi", "Ψ": "Psi", "Ω": "Omega",
 }  # fmt: skip
 SPELLINGS = {"lambda": "lam"}  # a word that Python keeps for itself
-LATEX_NAMES = {"lam": r"\lambda", **{n: "\\" + n for n in LETTERS.values() if n != "lam"}}
+LATEX_NAMES = {"lam": r"\lambda", "hbar": r"\hbar", **{n: "\\" + n for n in LETTERS.values() if n != "lam"}}
 SUPERSCRIPTS = {"⁰": "0", "¹": "1", "²": "2", "³": "3", "⁴": "4", "⁵": "5", "⁶": "6", "⁷": "7", "⁸": "8", "⁹": "9"}
 FRACTIONS = {"½": (1, 2), "⅓": (1, 3), "¼": (1, 4), "⅔": (2, 3), "¾": (3, 4), "⅙": (1, 6), "⅛": (1, 8)}
 

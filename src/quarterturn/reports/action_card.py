@@ -27,6 +27,7 @@ class ActionCard:
     lattice: str
     digest: str
     metric: str = ""  # the signature in which L is read
+    counted: str = "dimension"  # heading beside the couplings: dimension, or unit where units have names
 
 
 def render_text(card: ActionCard) -> str:
@@ -80,7 +81,7 @@ def render_latex(card: ActionCard) -> str:
     parts = [f"\\noindent\\textbf{{action {escaped(card.name)}}}"]
     parts += [f"\\[ {one_line(tex)} \\]" for tex in (card.latex, card.euclidean_latex) if tex]
     parts += [
-        f"\\noindent {escaped(f'{name} = {value:.8g}, dimension {dimension or UNKNOWN_DIMENSION}')}"
+        f"\\noindent {escaped(f'{name} = {value:.8g}, {card.counted} {dimension or UNKNOWN_DIMENSION}')}"
         for name, value, dimension in card.couplings
     ]
     parts += [f"\\noindent {escaped(f'{_mark(severity)} {message}')}" for severity, _, message in card.findings]
@@ -94,7 +95,7 @@ def action_bundle(card: ActionCard) -> tuple[dict[str, Any], dict[str, Any]]:
 
 def _coupling_lines(card: ActionCard) -> list[str]:
     pairs = [(f"{name} = {value:.8g}", dimension or UNKNOWN_DIMENSION) for name, value, dimension in card.couplings]
-    return _columns([("coupling", "dimension"), *pairs]) if pairs else []
+    return _columns([("coupling", card.counted), *pairs]) if pairs else []
 
 
 def _coupling_table(card: ActionCard) -> str:
@@ -103,7 +104,7 @@ def _coupling_table(card: ActionCard) -> str:
         f"<td>{words(dimension or UNKNOWN_DIMENSION)}</td></tr>"
         for name, value, dimension in card.couplings
     )
-    heading = '<th scope="col">coupling</th><th scope="col">dimension</th>'
+    heading = f'<th scope="col">coupling</th><th scope="col">{words(card.counted)}</th>'
     return f"<table><thead><tr>{heading}</tr></thead><tbody>{rows}</tbody></table>" if rows else ""
 
 

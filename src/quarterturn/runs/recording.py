@@ -7,6 +7,7 @@ from typing import Any
 
 import numpy as np
 
+from quarterturn.actions.in_units import known
 from quarterturn.actions.model import Action
 from quarterturn.estimates.estimate import CurveEstimate, Estimate
 from quarterturn.records.schema import SCHEMA, environment, validate
@@ -17,8 +18,9 @@ from quarterturn.sampling.driver import Chain
 def notation_of(action: Action) -> str:
     """The canonical notation with its couplings, lattice and measurements: a body that declares the action again."""
     lines = [action.canonical]
-    if action.couplings:
-        lines.append(", ".join(f"{name} = {c.default!r}" for name, c in action.couplings.items()))
+    given = [f"{name} = {c.default!r}" for name, c in action.couplings.items() if not known(action, name)]
+    if given:
+        lines.append(", ".join(given))
     if action.measurements:
         lines.append("measure " + ", ".join(getattr(m, "source", "") or m.label for m in action.measurements))
     return "\n".join(lines)

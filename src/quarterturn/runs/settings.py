@@ -14,12 +14,14 @@ from dataclasses import dataclass, field
 from typing import Any
 
 from quarterturn.actions.findings import check
+from quarterturn.actions.in_units import known
 from quarterturn.actions.model import Action, Finding
 from quarterturn.errors import ActionError, RequestError
 
 LATTICE_WORDS = ("a", "beta", "sites")
 DEFAULT_ERROR = "1%"
 DEFAULT_SECONDS = 60.0
+SAME_HBAR = 1e-6  # relative; a record may hold hbar from another release of the constants
 UNITS_OF_TIME = {"s": 1.0, "sec": 1.0, "ms": 1e-3, "min": 60.0, "m": 60.0, "h": 3600.0}
 
 
@@ -91,6 +93,10 @@ def split(action: Action, keywords: Mapping[str, Any]) -> tuple[dict[str, float]
     for word, value in keywords.items():
         if word in couplings:
             couplings[word] = _number(word, value)
+            if known(action, word) and abs(couplings[word] / action.couplings[word].default - 1) > SAME_HBAR:
+                raise RequestError(
+                    f"{word} is known in these units, {action.couplings[word].default:.10g}: leave it out"
+                )
         elif word in LATTICE_WORDS:
             lattice[word] = _number(word, value)
         else:

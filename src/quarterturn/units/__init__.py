@@ -1,0 +1,1 @@
+"""Units: names, sizes and conversions, the system of a cell, and what a number counts."""
