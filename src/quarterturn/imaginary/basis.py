@@ -61,6 +61,10 @@ class Interval:
         table = np.sin(np.pi / size * np.arange(2 * size)) * np.sqrt(2 / size)
         return np.asarray(waves @ table[np.multiply.outer(n, n) % (2 * size)])
 
+    def on_grid(self, vectors: Numbers) -> Numbers:
+        """Wave functions times the root of the step at the points of the grid: the coefficients themselves."""
+        return vectors
+
     @cached_property
     def fastest(self) -> Floats:
         """(k, points), the fastest waves: what a resolved wave function has nothing of."""
@@ -122,6 +126,10 @@ class Circle:
         values = waves @ self._phases(np.arange(self.points) - self.points // 2).conj().T
         values /= np.sqrt(self.period * self.points)
         return np.asarray(values.real if self.flux == 0 else values)
+
+    def on_grid(self, vectors: Numbers) -> Numbers:
+        """Wave functions times the root of the step at the points of the grid: the coefficients themselves."""
+        return vectors
 
     @cached_property
     def fastest(self) -> Numbers:

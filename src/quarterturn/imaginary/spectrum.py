@@ -11,8 +11,9 @@ from numpy.typing import NDArray
 
 from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.basis import Basis, Numbers
-from quarterturn.imaginary.observables import Observer
 from quarterturn.imaginary.problem import Local
+from quarterturn.imaginary.product import ProductBasis
+from quarterturn.imaginary.product_observables import observer
 from quarterturn.imaginary.thermal import Thermal, finer_for_kinks
 
 Floats = NDArray[np.float64]
@@ -30,7 +31,7 @@ class Spectrum:
 
     energies: Floats  # (count,) as asked for, ascending
     errors: Floats  # (count,)
-    basis: Basis
+    basis: Basis | ProductBasis
     mass: float
     values: Floats  # (M,) all eigenvalues in the basis
     vectors: Numbers  # (M, M) orthonormal; real, but on a circle with flux
@@ -39,32 +40,33 @@ class Spectrum:
     facts: Mapping[str, str]
     extend: Callable[[float], Spectrum]  # the same problem, solved up to an energy above the vacuum
     refine: Callable[[float], Spectrum]  # the same, on a grid that holds waves up to a kinetic energy
+    residue: float = THERMAL_RESIDUE
 
     @property
     def grid(self) -> Floats:
-        """(M,)."""
+        """(M,) points of the path; of several paths (C, M)."""
         return self.basis.grid
 
     @cached_property
     def weights(self) -> Floats:
         """(M,) of the quadrature on the grid."""
-        return np.full(len(self.grid), self.basis.step)
+        return np.full(self.grid.shape[-1], self.basis.step)
 
     @cached_property
     def states(self) -> Numbers:
         """(M, count) wave functions on the grid, sum weights |psi|^2 = 1, positive on their last lobe."""
-        return np.asarray(self.vectors[:, : len(self.energies)] / np.sqrt(self.basis.step))
+        return np.asarray(self.basis.on_grid(self.vectors[:, : len(self.energies)]) / np.sqrt(self.basis.step))
 
     def wave(self, n: int, q: Floats) -> Numbers:
-        """Wave function of level n at any points q inside the box or on the circle."""
+        """Wave function of level n at any points q inside the box or on the circle; of several paths q is (C, K)."""
         return np.asarray(self.basis.at(np.asarray(q, dtype=np.float64)) @ self.vectors[:, self._converged(n)])
 
     # --- vacuum ---------------------------------------------------------------------------------------------
     def matrix_element(self, f: Local, m: int, n: int) -> float | complex:
         """<m|f(q)|n>. Raises SpectrumError for levels beyond the converged ones."""
         pair = self.vectors[:, [self._converged(m), self._converged(n)]]
-        observer = Observer(self.basis, pair, np.ones(2))
-        element = pair[:, 0].conj() @ (observer.operator(f) @ pair[:, 1])
+        operator = observer(self.basis, pair, np.ones(2)).operator(f)
+        element = pair[:, 0].conj() @ (operator @ pair[:, 1:])[:, 0]
         return complex(element) if np.iscomplexobj(element) else float(element)
 
     def expectation(self, f: Local, beta: float | None = None) -> float:
@@ -83,7 +85,7 @@ class Spectrum:
         times = np.atleast_1d(np.asarray(t, dtype=np.float64))
         self._continuum_is_resolved(float(np.max(np.abs(times), initial=0.0)))
         vacuum = self.vectors[:, :1]
-        operators = [Observer(self.basis, vacuum, np.ones(1)).operator(h) for h in (f, g)]
+        operators = [observer(self.basis, vacuum, np.ones(1)).operator(h) for h in (f, g)]
         if (finer := finer_for_kinks(operators, times, self.basis, self.mass, self.refine)) is not None:
             return finer.correlator(f, g, times)
         left, right = ((o @ vacuum)[:, 0].conj() @ self.vectors for o in operators)
@@ -100,7 +102,7 @@ class Spectrum:
         return n
 
     def _continuum_is_resolved(self, longest: float) -> None:
-        if not np.isfinite(self.threshold):
+        if not np.isfinite(self.threshold) or isinstance(self.basis, ProductBasis):
             return
         mean = np.abs(self.vectors[:, 0]) ** 2 @ self.grid
         distance = min(mean - self.grid[0], self.grid[-1] - mean)
@@ -124,8 +126,8 @@ class Spectrum:
                 f"a continuum begins at V = {self.threshold:.6g}: thermal sums diverge with the size of the box"
             )
         try:
-            enough = self.values[self.reliable - 1] >= self.values[0] + THERMAL_RESIDUE / beta
-            return (self if enough else self.extend(THERMAL_RESIDUE / beta))._thermal(beta)
+            enough = self.values[self.reliable - 1] >= self.values[0] + self.residue / beta
+            return (self if enough else self.extend(self.residue / beta))._thermal(beta)
         except SpectrumError as trouble:
             raise SpectrumError(f"beta = {beta:g} is too high a temperature: {trouble.message}") from trouble
 

@@ -14,6 +14,8 @@ from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.basis import Basis, Numbers
 from quarterturn.imaginary.observables import Diagonal, Observer
 from quarterturn.imaginary.problem import Local
+from quarterturn.imaginary.product import ProductBasis
+from quarterturn.imaginary.product_observables import ProductObserver, observer
 
 Floats = NDArray[np.float64]
 DAMPED = 28.0  # exp(-28) = 7e-13 of a wave is left
@@ -26,7 +28,7 @@ Refined = TypeVar("Refined")
 def finer_for_kinks(
     operators: Sequence[Diagonal | Numbers],
     times: Floats,
-    basis: Basis,
+    basis: Basis | ProductBasis,
     mass: float,
     refine: Callable[[float], Refined],
 ) -> Refined | None:
@@ -35,7 +37,7 @@ def finer_for_kinks(
     A smooth function makes no wave that the basis does not hold; a kink makes arbitrarily fast ones, which only time
     damps. `refine` solves on a grid for waves up to a kinetic energy. Raises SpectrumError where times are too short.
     """
-    if all(isinstance(o, Diagonal) for o in operators) or not times.any():
+    if isinstance(basis, ProductBasis) or all(isinstance(o, Diagonal) for o in operators) or not times.any():
         return None
     shortest = float(np.min(np.abs(times[times != 0])))
     if (needed := DAMPED / shortest) <= np.max(basis.momenta**2) / (2 * mass):
@@ -52,7 +54,7 @@ def finer_for_kinks(
 class Thermal:
     """A spectrum at inverse temperature `beta`."""
 
-    basis: Basis
+    basis: Basis | ProductBasis
     mass: float
     values: Floats  # (M,) ascending
     vectors: Numbers  # (M, M)
@@ -67,8 +69,8 @@ class Thermal:
         return np.asarray(p / p.sum())
 
     @cached_property
-    def _observer(self) -> Observer:
-        return Observer(self.basis, self.vectors[:, : len(self.probabilities)], self.probabilities)
+    def _observer(self) -> Observer | ProductObserver:
+        return observer(self.basis, self.vectors[:, : len(self.probabilities)], self.probabilities)
 
     def partition(self) -> float:
         """Z = sum exp(-beta E_n)."""

@@ -1,4 +1,4 @@
-"""`levels`: the imaginary-time solution of one path, in the continuum or at the action's own spacing."""
+"""`levels`: the imaginary-time solution of up to three paths, in the continuum or at the action's own spacing."""
 
 from __future__ import annotations
 
@@ -14,9 +14,9 @@ from quarterturn.actions.measurements import measurement_label
 from quarterturn.actions.model import Action, Bracket, Measurement
 from quarterturn.errors import RequestError, SpectrumError
 from quarterturn.estimates.estimate import CurveEstimate
-from quarterturn.imaginary.binding import local_function, one_path
-from quarterturn.imaginary.levels import Spectrum
-from quarterturn.imaginary.levels import levels as continuum_levels
+from quarterturn.imaginary.binding import local_function, one_path, problem_of
+from quarterturn.imaginary.coupled_levels import spectrum_of
+from quarterturn.imaginary.spectrum import Spectrum
 from quarterturn.imaginary.transfer import transfer
 from quarterturn.records.canonical import record_name
 from quarterturn.records.schema import validate
@@ -107,7 +107,7 @@ class Levels:
 
     def _waves(self) -> list[Curve]:
         """The potential, and each wave function raised to its level, over the region that the levels reach."""
-        if self.spectrum is None:
+        if self.spectrum is None or len(self.action.euclidean.variables) > 1:
             return []
         grid, states = self.spectrum.grid, self.spectrum.states[:, : len(self.energies)]
         reach = np.flatnonzero((np.abs(states) > 1e-3 * np.abs(states).max()).any(axis=1))
@@ -131,12 +131,12 @@ class Levels:
 
 
 def levels(action: Action, *, count: int = 6, spacing: str | None = None, **keywords: float) -> Levels:
-    """Energies and measured quantities of one path, without sampling.
+    """Energies and measured quantities of one, two or three paths, without sampling.
 
     Parameters
     ----------
     action
-        From `quarterturn.action`, with one degree of freedom.
+        From `quarterturn.action`, with one, two or three degrees of freedom (two on the lattice).
     count
         Number of levels.
     spacing
@@ -168,18 +168,9 @@ def levels(action: Action, *, count: int = 6, spacing: str | None = None, **keyw
     beta = lattice.pop("beta", None)
     if lattice:
         raise RequestError(f"{', '.join(lattice)} has no meaning in the continuum: add spacing='lattice'")
-    problem = one_path(action.euclidean, couplings)
-    if problem is None:
-        raise SpectrumError(_too_many(action))
-    result = _continuum(action, couplings, continuum_levels(problem, int(count)), int(count), None)
+    problem = problem_of(action.euclidean, couplings)
+    result = _continuum(action, couplings, spectrum_of(problem, int(count)), int(count), None)
     return result if beta is None else result.at(beta)
-
-
-def _too_many(action: Action) -> str:
-    degrees = len(action.euclidean.variables)
-    if degrees > 1:
-        return f"levels are solved for one path; {action.name} has {degrees} degrees of freedom: sample it instead"
-    return "levels are solved for a constant drift only; here it depends on the path: sample it instead"
 
 
 def _continuum(
