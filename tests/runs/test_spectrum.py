@@ -86,8 +86,7 @@ def test_a_senseless_request_is_named(quartic: DeclaredAction, keywords: dict, w
     assert words in str(complaint.value)
 
 
-def test_several_paths_are_referred_to_sampling() -> None:
-    pair = action("x(t), y(t)\nL = 1/2 x'^2 + 1/2 y'^2 - x^2 - y^2 - x^2 y^2")
-    with pytest.raises(SpectrumError) as complaint:
-        levels(pair)
-    assert "2 degrees of freedom: sample it" in str(complaint.value)
+def test_four_paths_are_referred_to_sampling_and_saddles() -> None:
+    four = action("r[4](t)\nL = 1/2 r'.r' - r.r")
+    with pytest.raises(SpectrumError, match="up to 3 degrees of freedom, and here are 4: sample it, or look for"):
+        levels(four)

@@ -53,6 +53,13 @@ class Interval:
         i = np.arange(1, size)
         return np.asarray(both[size + i[:, None] - i[None, :]] - both[size + i[:, None] + i[None, :]])
 
+    @cached_property
+    def waves(self) -> Floats:
+        """(points, points), orthogonal: from the basis functions to the waves of `momenta`."""
+        size = self.points + 1
+        n = np.arange(1, size)
+        return np.asarray(np.sin(np.pi / size * (np.multiply.outer(n, n) % (2 * size))) * np.sqrt(2 / size))
+
     def at(self, x: Floats) -> Floats:
         """Values (K, points) of the basis functions at the points x, (K,)."""
         size = self.points + 1
@@ -110,6 +117,11 @@ class Circle:
     def momenta(self) -> Floats:
         """(points,) values of p - A."""
         return np.asarray(2 * np.pi * self._orders / self.period - self.flux)
+
+    @cached_property
+    def waves(self) -> NDArray[np.complex128]:
+        """(points, points), unitary: from the basis functions to the waves of `momenta`."""
+        return np.asarray(self._phases(np.arange(self.points) - self.points // 2).conj().T / np.sqrt(self.points))
 
     def operator(self, function: Floats) -> Numbers:
         """Matrix (points, points), Hermitian, of a function of p - A given at `momenta`."""

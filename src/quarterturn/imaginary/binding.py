@@ -32,7 +32,7 @@ def local_function(
     atoms = euclidean.variables
 
     def function(q: Floats) -> Floats:
-        paths = {atoms[0]: q} if len(atoms) == 1 else dict(zip(atoms, q, strict=True))
+        paths: dict[Atom, Floats] = {atoms[0]: q} if len(atoms) == 1 else dict(zip(atoms, q, strict=True))
         with np.errstate(all="ignore"):
             value = expression.evaluate({**scalars, **paths}, np)
         shape = np.shape(q) if len(atoms) == 1 else np.shape(q)[1:]
@@ -44,8 +44,10 @@ def local_function(
 def problem_of(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> OnePath | CoupledPaths:
     """The problem of one, two or three degrees of freedom.
 
-    Raises SpectrumError where the action has more.
+    Raises SpectrumError where the action has more, or a source that depends on time.
     """
+    if euclidean.sources:
+        raise SpectrumError("a source depends on time: only log Z[J] of one or two paths has an exact value")
     degrees = len(euclidean.variables)
     if degrees > MOST:
         raise SpectrumError(

@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 
 from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.basis import Numbers
-from quarterturn.imaginary.coupled import CoupledPaths, Coordinates
+from quarterturn.imaginary.coupled import Coordinates, CoupledPaths
 from quarterturn.imaginary.extent import INSTEAD, Extent, Region, curvature, lowest, settle
 from quarterturn.imaginary.levels import levels
 from quarterturn.imaginary.problem import OnePath
@@ -156,7 +156,9 @@ def shaped(problem: CoupledPaths, count: float, above: float = 0.0) -> tuple[Sha
     energy = region.energy_of(count + 1.5) + above
     number = region.number(energy)
     products = {2: 40 + 3.5 * number, 3: 160 + 6 * number}[problem.size]
-    return Shape(coordinates, tuple(extents), (energy - region.bottom) / (2 * problem.size), math.ceil(products)), region
+    return Shape(
+        coordinates, tuple(extents), (energy - region.bottom) / (2 * problem.size), math.ceil(products)
+    ), region
 
 
 def spectrum_of(problem: OnePath | CoupledPaths, count: int) -> Spectrum:
@@ -206,15 +208,15 @@ def coupled_levels(problem: CoupledPaths, count: int, agreement: float = AGREEME
         height = float(values[count - 1]) - bottom
         worst = float(change[:count].max())
         larger = shape.larger()
-        done = worst <= agreement * height + 10 * matrix.rounding
-        if done or worst > STALLED * previous or larger.products > most:
+        stalled = STALLED * previous < worst <= TOLERATED * height / 100
+        if worst <= agreement * height + 10 * matrix.rounding or stalled or larger.products > most:
             break
         previous, shape = worst, larger
     errors = _honest(change, worst, previous) + matrix.rounding
     if not np.all(errors[:count] <= TOLERATED * height):
         raise SpectrumError(
-            f"the levels do not settle: {matrix.basis.size} products still change them by {worst:.2g}; the potential is "
-            f"too rough, or singular; {INSTEAD}"
+            f"the levels do not settle: {matrix.basis.size} products still change them by {worst:.2g}; the potential "
+            f"is too rough, or singular; {INSTEAD}"
         )
     return _spectrum(problem, matrix, region, values, vectors, errors, count, height, agreement)
 

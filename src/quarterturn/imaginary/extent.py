@@ -16,7 +16,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from quarterturn.errors import SpectrumError
-from quarterturn.imaginary.coupled import CoupledPaths, Coordinates
+from quarterturn.imaginary.coupled import Coordinates, CoupledPaths
 from quarterturn.imaginary.fitting import MARGIN, _radius
 
 Floats = NDArray[np.float64]
@@ -99,8 +99,10 @@ def lowest(problem: CoupledPaths) -> tuple[Floats, Floats]:
     if np.isneginf(v).any():
         where = shells[int(np.argwhere(np.isneginf(v))[0][1])]
         if where == 0.0:
-            raise SpectrumError("the potential is minus infinity at the origin: the levels of coupled paths need it finite "
-                                f"wherever the basis has points; {INSTEAD}")  # fmt: skip
+            raise SpectrumError(
+                "the potential is minus infinity at the origin, which is solved for one path only: "
+                f"soften it there, or {INSTEAD}"
+            )
     k = np.unravel_index(int(np.argmin(v)), v.shape)
     if k[1] == len(shells) - 1 and v[k] < v[:, 0].min():
         raise SpectrumError("the potential falls without limit, or is lowest far away: nothing is bound")
@@ -131,7 +133,13 @@ def curvature(problem: CoupledPaths, centre: Floats, reach: Floats) -> Floats:
     lines = problem.lines
     steps = np.zeros((len(lines), problem.size))
     steps[np.arange(len(lines)), lines] = reach[lines] / 2
-    shifts = [a * steps[i] + b * steps[j] for i in range(len(lines)) for j in range(len(lines)) for a in (1, -1) for b in (1, -1)]
+    shifts = [
+        a * steps[i] + b * steps[j]
+        for i in range(len(lines))
+        for j in range(len(lines))
+        for a in (1, -1)
+        for b in (1, -1)
+    ]
     v = problem.values((centre + np.array(shifts)).T).reshape(len(lines), len(lines), 4)
     second = (v[..., 0] - v[..., 1] - v[..., 2] + v[..., 3]) / 4
     second = second / np.outer(reach[lines] / 2, reach[lines] / 2)
@@ -141,7 +149,9 @@ def curvature(problem: CoupledPaths, centre: Floats, reach: Floats) -> Floats:
     return np.asarray(np.where(np.abs(second) > 1e-10 * size, second, 0.0))
 
 
-def settle(coordinates: Coordinates, centre: Floats, reach: Floats, count: float, above: float = 0.0) -> tuple[Region, list[Extent]]:
+def settle(
+    coordinates: Coordinates, centre: Floats, reach: Floats, count: float, above: float = 0.0
+) -> tuple[Region, list[Extent]]:
     """The box of wave functions up to level `count`, and `above` more in energy. Raises SpectrumError without one."""
     back = np.linalg.inv(coordinates.matrix)
     middle, half = back @ centre, 4 * np.abs(back) @ np.nan_to_num(reach)
@@ -151,16 +161,22 @@ def settle(coordinates: Coordinates, centre: Floats, reach: Floats, count: float
         region = _region(coordinates, ends)
         energy = region.energy_of(count) + above
         moved = [e if p else _ends(region, i, energy) for i, (e, p) in enumerate(zip(ends, periods, strict=True))]
-        if all(abs(a - b) < 0.04 * (e[1] - e[0]) for e, n in zip(ends, moved, strict=True) for a, b in zip(e, n, strict=True)):
+        if all(
+            abs(a - b) < 0.04 * (e[1] - e[0])
+            for e, n in zip(ends, moved, strict=True)
+            for a, b in zip(e, n, strict=True)
+        ):
             return region, [_extent(region, i, energy, *e) for i, e in enumerate(moved)]
         ends = moved
-    raise SpectrumError(f"the potential does not confine as many levels as {round(count)}, with all paths coupled: {INSTEAD}")
+    raise SpectrumError(
+        f"the potential does not confine as many levels as {round(count)}, with all paths coupled: {INSTEAD}"
+    )
 
 
 def _region(coordinates: Coordinates, ends: Sequence[tuple[float, float]]) -> Region:
     points = SAMPLES[len(ends)]
-    ticks = tuple(
-        np.linspace(low, high, points) if p is None else low + (high - low) / points * np.arange(points)
+    ticks: tuple[Floats, ...] = tuple(
+        np.asarray(low + (high - low) / (points - (p is None)) * np.arange(points), dtype=np.float64)
         for (low, high), p in zip(ends, coordinates.problem.periods, strict=True)
     )
     v = coordinates.potential(np.stack(np.meshgrid(*ticks, indexing="ij")))
@@ -198,6 +214,10 @@ def _extent(region: Region, i: int, energy: float, low: float, high: float) -> E
 
     height = energy - region.bottom
     growth = math.log2(max(cells(region.bottom + 2 * height), 1e-9) / max(cells(energy), 1e-9))
-    slow = 1.0 if region.coordinates.problem.periods[i] else math.sin(math.pi / min(max(1 / max(growth - 0.5, 0.01), 2.0), 8.0))
+    slow = (
+        1.0
+        if region.coordinates.problem.periods[i]
+        else math.sin(math.pi / min(max(1 / max(growth - 0.5, 0.01), 2.0), 8.0))
+    )
     radius = _radius(DECAY / max(cells(energy), 0.3) / slow)
     return Extent(low, high, math.sqrt(2 * mass * height) * radius * MARGIN, region.coordinates.problem.periods[i])

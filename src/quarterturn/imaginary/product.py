@@ -244,7 +244,10 @@ class ProductBasis:
     # --- matrices -------------------------------------------------------------------------------------------
     def matrix(self, values: Floats, chosen: Integers, moved: int | None = None) -> Numbers:
         """<i| f |j> among the `chosen` members, f given on the grid, (n_1, …); with p_k on the right where asked."""
-        right = [a.moved[:, : f.shape[1]] if k == moved else f for k, (a, f) in enumerate(zip(self.axes, self._used, strict=True))]
+        right = [
+            a.moved[:, : f.shape[1]] if k == moved else f
+            for k, (a, f) in enumerate(zip(self.axes, self._used, strict=True))
+        ]
         return _projected(values, self._used, right, self.members[:, chosen])
 
     def momentum(self, k: int) -> Numbers:

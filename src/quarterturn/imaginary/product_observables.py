@@ -24,6 +24,7 @@ from quarterturn.imaginary.product import ProductBasis
 Floats = NDArray[np.float64]
 FACTORS = {2: (1, 2, 4, 8), 3: (1, 2, 3)}  # by which the grid is made finer for functions with kinks or poles
 SMOOTH = 1e-9  # of the mean of |f|, between the two sums
+ROUGH = 1e-7  # the same on the finest grid; what is rougher is refused
 COLUMNS = 2_000_000  # numbers on the grid at once
 
 
@@ -70,7 +71,7 @@ class ProductObserver:
         return self._refined[factor]
 
     def _density(self, waves: Callable[[Numbers], Numbers]) -> Floats:
-        total = 0.0
+        total = np.zeros(())
         for k in range(0, self.states.shape[1], 16):
             total = total + np.abs(waves(self.states[:, k : k + 16])) ** 2 @ self.weights[k : k + 16]
         return np.asarray(total / self.weights.sum())
@@ -82,7 +83,7 @@ class ProductObserver:
             values = self._values(f, basis.grid)
             size = float(np.abs(values) @ np.real(on_grid[0]))
             change = float(np.max(np.abs(on_grid @ values - between @ self._values(f, basis.midpoints))))
-            if change <= SMOOTH * size:
+            if change <= (ROUGH if factor == FACTORS[len(self.basis.axes)][-1] else SMOOTH) * size:
                 return Multiplication(values, basis)
         raise SpectrumError(
             f"an observable with a kink, a step or a pole is not resolved with several paths: its average would be "

@@ -32,6 +32,7 @@ from quarterturn.imaginary.fitting import (
 from quarterturn.imaginary.landscape import energy_below, survey
 from quarterturn.imaginary.observables import Diagonal, Observer, integrated
 from quarterturn.imaginary.problem import Local, OnePath
+from quarterturn.imaginary.traces import chain, pair, together
 
 Floats = NDArray[np.float64]
 CLEAR = 1e-7  # eigenvectors of smaller ones are disturbed by rounding, more than tails may be
@@ -116,11 +117,9 @@ class Transfer:
         n = np.atleast_1d(np.asarray(steps, dtype=np.int64)) % self.sites
         apart = np.minimum(n, self.sites - n)
         solution, (left, right) = self._elements([f, g], int(np.min(apart[apart > 0], initial=self.sites)))
-        r = solution._ratios
-        before, after = r ** (self.sites - n)[:, None], r ** n[:, None]
-        result = np.sum((before @ (left * right.T)) * after, axis=1) * solution.probabilities[0]
+        result = pair(solution._ratios, left, right, n, self.sites) * solution.probabilities[0]
         if (n == 0).any():
-            result[n == 0] = self.expectation(_together([f, g]))
+            result[n == 0] = self.expectation(together([f, g]))
         return np.asarray(result)
 
     def product(self, groups: Sequence[tuple[int, Local]]) -> float | complex:
@@ -132,14 +131,10 @@ class Transfer:
             return 1.0
         places = sorted(at)
         if len(places) == 1:
-            return self.expectation(_together(at[places[0]]))
+            return self.expectation(together(at[places[0]]))
         apart = [*np.diff(places), self.sites - (places[-1] - places[0])]
-        solution, elements = self._elements([_together(at[n]) for n in places], int(min(apart)))
-        r, chain = solution._ratios, elements[0]
-        for distance, element in zip(apart[:-1], elements[1:], strict=True):
-            chain = (chain * r[None, :] ** distance) @ element
-        value = np.sum(np.diag(chain) * r ** apart[-1]) * solution.probabilities[0]
-        return complex(value) if np.iscomplexobj(value) else float(value)
+        solution, elements = self._elements([together(at[n]) for n in places], int(min(apart)))
+        return chain(solution._ratios, elements, apart) * float(solution.probabilities[0])
 
     def _elements(self, functions: Sequence[Local], least: int) -> tuple[Transfer, list[Numbers]]:
         """<m|f(q)|n> of each function, in a basis that is complete enough for `least` links between them.
@@ -220,16 +215,6 @@ class Transfer:
         """T with each momentum weighted, between the eigenvectors, (M, M), in the units of `eigenvalues`."""
         outer = self.link.half(self.frame) @ self.vectors
         return np.asarray(outer.conj().T @ (self.link.kinetic(self.frame, weight) @ outer))
-
-
-def _together(functions: Sequence[Local]) -> Local:
-    def product(q: Floats) -> Floats:
-        value = functions[0](q)
-        for f in functions[1:]:
-            value = value * f(q)
-        return value
-
-    return product
 
 
 # --- solving ----------------------------------------------------------------------------------------------------

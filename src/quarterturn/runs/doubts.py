@@ -15,8 +15,10 @@ from numpy.typing import NDArray
 from quarterturn.actions.model import EuclideanAction, Measurement
 from quarterturn.errors import SpectrumError
 from quarterturn.estimates.estimate import Estimate
-from quarterturn.imaginary.binding import local_function, one_path
-from quarterturn.imaginary.levels import Spectrum, levels
+from quarterturn.imaginary.binding import local_function, one_path, problem_of
+from quarterturn.imaginary.coupled_levels import spectrum_of
+from quarterturn.imaginary.coupled_transfer import AnyTransfer, CoupledTransfer
+from quarterturn.imaginary.spectrum import Spectrum
 from quarterturn.imaginary.transfer import Transfer
 from quarterturn.runs.exact import ENERGY
 from quarterturn.sampling.driver import Chain
@@ -42,10 +44,12 @@ class Basins:
         return tuple(i for i, w in enumerate(self.weights) if w > RELEVANT_WEIGHT)
 
 
-def find_basins(euclidean: EuclideanAction, couplings: Mapping[str, float], transfer: Transfer | None) -> Basins | None:
+def find_basins(
+    euclidean: EuclideanAction, couplings: Mapping[str, float], transfer: AnyTransfer | None
+) -> Basins | None:
     """Basins of one path on the line, or None where the action has another shape or no exact solution."""
     problem = one_path(euclidean, couplings)
-    if problem is None or problem.period is not None or transfer is None:
+    if problem is None or problem.period is not None or not isinstance(transfer, Transfer):
         return None
     grid = np.linspace(float(transfer.grid[0]), float(transfer.grid[-1]), 4001)
     v = problem.potential(grid)
@@ -63,7 +67,7 @@ def _indicator(low: float, high: float) -> Callable[[Floats], Floats]:
 
 
 def stuck_sectors(
-    chain: Chain, euclidean: EuclideanAction, basins: Basins | None, transfer: Transfer | None
+    chain: Chain, euclidean: EuclideanAction, basins: Basins | None, transfer: AnyTransfer | None
 ) -> tuple[str, ...]:
     """Sectors that matter and were visited fewer than ten times."""
     counts = chain.sectors
@@ -88,7 +92,7 @@ def stuck_sectors(
                 )
     if any(p is not None for p in euclidean.periods):
         changes = sum(counts.windings.values())
-        expected = _winding_moment(transfer)
+        expected = _winding_moment(euclidean, transfer)
         if changes < FEWEST_VISITS and (expected is None or expected > 1e-3):
             words.append(
                 f"the winding number is frozen: it changed {changes} times in all chains, "
@@ -97,10 +101,14 @@ def stuck_sectors(
     return tuple(words)
 
 
-def _winding_moment(transfer: Transfer | None) -> float | None:
+def _winding_moment(euclidean: EuclideanAction, transfer: AnyTransfer | None) -> float | None:
+    """The largest <Q^2> of the angles, or None where it is not known."""
     if transfer is None:
         return None
     try:
+        if isinstance(transfer, CoupledTransfer):
+            angles = [i for i, p in enumerate(euclidean.periods) if p is not None]
+            return max(float(transfer.winding_second_moment(i)) for i in angles)
         return float(transfer.winding_second_moment())
     except SpectrumError:
         return None
@@ -136,7 +144,7 @@ def contradictions(labels: Sequence[str], estimates: Sequence[Estimate]) -> tupl
     return tuple(words)
 
 
-def contamination(beta: float, transfer: Transfer | None) -> tuple[str, ...]:
+def contamination(beta: float, transfer: AnyTransfer | None) -> tuple[str, ...]:
     """Thermal admixture to vacuum quantities."""
     if transfer is None or len(transfer.energies) < 2:
         return ()
@@ -158,11 +166,8 @@ def artefacts(
     beta: float,
 ) -> tuple[str, ...]:
     """Numbers whose distance from the continuum is larger than their statistical error."""
-    problem = one_path(euclidean, couplings)
-    if problem is None:
-        return ()
     try:
-        spectrum = levels(problem, 6)
+        spectrum = spectrum_of(problem_of(euclidean, couplings), 6)
     except SpectrumError:
         return ()
     larger = []

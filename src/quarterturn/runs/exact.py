@@ -1,4 +1,4 @@
-"""The exact column: every measured number of one path again, from the transfer matrix at the same spacing and beta.
+"""The exact column: every number measured of one or two paths, from the transfer matrix at the same spacing and beta.
 
 Shares nothing with the sampler but the symbolic action. A quantity that a transfer matrix does not give in closed
 form (a modulus of a mean, a third moment of a mean) has no exact value, and None says so.
@@ -17,8 +17,8 @@ from quarterturn.actions.findings import without_sources
 from quarterturn.actions.model import Bracket, EuclideanAction, Measurement
 from quarterturn.compiled.observables import lattice_offsets
 from quarterturn.errors import SpectrumError
-from quarterturn.imaginary.binding import local_function, one_path
-from quarterturn.imaginary.transfer import Transfer, transfer
+from quarterturn.imaginary.binding import local_function, problem_of
+from quarterturn.imaginary.coupled_transfer import AnyTransfer, CoupledTransfer, transfer_of
 from quarterturn.lattice.sources import source_values
 
 Floats = NDArray[np.float64]
@@ -32,15 +32,9 @@ class ExactColumn:
         self.euclidean, self.couplings = euclidean, couplings
         self.sites, self.spacing = sites, spacing
         self.reason = ""
-        self.transfer: Transfer | None = None
-        problem = one_path(euclidean, couplings)
-        if problem is None:
-            self.reason = "the transfer matrix is solved for one path; there is no exact column for several"
-            if euclidean.sources:
-                self.reason = "a source depends on time: only log Z[J] of one path has an exact value"
-            return
+        self.transfer: AnyTransfer | None = None
         try:
-            self.transfer = transfer(problem, spacing, sites)
+            self.transfer = transfer_of(problem_of(euclidean, couplings), spacing, sites)
         except SpectrumError as trouble:
             self.reason = trouble.message
 
@@ -71,13 +65,10 @@ class ExactColumn:
     def functional(self) -> float | None:
         """log Z[J]/Z[0] by one factor exp(-a [V(q, J_i) - V(q, 0)]) at each site; None where there is none."""
         silent = replace(self.euclidean, sources=(), potential=without_sources(self.euclidean.potential))
-        problem = one_path(silent, self.couplings)
-        if problem is None:
-            return None
         geometry = (self.sites,), (self.spacing,)
         rows = source_values(self.euclidean.sources, self.couplings, ("t",), *geometry)
         try:
-            solved = transfer(problem, self.spacing, self.sites)
+            solved = transfer_of(problem_of(silent, self.couplings), self.spacing, self.sites)
             ratio = solved.product([(n, self._kick(rows[:, n])) for n in range(self.sites)])
         except SpectrumError:
             return None
@@ -175,7 +166,16 @@ class ExactColumn:
             f, g = (self._function(a) for a in arguments)
             return float(np.mean(np.real(self.transfer.correlator(f, g, np.arange(self.sites)))))
         if names == ["charge", "charge"]:
-            return float(self.transfer.winding_second_moment())
-        if names == ["charge"] and not self.euclidean.drift[0].terms:
+            return self._winding(arguments)
+        if names == ["charge"] and not any(a.terms for a in self.euclidean.drift):
             return 0.0
         return None
+
+    def _winding(self, arguments: list[Expression]) -> float | None:
+        """<Q^2> of one angle."""
+        if arguments[0] != arguments[1]:
+            return None
+        if isinstance(self.transfer, CoupledTransfer):
+            axis = [Expression.of(atom) for atom in self.euclidean.variables].index(arguments[0])
+            return float(self.transfer.winding_second_moment(axis))
+        return None if self.transfer is None else float(self.transfer.winding_second_moment())

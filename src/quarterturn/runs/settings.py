@@ -16,7 +16,7 @@ from typing import Any
 from quarterturn.actions.findings import check
 from quarterturn.actions.in_units import known
 from quarterturn.actions.model import Action, Finding
-from quarterturn.errors import ActionError, RequestError
+from quarterturn.errors import ActionError, RequestError, SpectrumError
 
 LATTICE_WORDS = ("a", "beta", "sites")
 DEFAULT_ERROR = "1%"
@@ -180,16 +180,16 @@ def cold_enough(action: Action, couplings: Mapping[str, float], spacing: float, 
 
     Raises RequestError where the gap of the action isn't known without sampling, or there is none.
     """
-    from quarterturn.imaginary.binding import one_path
-    from quarterturn.imaginary.levels import levels
+    from quarterturn.imaginary.binding import problem_of
+    from quarterturn.imaginary.coupled_levels import spectrum_of
 
-    problem = one_path(action.euclidean, couplings)
-    if problem is None:
+    try:
+        energies = spectrum_of(problem_of(action.euclidean, couplings), 2).energies
+    except SpectrumError as trouble:
         raise RequestError(
-            f"beta = vacuum needs the gap of {action.name}, which is known beforehand for one path only; give beta or "
-            "sites, and look at the size of exp(-beta gap) in the report"
-        )
-    energies = levels(problem, 2).energies
+            f"beta = vacuum needs the gap of {action.name} beforehand, and it is not known: {trouble.message}; give "
+            "beta or sites, and look at the size of exp(-beta gap) in the report"
+        ) from trouble
     gap = float(energies[1] - energies[0])
     wanted = -math.log(tolerance) / gap if gap > 0 else math.inf
     if not wanted / spacing < MOST_SITES:

@@ -17,7 +17,6 @@ from quarterturn.estimates.estimate import CurveEstimate
 from quarterturn.imaginary.binding import local_function, one_path, problem_of
 from quarterturn.imaginary.coupled_levels import spectrum_of
 from quarterturn.imaginary.spectrum import Spectrum
-from quarterturn.imaginary.transfer import transfer
 from quarterturn.records.canonical import record_name
 from quarterturn.records.schema import validate
 from quarterturn.reports.bundle import mimebundle
@@ -182,8 +181,15 @@ def _continuum(
     times = np.linspace(0, longest / 2, CURVE_POINTS)
     view = _View(action, couplings, spectrum, beta, times)
     numbers, curves = {}, {}
+    left_out: list[tuple[str, str]] = []
     for m in action.measurements:
-        value = view.measure(m)
+        try:
+            value = view.measure(m)
+        except SpectrumError as trouble:
+            if len(action.euclidean.variables) == 1:
+                raise
+            left_out.append((f"{m.label} is left out", trouble.message))
+            continue
         if value is None:
             continue
         if m.kind == "curve":
@@ -193,6 +199,7 @@ def _continuum(
     facts = (
         ("averages", "in the vacuum" if beta is None else f"thermal, beta = {beta:g}"),
         *spectrum.facts.items(),
+        *left_out,
     )
     return _recorded(
         Levels(
@@ -271,16 +278,14 @@ class _View:
 
 
 def _lattice(action: Action, settings: Settings, count: int) -> Levels:
-    problem = one_path(action.euclidean, settings.couplings)
-    if problem is None:
-        raise SpectrumError(_too_many(action))
-    solution = transfer(problem, settings.spacing, settings.sites)
+    exact = ExactColumn(action.euclidean, settings.couplings, settings.sites, settings.spacing)
+    if (solution := exact.transfer) is None:
+        raise SpectrumError(exact.reason)
     energies = np.asarray(solution.energies)[:count]
     if len(energies) < count:
         raise SpectrumError(
             f"the transfer matrix resolves {len(energies)} levels at this spacing, {count} were asked for"
         )
-    exact = ExactColumn(action.euclidean, settings.couplings, settings.sites, settings.spacing)
     constants: dict[Atom, float] = {Symbol("coupling", n): v for n, v in settings.couplings.items()}
     for name, value in (("a", settings.spacing), ("beta", settings.beta), ("vol", settings.beta)):
         constants[Symbol("geometry", name)] = value
