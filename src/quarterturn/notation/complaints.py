@@ -15,6 +15,7 @@ def unexpected(source: Source, tokens: list[Lexeme], place: int) -> NotationErro
     """The complaint about token number `place`; `len(tokens)` stands for the end."""
     before = tokens[place - 1] if place else None
     here = tokens[place] if place < len(tokens) else None
+    written = source.text[here.start : here.end] if here else ""
     start, end = (here.start, here.end) if here else (tokens[-1].end, tokens[-1].end + 1)
     opened = _open_bracket(tokens[:place])
     if before and before.kind == "CARET":
@@ -30,16 +31,20 @@ def unexpected(source: Source, tokens: list[Lexeme], place: int) -> NotationErro
             return source.error(words, opened.start, opened.end, _closed(source, tokens, partner))
         return source.error("the formula ends too early", start, end)
     if here.kind in CLOSERS and not opened:
-        return source.error(f"{here.value!r} closes a bracket that was never opened", start, end)
+        return source.error(f"{written!r} closes a bracket that was never opened", start, end)
     if here.kind in CLOSERS and opened and OPENERS[opened.kind] != CLOSERS[here.kind]:
         partner = PARTNERS[OPENERS[opened.kind]]
-        return source.error(
-            f"{here.value!r} can't close {OPENERS[opened.kind]!r}: {partner!r} was expected", start, end
-        )
+        return source.error(f"{written!r} can't close {OPENERS[opened.kind]!r}: {partner!r} was expected", start, end)
     if here.kind in CLOSERS and before and before.kind in OPENERS:
         return source.error("there is nothing between the brackets", before.start, end)
+    if here.kind == "SUM_OVER" and before and before.kind in (*OPERATORS, "ROOT", "MEAN", "DERIVATIVE"):
+        words = f"a sum over an index behind another sign stands in round brackets: ({written} …)"
+        return source.error(words, start, end, f"({written} …)")
+    if here.kind == "PRIME" and (before is None or before.kind in (*OPERATORS, *OPENERS, "COMMA", "EQUALS")):
+        words = "a prime stands behind a path, as in q'; a text, such as the name of a file, stands in double quotes"
+        return source.error(words, start, end)
     if before and before.kind in OPERATORS:
-        return source.error(f"a term is missing between {before.value!r} and {here.value!r}", before.start, end)
+        return source.error(f"a term is missing between {before.value!r} and {written!r}", before.start, end)
     if here.kind == "EQUALS":
         return source.error("one = is enough: name = formula", start, end)
     if here.kind == "PRIME" and before and before.kind == "NUMBER":
@@ -52,8 +57,8 @@ def unexpected(source: Source, tokens: list[Lexeme], place: int) -> NotationErro
         words = "the formula ends before this comma; another statement stands on its own line, or after ;"
         return source.error(words, start, end)
     if here.kind in OPERATORS or here.kind == "CARET":
-        return source.error(f"a term is missing before {here.value!r}", start, end)
-    return source.error(f"{here.value!r} can't stand here; a term or an operator was expected", start, end)
+        return source.error(f"a term is missing before {written!r}", start, end)
+    return source.error(f"{written!r} can't stand here; a term or an operator was expected", start, end)
 
 
 def _open_bracket(tokens: list[Lexeme]) -> Lexeme | None:

@@ -21,6 +21,12 @@ class _AnyName:
     def is_given(self, name: str) -> bool:
         return False
 
+    def is_vector(self, name: str) -> bool:
+        return False
+
+    def is_complex(self, name: str) -> bool:
+        return False
+
 
 def label_of(text: str) -> str:
     """The canonical spelling of a measurement's text: how it is called in results."""

@@ -2,19 +2,20 @@
 
 from __future__ import annotations
 
+import difflib
 import re
 from dataclasses import replace
 from fractions import Fraction
 
+from quarterturn.errors import NotationError
 from quarterturn.notation.parse import read_formula
-from quarterturn.notation.symbols import COORDINATES, canonical_name
+from quarterturn.notation.symbols import BOUNDARIES, COORDINATES, NAME, canonical_name
 from quarterturn.notation.tokens import Source
 from quarterturn.notation.tree import Boundary, LatticeStatement, Node, Number
-from quarterturn.notation.vocabulary import NAME, Names, Piece, parts
+from quarterturn.notation.vocabulary import Names, Piece, parts
 
 MOST_DIGITS = 9  # of a number of sites
 VACUUM = Fraction(1, 10**6)  # exp(-beta gap) where `beta = vacuum` names no tolerance
-BOUNDARIES = ("periodic", "open", "antiperiodic", "twist", "fixed")
 
 
 def lattice(source: Source, piece: Piece, word: str | None, names: Names) -> LatticeStatement:
@@ -29,7 +30,11 @@ def lattice(source: Source, piece: Piece, word: str | None, names: Names) -> Lat
     for part in parts(source, inner):
         written = source.text[part.start : part.end]
         text = written.strip()
-        if re.fullmatch(r"\d+(\s*[x×]\s*\d+)*", text):
+        if re.fullmatch(r"[0-9]+(\s*[x×*]\s*[0-9]+)*", text):
+            if extents:
+                sizes = " x ".join(map(str, (*extents, *re.findall("[0-9]+", text))))
+                words = "the sites of all directions stand together"
+                raise source.error(words, part.start, part.end, f"lattice {sizes}")
             extents = _extents(source, part, text)
         elif re.match(rf"({'|'.join(BOUNDARIES)})\b", text):
             boundaries.append(_boundary(source, part, names))
@@ -42,14 +47,33 @@ def lattice(source: Source, piece: Piece, word: str | None, names: Names) -> Lat
             vacuum = Number(VACUUM, span) if blank else read_formula(source, rest.start, rest.end, names)
         elif assigned := re.match(r"\s*(a(?:_[txyz])?|beta|β)\s*=(?!=)", written):
             formula = read_formula(source, part.start + assigned.end(), part.end, names)
+            if canonical_name(assigned.group(1)) in dict(settings):
+                raise source.error(f"{assigned.group(1)} is given twice", part.start, part.end)
             settings.append((canonical_name(assigned.group(1)), formula))
         else:
-            raise source.error(
-                "a lattice is written 'lattice 200, a = 0.1', 'lattice beta = 20, a = 0.1', 'lattice 200, beta = 20', "
-                "or for a field 'lattice 64 x 64, a = 0.1'",
-                part.start, part.end,
-            )  # fmt: skip
+            raise _no_setting(source, part, text)
     return LatticeStatement(extents, tuple(settings), tuple(boundaries), vacuum, span)
+
+
+def _no_setting(source: Source, part: Piece, text: str) -> NotationError:
+    start = part.start + source.text[part.start : part.end].index(text)
+    end = start + max(len(text), 1)
+    if not text:
+        return source.error("a setting of the lattice is missing here", max(part.start - 1, 0), part.start)
+    if re.fullmatch(r"[0-9]+\s*\^\s*[1-4]|[0-9]+[²³⁴]", text):
+        size, power = re.findall(r"[0-9]+|[²³⁴]", text)
+        sizes = " x ".join([size] * int("²³⁴".index(power) + 2 if power in "²³⁴" else power))
+        return source.error("the sites are written out, one number a direction", start, end, f"lattice {sizes}")
+    known = (*BOUNDARIES, "beta", "a", "vacuum")
+    near = difflib.get_close_matches(re.split(r"[^A-Za-z]", text)[0], known, n=1)
+    if near and near[0] != "a" and not text.startswith(near[0]):
+        rest = re.sub(r"^[A-Za-z]*", "", text)
+        return source.error(f"the lattice has no {text.split()[0]}; there is {near[0]}", start, end, near[0] + rest)
+    return source.error(
+        "a lattice is written 'lattice 200, a = 0.1', 'lattice beta = 20, a = 0.1', 'lattice 200, beta = 20', "
+        "or for a field 'lattice 64 x 64, a = 0.1'",
+        start, end,
+    )  # fmt: skip
 
 
 def _boundary(source: Source, part: Piece, names: Names) -> Boundary:

@@ -9,6 +9,7 @@ from typing import Any
 
 from quarterturn.errors import NotationError
 from quarterturn.notation.complaints import unexpected
+from quarterturn.notation.oddities import refuse_oddities
 from quarterturn.notation.tokens import Lexeme, Source, Vocabulary, lexemes
 from quarterturn.notation.tree import (
     Array,
@@ -61,6 +62,7 @@ def read_formula(source: Source, start: int, end: int, names: Vocabulary) -> Nod
     """The syntax tree of source.text[start:end]. Raises NotationError with the place."""
     from lark.exceptions import UnexpectedInput
 
+    refuse_oddities(source, start, end, names)
     tokens = lexemes(source, start, end, names)
     if not tokens:
         raise source.error("a formula is missing here", max(start, end - 1), end)
@@ -183,7 +185,9 @@ class _Builder:
             case "power":
                 return Raised(self.node(children[0]), self.node(children[2]), span)
             case "superscript":
-                return Raised(self.node(children[0]), Number(Fraction(str(children[1])), span), span)
+                power = Number(Fraction(str(children[1]).lstrip("-")), span)
+                exponent = Negative(power, span) if children[1].startswith("-") else power
+                return Raised(self.node(children[0]), exponent, span)
         raise AssertionError(kind)
 
     def at_time(self, children: Any, span: Any) -> Node:

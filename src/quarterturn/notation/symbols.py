@@ -36,6 +36,7 @@ PIECES: dict[str, str] = {
 CONSTANTS = ("pi",)
 COORDINATES = ("t", "x", "y", "z")
 GEOMETRY = ("vol", "beta")  # in measurements
+BOUNDARIES = ("periodic", "open", "antiperiodic", "twist", "fixed")
 WORDS = ("L", "LE", "H", "SE", "lattice", "measure", "metric", "units", "mod", "mean", "energy", "t", "d_t", "d")
 
 # Greek letters: typed letter -> name; several spellings of one name
@@ -43,15 +44,33 @@ LETTERS: dict[str, str] = {
     "α": "alpha", "β": "beta", "γ": "gamma", "δ": "delta", "ε": "epsilon", "ζ": "zeta", "η": "eta", "θ": "theta",
     "ϑ": "vartheta", "κ": "kappa", "λ": "lam", "μ": "mu", "ν": "nu", "ξ": "xi", "π": "pi", "ρ": "rho", "σ": "sigma",
     "τ": "tau", "φ": "phi", "ϕ": "phi", "χ": "chi", "ψ": "psi", "ω": "omega", "Γ": "Gamma", "Δ": "Delta", "Θ": "Theta",
-    "Λ": "Lambda", "Ξ": "Xi", "Π": "Pi", "Σ": "Sigma", "Φ": "Phi", "Ψ": "Psi", "Ω": "Omega",
+    "Λ": "Lambda", "Ξ": "Xi", "Π": "Pi", "Σ": "Sigma", "Φ": "Phi", "Ψ": "Psi", "Ω": "Omega", "ħ": "hbar", "ℏ": "hbar",
 }  # fmt: skip
-SPELLINGS = {"lambda": "lam"}  # a word that Python keeps for itself
-LATEX_NAMES = {"lam": r"\lambda", "hbar": r"\hbar", **{n: "\\" + n for n in LETTERS.values() if n != "lam"}}
+SPELLINGS = {"lambda": "lam", "ln": "log"}  # other words for a name; Python keeps lambda for itself
+LATEX_NAMES = {"lam": r"\lambda", **{n: "\\" + n for n in LETTERS.values() if n != "lam"}}
 SUPERSCRIPTS = {"⁰": "0", "¹": "1", "²": "2", "³": "3", "⁴": "4", "⁵": "5", "⁶": "6", "⁷": "7", "⁸": "8", "⁹": "9"}
+SUBSCRIPTS = {
+    **{chr(0x2080 + n): str(n) for n in range(10)},
+    **dict(zip("ₐₑₒₓₕₖₗₘₙₚₛₜᵢⱼᵣᵤᵥ", "aeoxhklmnpstijruv", strict=True)),
+}
 FRACTIONS = {"½": (1, 2), "⅓": (1, 3), "¼": (1, 4), "⅔": (2, 3), "¾": (3, 4), "⅙": (1, 6), "⅛": (1, 8)}
 
 
+GREEK = "".join(LETTERS)
+LOW = "".join(SUBSCRIPTS)
+NAME = rf"[A-Za-z{GREEK}][A-Za-z0-9_{GREEK}{LOW}]*"  # as a regular expression
+INDEX = "(?:" + "|".join(sorted((*LETTERS.values(), "lambda"), key=len, reverse=True)) + rf"|[A-Za-z{GREEK}])"
+
+
 def canonical_name(name: str) -> str:
-    """One spelling for a name: Greek letters become words, lambda becomes lam."""
-    spelled = "".join(LETTERS.get(letter, letter) for letter in name)
+    """One spelling for a name: Greek letters become words, m₀ becomes m_0, lambda becomes lam."""
+    if name.isascii():
+        return SPELLINGS.get(name, name)
+    spelled = ""
+    for i, letter in enumerate(name):
+        if letter in SUBSCRIPTS:
+            joint = "" if i and (name[i - 1] in SUBSCRIPTS or name[i - 1] == "_") else "_"
+            spelled += joint + SUBSCRIPTS[letter]
+        else:
+            spelled += LETTERS.get(letter, letter)
     return SPELLINGS.get(spelled, spelled)

@@ -5,11 +5,9 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass, field
 
-from quarterturn.notation.symbols import COMPLEX, FUNCTIONS, LETTERS, MEASURES, PIECES
-from quarterturn.notation.tokens import Source, evaluation_of_path
-
-G = "".join(LETTERS)
-NAME = rf"[A-Za-z{G}][A-Za-z0-9_{G}]*"
+from quarterturn.notation.brackets import evaluation_of_path
+from quarterturn.notation.source import Source
+from quarterturn.notation.symbols import COMPLEX, FUNCTIONS, MEASURES, PIECES
 
 
 @dataclass(frozen=True)
@@ -25,6 +23,8 @@ class Names:
     paths: dict[str, tuple[str, ...]] = field(default_factory=dict)
     functions: set[str] = field(default_factory=set)
     given: set[str] = field(default_factory=set)
+    vectors: set[str] = field(default_factory=set)
+    complex: set[str] = field(default_factory=set)
 
     def is_call(self, name: str, rest: str) -> bool:
         if name in self.paths:
@@ -37,11 +37,17 @@ class Names:
     def is_given(self, name: str) -> bool:
         return name in self.given
 
+    def is_vector(self, name: str) -> bool:
+        return name in self.vectors and name in self.paths
+
+    def is_complex(self, name: str) -> bool:
+        return name in self.complex and name in self.paths
+
     def inside(self, parameters: tuple[str, ...]) -> Names:
-        """In the body of a definition its parameters are neither paths nor functions."""
+        """In the body of a definition its parameters are neither paths nor functions: they have a value."""
         hidden = set(parameters)
         paths = {n: c for n, c in self.paths.items() if n not in hidden}
-        return Names(paths, self.functions - hidden, self.given)
+        return Names(paths, self.functions - hidden, self.given | hidden, self.vectors, self.complex)
 
 
 def parts(source: Source, piece: Piece) -> Iterator[Piece]:
@@ -49,7 +55,7 @@ def parts(source: Source, piece: Piece) -> Iterator[Piece]:
     depth, start, text = 0, piece.start, source.text
     for i in range(piece.start, piece.end):
         letter = text[i]
-        depth += (letter in "([{<⟨") - (letter in ")]}>⟩")
+        depth += (letter in "([{<⟨〈") - (letter in ")]}>⟩〉")
         if letter == "," and depth <= 0:
             yield Piece(start, i)
             start = i + 1
