@@ -159,7 +159,8 @@ def _start(action: Action, vacuum: float | Sequence[float] | None) -> tuple[floa
         raise RequestError(f"vacuum must be a number for each path, got {vacuum!r}") from None
     if len(values) != len(action.euclidean.variables) or not np.isfinite(values).all():
         names = ", ".join(_names(action))
-        raise RequestError(f"vacuum must be one finite number for each of {names}, got {vacuum!r}")
+        form = "" if len(_names(action)) == 1 else ", such as vacuum=(1, 0), or vacuum=1:0 on the line of a magic"
+        raise RequestError(f"vacuum must be one finite number for each of {names}{form}, got {vacuum!r}")
     return values
 
 

@@ -63,3 +63,13 @@ def kinetic(x: Floats, length: float) -> float:
     c = coefficients(x)
     k = np.pi * np.arange(x.shape[-1])
     return float(np.sum((k * c) ** 2) / (2 * length))
+
+
+def moments(x: Floats) -> Floats:
+    """Mean place and second moments, weighted by the speed squared: they tell paths of equal action apart.
+
+    They do not depend on where the centre lies in time.
+    """
+    speed = np.sum(at(x, midpoints(x.shape[-1]), order=1) ** 2, axis=0)
+    weight = speed / np.sum(speed)
+    return np.concatenate([x @ weight, ((x * weight) @ x.T).ravel()])

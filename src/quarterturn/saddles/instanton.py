@@ -7,21 +7,21 @@ free motion in time taken out; the lowest action is kept, the others are told.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 
 import numpy as np
 from numpy.typing import NDArray
 
 from quarterturn.errors import SaddleError
 from quarterturn.saddles.branch import MOST_POINTS, RESOLVED, Half, jacobian, residual
-from quarterturn.saddles.cosine import at, kinetic, midpoints, resampled, tail
+from quarterturn.saddles.cosine import at, kinetic, midpoints, moments, resampled, tail
 from quarterturn.saddles.problem import Problem
 from quarterturn.saddles.rest import Rest
 
 Floats = NDArray[np.float64]
 WAITING = 25.0  # omega L / 2: what is left of the path at its ends is exp(-WAITING)
 FIRST_POINTS = 128
-MOST_STEPS = 120
+MOST_STEPS = 60
 ENDS = 0.02  # parts of the action that belong to the ends of the path
 RESTING = 1e-3  # of the barrier: below, a path is at rest
 BENDS = (0.0, 0.5, -0.5, 1.0, -1.0)  # over the distance of the minima
@@ -29,17 +29,32 @@ BENDS = (0.0, 0.5, -0.5, 1.0, -1.0)  # over the distance of the minima
 
 def instantons(problem: Problem, start: Rest, end: Rest) -> list[Half]:
     """The different paths from `start` to `end` that were found, lowest action first; empty where there is none."""
-    found: list[tuple[Floats, Half]] = []
     omega = float(min(start.frequencies[0], end.frequencies[0]))
     extent = float(np.linalg.norm(end.x - start.x))
-    for guess in _guesses(start, end, 2 * WAITING / omega):
-        path = _relaxed(problem, guess, start, end)
-        if path is None or _composite(problem, path, start):
+
+    def sound(path: Half | None) -> bool:
+        return path is not None and _arrives(path, start, end, extent) and not _composite(problem, path, start)
+
+    rough = [_downhill(problem, guess) for guess in _guesses(start, end, 2 * WAITING / omega)]
+    fine = [_resolved(problem, path) for path in _different(filter(sound, rough), 1e-3)]
+    return sorted(_different(filter(sound, fine), 1e-5), key=lambda path: kinetic(path.x, path.length))
+
+
+def _different(paths: Iterable[Half | None], tolerance: float) -> list[Half]:
+    """Those that differ in their action or in their moments by more than a relative `tolerance`."""
+    found: list[tuple[Floats, Half]] = []
+    for path in paths:
+        if path is None:
             continue
-        mark = _mark(path)
-        if all(np.max(np.abs(mark - other)[1:]) > 1e-4 * extent for other, _ in found):
+        mark = np.append(kinetic(path.x, path.length), moments(path.x))
+        if all(np.max(np.abs(mark - other)) > tolerance * np.max(np.abs(mark)) for other, _ in found):
             found.append((mark, path))
-    return [path for _, path in sorted(found, key=lambda item: float(item[0][0]))]
+    return [path for _, path in found]
+
+
+def _arrives(path: Half, start: Rest, end: Rest, extent: float) -> bool:
+    ends = at(path.x, np.array([0.0, 1.0])) - np.stack([start.x, end.x], axis=1)
+    return bool(np.max(np.linalg.norm(ends, axis=0)) < 1e-3 * extent)
 
 
 def _composite(problem: Problem, path: Half, start: Rest) -> bool:
@@ -48,13 +63,6 @@ def _composite(problem: Problem, path: Half, start: Rest) -> bool:
     part = np.cumsum(speed) / np.sum(speed)
     height = problem.value(path.x)[(part > ENDS) & (part < 1 - ENDS)] - start.height
     return bool(np.min(height) < RESTING * np.max(height))
-
-
-def _mark(path: Half) -> Floats:
-    """The action, and the mean place weighted by the speed squared: equal for paths that differ by their centre
-    only."""
-    speed = np.sum(at(path.x, midpoints(path.points), order=1) ** 2, axis=0)
-    return np.append(kinetic(path.x, path.length), path.x @ speed / np.sum(speed))
 
 
 def _guesses(start: Rest, end: Rest, length: float) -> Iterator[Half]:
@@ -71,8 +79,9 @@ def _guesses(start: Rest, end: Rest, length: float) -> Iterator[Half]:
             yield Half(straight + normal[:, None] * bump, length)
 
 
-def _relaxed(problem: Problem, half: Half, start: Rest, end: Rest) -> Half | None:
-    path = _downhill(problem, half)
+def _resolved(problem: Problem, half: Half) -> Half | None:
+    """The path on as many points as it needs. Raises SaddleError where even the largest grid does not resolve it."""
+    path: Half | None = half
     while path is not None and (last := tail(path.x)) > RESOLVED:
         if path.points >= MOST_POINTS:
             if last < 1e-7:
@@ -82,11 +91,7 @@ def _relaxed(problem: Problem, half: Half, start: Rest, end: Rest) -> Half | Non
                 "rough, or its times differ too much; use levels"
             )
         path = _downhill(problem, Half(resampled(path.x, 2 * path.points), path.length))
-    if path is None:
-        return None
-    ends = at(path.x, np.array([0.0, 1.0]))
-    miss = max(np.linalg.norm(ends[:, 0] - start.x), np.linalg.norm(ends[:, 1] - end.x))
-    return path if miss < 1e-3 * np.linalg.norm(end.x - start.x) else None
+    return path
 
 
 def _action(problem: Problem, half: Half, floor: float) -> float:

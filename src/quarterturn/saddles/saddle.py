@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from quarterturn.saddles.branch import Half
-from quarterturn.saddles.cosine import at, kinetic, midpoints, tail
+from quarterturn.saddles.cosine import at, kinetic, midpoints, moments, tail
 from quarterturn.saddles.fluctuations import Determinant, Modes, Operator, gelfand_yaglom, lattice_modes
 from quarterturn.saddles.problem import Problem
 from quarterturn.saddles.rest import Rest
@@ -42,7 +42,7 @@ class Saddle:
     turning: tuple[float, ...] = ()  # periods at which the branch of thermal bounces turns
     ratio: Determinant | None = None
     modes: Modes | None = None
-    mark: tuple[float, ...] = ()  # the mean place, to tell paths of equal action apart
+    mark: tuple[float, ...] = ()  # moments, which tell paths of equal action apart
 
 
 def instanton(problem: Problem, half: Half, start: Rest, end: Rest) -> Saddle:
@@ -74,7 +74,7 @@ def instanton(problem: Problem, half: Half, start: Rest, end: Rest) -> Saddle:
         end=end,
         ratio=gelfand_yaglom(whole, free, 1) if alike else None,
         modes=lattice_modes(_window(problem, curvature, start, duration), free, 1),
-        mark=tuple(half.x @ speed / np.sum(speed)),
+        mark=tuple(map(float, moments(half.x))),
     )
 
 
@@ -110,7 +110,7 @@ def bounce(problem: Problem, half: Half, vacuum: Rest, barrier: Rest, beta: floa
         beta=beta,
         ratio=gelfand_yaglom(whole, free, 1),
         modes=lattice_modes(whole if beta is not None else window, free, 1),
-        mark=tuple(x @ speed / np.sum(speed)),
+        mark=tuple(map(float, moments(x))),
     )
 
 

@@ -23,6 +23,7 @@ Floats = NDArray[np.float64]
 ZERO_TEMPERATURE = 25.0  # omega beta / 2 beyond which exp(-omega beta) is below rounding
 NEARLY = 1e-5  # of all differences of height
 MOST_PARTNERS = 6  # minima, the closest ones, to which instantons are looked for
+APART = 1e-4  # relative difference of moments, beyond which paths differ
 SAME = 1e-8  # relative difference of actions, within which paths are equivalent
 
 
@@ -167,8 +168,9 @@ def _halves(land: Landscape, branch: Branch, vacuum: Rest, length: float, cold: 
 def equivalents(saddles: Sequence[Saddle]) -> list[Saddle]:
     """The first of them, and those of the same kind and action but another course."""
     first, kept = saddles[0], [saddles[0]]
+    size = float(np.max(np.abs(first.mark)))
     for other in saddles[1:]:
         alike = other.kind == first.kind and abs(other.action - first.action) <= SAME * first.action
-        if alike and all(np.max(np.abs(np.subtract(other.mark, k.mark))) > 1e-5 for k in kept):
+        if alike and all(np.max(np.abs(np.subtract(other.mark, k.mark))) > APART * size for k in kept):
             kept.append(other)
     return kept
