@@ -6,7 +6,7 @@ import pytest
 from IPython.core.completer import provisionalcompleter
 
 COUPLINGS = ["lam=", "v2="]
-LATTICE = ["a=", "beta=", "sites="]
+LATTICE = ["a=", "beta=", "sites=", "temperature="]
 SAMPLE = ["error=", "time=", "draws=", "chains=", "seed="]
 
 

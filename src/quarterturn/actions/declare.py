@@ -19,7 +19,15 @@ from quarterturn.actions.dimensions import Dimensions, dimensions
 from quarterturn.actions.expression import IMAGINARY, ZERO, Atom, Expression, PathAtom
 from quarterturn.actions.findings import check, phase_finding
 from quarterturn.actions.geometry import geometry_of
-from quarterturn.actions.in_units import HBAR, counted, counted_measurements, system_of, through_the_seam, with_hbar
+from quarterturn.actions.in_units import (
+    HBAR,
+    counted,
+    counted_measurements,
+    counted_paths,
+    system_of,
+    through_the_seam,
+    with_hbar,
+)
 from quarterturn.actions.lattice_form import joined, sorted_links
 from quarterturn.actions.measurements import MeasureScope, measurement_of
 from quarterturn.actions.model import (
@@ -175,7 +183,7 @@ class _Declaration:
         form = dynamics.form if dynamics.form in ("LE", "SE") else "L"
         canonical = canonical_text(paths, coordinates, form, lagrangian, sources, system.names)
         return Action(
-            self.name, self.text, tuple(paths.values()), metric, form, lagrangian, couplings, geometry,
+            self.name, self.text, counted_paths(paths, known), metric, form, lagrangian, couplings, geometry,
             counted_measurements(measurements, known), euclidean, digest(canonical), canonical,
             typeset(form, lagrangian, len(coordinates)), UnitSystem(system.names) if system.names else None,
             scope.files,

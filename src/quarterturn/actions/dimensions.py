@@ -148,6 +148,9 @@ class Dimensions:
     def of_coupling(self, name: str) -> Dimension | None:
         return self.known.get(name)
 
+    def of_path(self, name: str) -> Dimension | None:
+        return times(self.system.level, 0) if name in self.pure else self.known.get(f"path {name}")
+
     # --- measurements ---------------------------------------------------------------------------------------
     def of_measurement(self, m: Measurement) -> Dimension | None:
         """What a measured number counts, None where the action does not determine it."""
@@ -177,7 +180,7 @@ class Dimensions:
         zero = times(self.system.level, 0)
         match atom:
             case PathAtom():
-                return zero if atom.name in self.pure else self.known.get(f"path {atom.name}")
+                return self.of_path(atom.name)
             case Symbol(kind="bracket"):
                 return self._of_bracket(brackets[int(atom.name)], brackets)
             case Symbol(kind="geometry"):

@@ -12,7 +12,7 @@ from dataclasses import replace
 
 from quarterturn.actions.dimensions import Dimensions
 from quarterturn.actions.expression import Expression, Symbol
-from quarterturn.actions.model import Action, Coupling, EuclideanAction, Measurement
+from quarterturn.actions.model import Action, Coupling, EuclideanAction, Measurement, Path
 from quarterturn.errors import ActionError, NotationError
 from quarterturn.notation.tree import Assignment, Dynamics, Statement, Units
 from quarterturn.units.system import System, natural, system
@@ -85,6 +85,11 @@ def counted(couplings: Mapping[str, Coupling], found: Dimensions) -> dict[str, C
         mass = dimension[0] if dimension is not None and not named.laboratory else None
         result[name] = replace(c, dimension=mass, quantity=named.quantity(dimension))
     return result
+
+
+def counted_paths(paths: Mapping[str, Path], found: Dimensions) -> tuple[Path, ...]:
+    """The fields, each with what its values count."""
+    return tuple(replace(p, quantity=found.system.quantity(found.of_path(name))) for name, p in paths.items())
 
 
 def counted_measurements(measurements: tuple[Measurement, ...], found: Dimensions) -> tuple[Measurement, ...]:

@@ -25,6 +25,7 @@ class Path:
     period: Expression | None = None  # the circumference of an angle; a constant
     span: Span | None = field(default=None, compare=False)
     kind: str = "real"  # real | complex | unit (a vector of length 1)
+    quantity: Quantity = field(default=UNKNOWN, compare=False)  # what its values count
 
     @property
     def atoms(self) -> tuple[PathAtom, ...]:

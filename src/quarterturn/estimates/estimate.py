@@ -5,11 +5,13 @@ kept in the attribute, for those who want to look at it.
 """
 
 from dataclasses import dataclass, field, replace
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from quarterturn.estimates.printing import format_unresolved, format_value_error
+from quarterturn.units.quantity import UNKNOWN, Quantity
 
 Array = NDArray[np.float64]
 
@@ -35,6 +37,7 @@ class Estimate:
     remark: str = ""  # words beside the number
     exact: float | None = None  # an independent value, where there is one
     gradient: Array | None = field(default=None, compare=False, repr=False)  # with respect to the means, (quantities,)
+    quantity: Quantity = UNKNOWN  # what the number counts
 
     @property
     def pull(self) -> float | None:
@@ -47,15 +50,45 @@ class Estimate:
         """The same estimate beside an independent value."""
         return replace(self, exact=exact)
 
+    @property
+    def unit(self) -> str:
+        """The unit by name; empty in natural units with a free scale."""
+        return self.quantity.name
+
+    def to(self, unit: str, *, scale: str | None = None, dimension: Any = None) -> "Estimate":
+        """The estimate counted in another unit, its error with it.
+
+        Parameters
+        ----------
+        unit
+            Such as "GeV", "fm", "kelvin", "1/cm", "eV", "GeV^2".
+        scale
+            In natural units without a named scale: what 1 stands for, such as "2.1 GeV" or "0.1 fm".
+        dimension
+            The mass dimension, where the action does not determine it.
+
+        Raises
+        ------
+        RequestError
+            An unknown unit, one of another dimension, a scale that is missing or given twice.
+        """
+        factor, quantity = self.quantity.converted(unit, scale, dimension)
+        scaled = {
+            name: None if number is None else number * factor
+            for name, number in (("value", self.value), ("error", self.error), ("error_error", self.error_error),
+                                 ("exact", self.exact), ("gradient", self.gradient))
+        }  # fmt: skip
+        return replace(self, quantity=quantity, **scaled)  # type: ignore[arg-type]
+
     def __float__(self) -> float:
         return float(self.value)
 
     def __str__(self) -> str:
         if self.state == WITHHELD:
             return "withheld"
-        if self.state == UNRESOLVED:
-            return format_unresolved(self.value, "unresolved")
-        return format_value_error(self.value, self.error)
+        unresolved = self.state == UNRESOLVED
+        text = format_unresolved(self.value, "unresolved") if unresolved else format_value_error(self.value, self.error)
+        return f"{text} {self.unit}".rstrip()
 
 
 def withheld(reason: str) -> Estimate:
@@ -75,6 +108,28 @@ class CurveEstimate:
     label: str = ""
     state: str = GOOD
     remark: str = ""
+    quantity: Quantity = UNKNOWN  # what its values count
+    step: Quantity = UNKNOWN  # what t counts
 
     def __len__(self) -> int:
         return len(self.t)
+
+    @property
+    def unit(self) -> str:
+        """The unit of the values by name; empty in natural units with a free scale."""
+        return self.quantity.name
+
+    def to(
+        self, unit: str | None = None, *, time: str | None = None, scale: str | None = None, dimension: Any = None
+    ) -> "CurveEstimate":
+        """The curve with its values counted in `unit` and its times in `time`; what is None stays as it is.
+
+        Other parameters and errors as `Estimate.to`.
+        """
+        factor, quantity = (1.0, self.quantity) if unit is None else self.quantity.converted(unit, scale, dimension)
+        pace, step = (1.0, self.step) if time is None else self.step.converted(time, scale)
+        return replace(
+            self, t=self.t * pace, value=self.value * factor, error=self.error * factor,
+            covariance=self.covariance * factor**2, exact=None if self.exact is None else self.exact * factor,
+            quantity=quantity, step=step,
+        )  # fmt: skip

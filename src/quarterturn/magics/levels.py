@@ -41,6 +41,7 @@ class LevelsMagic(Magics):
         count=6            number of levels
         spacing=lattice    on the lattice: what a Monte Carlo run at this spacing must reproduce
         beta=2             thermal averages at this inverse temperature, in the place of the vacuum
+        temperature=300K   the same by the temperature, where the action names its units
         a= beta= sites=    with spacing=lattice: the lattice
         as VARIABLE        also put the result into a Python variable
 

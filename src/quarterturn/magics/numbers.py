@@ -27,6 +27,14 @@ def number(line: Line, setting: Setting, text: str | None = None) -> float:
     return (-1 if match["sign"] == "-" else 1) * value / divisor
 
 
+def measured(line: Line, setting: Setting) -> float | str:
+    """A number, or a number with its unit, such as 300K or 0.5fs, as the calls read it. Raises LineError."""
+    text = setting.value
+    if NUMBER.fullmatch(text.replace("−", "-")) or not re.fullmatch(rf"{PLAIN}(?!\*?(?:pi|π))[A-Za-zÅµ(1].*", text):
+        return number(line, setting)
+    return text
+
+
 def whole(line: Line, setting: Setting) -> int:
     """The value of a setting as a whole number, not negative. Raises LineError."""
     value = number(line, setting)

@@ -8,13 +8,13 @@ from contextlib import contextmanager
 from typing import TYPE_CHECKING, Any
 
 from quarterturn.errors import RequestError
-from quarterturn.magics.numbers import number
+from quarterturn.magics.numbers import measured, number
 from quarterturn.magics.words import Line, LineError, Setting, Words
 
 if TYPE_CHECKING:
     from quarterturn.actions.model import Action
 
-LATTICE_WORDS = ("a", "beta", "sites")
+LATTICE_WORDS = ("a", "beta", "sites", "temperature")
 Reader = Callable[[Line, Setting], Any]  # of the value of an option; raises LineError
 
 
@@ -33,7 +33,8 @@ def keywords(words: Words, action: Action, options: Mapping[str, Reader]) -> dic
     for setting in words.settings:
         if setting.key not in (*options, *action.couplings, *LATTICE_WORDS):
             raise _unknown(words.line, setting, action, options)
-        value = options.get(setting.key, number)(words.line, setting)
+        plainly = measured if setting.key in LATTICE_WORDS and setting.key != "sites" else number
+        value = options.get(setting.key, plainly)(words.line, setting)
         if setting.label is None:
             plain[setting.key] = value
         elif setting.key == "error" and "error" in options:

@@ -41,6 +41,7 @@ class SampleMagic(Magics):
         COUPLING=VALUE     a coupling of the action: 0.2, 1e-3, 1/4, pi/2; {x} takes the Python variable x
         a= beta= sites=    the lattice: spacing, inverse temperature, sites; any two, or one and the
                            declared rest
+        temperature=300K   in the place of beta, where the action names its units; a shrinks to fit
         error=1%           target error of every number, relative; error=0.01 is absolute
         error[LABEL]=2%    target for one number, such as error[gap(q)]=2%
         time=60s           longest duration, warm-up included: 60s, 2min, 1h

@@ -14,6 +14,7 @@ from quarterturn.reports.report import Report, Row
 HEADINGS = {
     "label": "observable",
     "value": "value",
+    "unit": "unit",
     "exact": "exact",
     "pull": "pull",
     "tau": "tau",
@@ -38,6 +39,7 @@ class Cells:
     tau: str = ""
     n_eff: str = ""
     remark: str = ""
+    unit: str = ""
 
     def __getitem__(self, column: str) -> str:
         text: str = getattr(self, column)
@@ -61,6 +63,7 @@ def cells(row: Row) -> Cells:
         tau=_tau(row),
         n_eff=f"{row.n_eff:.0f}" if _finite(row.n_eff) else "",
         remark=one_line(row.remark),
+        unit=one_line(row.unit),
     )
 
 

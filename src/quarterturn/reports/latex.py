@@ -21,6 +21,7 @@ from quarterturn.reports.text import SHORT_NAME
 HEADINGS = {
     "label": "observable",
     "value": "value",
+    "unit": "unit",
     "exact": "exact",
     "pull": "pull",
     "tau": r"$\tau$",

@@ -4,6 +4,7 @@ Measured points always carry their error bars, or their band where they lie too 
 thin ink, fits as a band over the stretch that was fitted.
 """
 
+import re
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from typing import Any
@@ -99,7 +100,7 @@ def draw(panel: Panel, figure: Figure | SubFigure, ink: str) -> None:
         _waves(axes, panel.curves, ink)
     _dress(axes, panel.curves[0], ink)
     if panel.kind == "waves":
-        axes.set_ylabel("energy")
+        axes.set_ylabel(f"energy{_bracketed(panel.curves[0].unit)}", parse_math=False)
     elif panel.kind == "paths" and len(panel.curves) > 1:
         axes.set_ylabel("")  # the legend names them
 
@@ -251,8 +252,9 @@ def _waves(axes: Axes, curves: Sequence[Curve], ink: str) -> None:
 
 def _dress(axes: Axes, curve: Curve, ink: str) -> None:
     """Labels, and axes in the colour of the words; two sides only."""
-    _label(axes.set_xlabel, one_line(curve.x_label), one_line(curve.x_label))
-    _label(axes.set_ylabel, curve.latex, one_line(curve.label))
+    variable, _, unit = one_line(curve.x_label).removesuffix("]").partition(" [")
+    _label(axes.set_xlabel, _with_unit(variable, unit), one_line(curve.x_label))
+    _label(axes.set_ylabel, _with_unit(curve.latex, curve.unit), f"{one_line(curve.label)}{_bracketed(curve.unit)}")
     axes.spines[["top", "right"]].set_visible(False)
     axes.spines[["left", "bottom"]].set_color(ink)
     axes.tick_params(which="both", color=ink, labelcolor=ink, direction="in")
@@ -260,6 +262,18 @@ def _dress(axes: Axes, curve: Curve, ink: str) -> None:
     axes.margins(x=0.02)
     for words in (axes.xaxis.label, axes.yaxis.label, *axes.texts):
         words.set_color(ink)
+
+
+def _bracketed(unit: str) -> str:
+    return f" [{one_line(unit)}]" if unit else ""
+
+
+def _with_unit(latex: str, unit: str) -> str:
+    """A label and its unit typeset; the powers of units raised."""
+    if not unit or not latex:
+        return latex
+    raised = re.sub(r"\^(\([^()]*\)|-?\d+)", r"^{\1}", one_line(unit).replace(" ", r"\ ").replace("_", r"\_"))
+    return rf"{latex}\ [\mathrm{{{raised}}}]"
 
 
 def _label(set_label: Callable[..., object], latex: str, plain: str) -> None:

@@ -27,6 +27,7 @@ class Row:
     n_eff: float | None = None  # effective number of samples
     state: str = "good"  # good | unresolved | withheld
     remark: str = ""  # words beside the number
+    unit: str = ""  # of value, error and exact; empty in natural units with a free scale
 
 
 @dataclass(frozen=True, slots=True)
@@ -43,6 +44,7 @@ class Curve:
     style: str = "correlator"  # correlator | gap | history | orders | wave | potential | course (a path in it) | path
     plateau: tuple[float, float, float, float] | None = None  # value, error, x from, x to of a fit drawn in
     baseline: float | None = None  # wave: the energy at which the wave function is drawn
+    unit: str = ""  # of y
 
 
 @dataclass(frozen=True, slots=True)

@@ -6,14 +6,13 @@ from dataclasses import dataclass, fields
 from typing import Any
 
 from quarterturn.actions.declare import declare
-from quarterturn.actions.in_units import known
 from quarterturn.actions.model import Action, Geometry
 from quarterturn.actions.steps import turn_steps
 from quarterturn.errors import ActionError
 from quarterturn.reports.action_card import ActionCard, action_bundle, render_text
 from quarterturn.reports.turn_steps import TurnSteps
 from quarterturn.runs.settings import LATTICE_WORDS
-from quarterturn.units.constants import release
+from quarterturn.runs.unit_words import counted, lattice_units
 
 RESERVED = frozenset(
     {
@@ -41,7 +40,7 @@ class DeclaredAction(Action):
 
     def card(self) -> ActionCard:
         """What a person sees of a declaration, as plain data."""
-        couplings = tuple((name, c.default, _counted_in_words(self, name)) for name, c in self.couplings.items())
+        couplings = tuple((name, c.default, counted(self, name)) for name, c in self.couplings.items())
         return ActionCard(
             name=self.name,
             latex=self.latex,
@@ -50,7 +49,7 @@ class DeclaredAction(Action):
             findings=tuple((f.severity, f.topic, f.message) for f in self.findings),
             couplings=couplings,
             measurements=tuple(m.label for m in self.measurements),
-            lattice=_in_words(self.geometry) + _step_in_words(self),
+            lattice=_in_words(self.geometry) + lattice_units(self),
             metric=_metric_in_words(self),
             counted="unit" if self.units else "dimension",
             digest=self.digest,
@@ -66,18 +65,6 @@ class DeclaredAction(Action):
 
     def _repr_mimebundle_(self, include: Any = None, exclude: Any = None) -> Any:
         return action_bundle(self.card())
-
-
-def _counted_in_words(action: Action, name: str) -> str:
-    """The mass dimension of a coupling, or its unit where units have names."""
-    words = action.couplings[name].quantity.words
-    return f"{words} (from {release()})" if known(action, name) else words
-
-
-def _step_in_words(action: Action) -> str:
-    """In what a and beta are counted, where units have names."""
-    name = action.system.quantity(action.system.step).name
-    return f"; a and beta in {name}" if name and action.geometry else ""
 
 
 def _in_words(geometry: Geometry | None) -> str:

@@ -13,6 +13,8 @@ from quarterturn.estimates.estimate import CurveEstimate, Estimate
 from quarterturn.records.schema import SCHEMA, environment, validate
 from quarterturn.runs.settings import Settings
 from quarterturn.sampling.driver import Chain
+from quarterturn.units.constants import release
+from quarterturn.units.quantity import Quantity
 
 
 def notation_of(action: Action) -> str:
@@ -44,7 +46,20 @@ def base_record(kind: str, action: Action, settings: Settings) -> dict[str, Any]
         "platform": platform,
         "precision": "float64",
         "parents": [],
+        **_units(action),
     }
+
+
+def _units(action: Action) -> dict[str, Any]:
+    """The units by name and the release of the constants behind them; nothing where the scale is free."""
+    if action.units is None:
+        return {}
+    return {"units": {"names": list(action.units.names), "constants": release()}}
+
+
+def with_unit(quantity: Quantity) -> dict[str, str]:
+    """The entry of a result that names its unit; none where it has no name."""
+    return {"unit": quantity.name} if quantity.name else {}
 
 
 def sample_record(
@@ -101,6 +116,7 @@ def number_result(label: str, e: Estimate) -> dict[str, Any]:
         "tau": _finite(e.tau),
         "n_eff": _finite(e.n_eff),
         "state": e.state,
+        **with_unit(e.quantity),
     }
 
 
@@ -112,4 +128,5 @@ def curve_result(label: str, c: CurveEstimate) -> dict[str, Any]:
         "value": [_finite(v) for v in c.value],
         "error": [_finite(v) for v in c.error],
         "state": c.state,
+        **with_unit(c.quantity),
     }

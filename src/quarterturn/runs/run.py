@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
@@ -17,6 +17,7 @@ from quarterturn.reports.bundle import mimebundle
 from quarterturn.reports.report import Curve, Report, Row
 from quarterturn.reports.text import text as render_text
 from quarterturn.runs.settings import Settings
+from quarterturn.runs.unit_words import level, step
 
 
 @dataclass(frozen=True, eq=False)
@@ -67,7 +68,8 @@ class Run:
             if result.estimate.error and fitted:
                 ends = (min(f.t_min for f in fitted), max(f.t_max for f in fitted))
                 plateau = (result.estimate.value, result.estimate.error, *ends)
-            curves.append(_curve(result.curve, latex.get(label, ""), "gap", plateau, f"effective {label}"))
+            effective = replace(result.curve, quantity=level(self.action), step=step(self.action))
+            curves.append(_curve(effective, latex.get(label, ""), "gap", plateau, f"effective {label}"))
         return Report(
             kind="sample",
             title=f"{self.action.name}, sampled",
@@ -107,6 +109,7 @@ def _row(label: str, latex: str, e: Estimate) -> Row:
         None if unresolved else _finite(e.n_eff),
         e.state,
         e.remark,
+        e.unit,
     )
 
 
@@ -122,11 +125,12 @@ def _curve(
     return Curve(
         label or c.label,
         latex,
-        "t",
+        f"t [{c.step.name}]" if c.step.name else "t",
         tuple(float(v) for v in c.t[shown]),
         tuple(float(v) for v in c.value[shown]),
         tuple(float(v) for v in c.error[shown]),
         exact,
         style,
         plateau,
+        unit=c.unit,
     )

@@ -23,6 +23,7 @@ from quarterturn.reports.text import text as render_text
 from quarterturn.runs.bubble import field_saddle
 from quarterturn.runs.recording import base_record
 from quarterturn.runs.settings import Settings, split
+from quarterturn.runs.unit_words import facts as unit_facts
 from quarterturn.saddles.landscape import Landscape, survey
 from quarterturn.saddles.problem import Problem, paths_problem
 from quarterturn.saddles.rates import crossover, decay_rate, doubts, tunnelling_rates
@@ -78,7 +79,7 @@ class Saddles:
             rows=self.rows,
             curves=self.curves,
             warnings=self.warnings,
-            facts=self.facts,
+            facts=(*self.facts, *unit_facts(self.action)),
             record_name=self.record_name,
             record=self.record,
         )

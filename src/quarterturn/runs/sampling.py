@@ -31,6 +31,8 @@ from quarterturn.runs.progress import Progress, Watcher
 from quarterturn.runs.recording import sample_record
 from quarterturn.runs.run import Run
 from quarterturn.runs.settings import Goal, Settings, goal, require_paths, resolve
+from quarterturn.runs.unit_words import facts as unit_facts
+from quarterturn.runs.unit_words import step
 from quarterturn.sampling.driver import Chain, Request, run_chains
 from quarterturn.sampling.program import Program, default_chains, program_for
 
@@ -289,13 +291,14 @@ class _Session:
         curves: dict[str, CurveEstimate] = {}
         for m in self.action.measurements:
             if m.kind == "curve":
-                curves[m.label] = replace(evaluator.curve(m), exact=self.exact.curve(m, constants, self.layout.steps))
+                exact = self.exact.curve(m, constants, self.layout.steps)
+                curves[m.label] = replace(evaluator.curve(m), exact=exact, quantity=m.quantity, step=step(self.action))
                 continue
             if m.kind == "functional":
                 numbers[m.label] = self.functionals[m.label]
                 continue
             e = gaps[m.label].estimate if m.kind == "gap" else evaluator.number(m)
-            numbers[m.label] = e.with_exact(self.exact.number(m, constants))
+            numbers[m.label] = replace(e.with_exact(self.exact.number(m, constants)), quantity=m.quantity)
         warnings, numbers = self.judge(chain, evaluator, numbers, self.action.measurements)
         if self.met or not self.goal.precision:
             met = True
@@ -377,6 +380,7 @@ class _Session:
             ("<exp(-dH)>", f"{mean:.5f} ± {error:.5f}"),
             ("stopped", f"{reasons[chain.stop]}, {chain.seconds:.1f} s"),
         ]
+        facts += unit_facts(self.action)
         if self.exact.reason:
             facts.append(("exact column", self.exact.reason))
         return tuple(facts)

@@ -17,8 +17,9 @@ from quarterturn.actions.findings import check
 from quarterturn.actions.in_units import known
 from quarterturn.actions.model import Action, Finding
 from quarterturn.errors import ActionError, RequestError, SpectrumError
+from quarterturn.units.unit import ENERGY, TEMPERATURE, amount
 
-LATTICE_WORDS = ("a", "beta", "sites")
+LATTICE_WORDS = ("a", "beta", "sites", "temperature")
 DEFAULT_ERROR = "1%"
 DEFAULT_SECONDS = 60.0
 SAME_HBAR = 1e-6  # relative; a record may hold hbar from another release of the constants
@@ -72,6 +73,8 @@ def resolve(action: Action, keywords: Mapping[str, Any]) -> Settings:
     ActionError where a finding at these couplings makes the integral diverge.
     """
     couplings, lattice = split(action, keywords)
+    if "temperature" in keywords:
+        lattice = _at_temperature(action, lattice)
     sites, spacing = _geometry(action, couplings, lattice)
     return Settings(couplings, sites, spacing, examined(action, couplings))
 
@@ -98,10 +101,36 @@ def split(action: Action, keywords: Mapping[str, Any]) -> tuple[dict[str, float]
                     f"{word} is known in these units, {action.couplings[word].default:.10g}: leave it out"
                 )
         elif word in LATTICE_WORDS:
-            lattice[word] = _number(word, value)
+            lattice[word] = _measured(action, word, value)
         else:
             raise unknown_keyword(word, action)
+    if "temperature" in lattice:
+        if "beta" in lattice:
+            raise RequestError("temperature and beta are one thing: give one of them")
+        lattice["beta"] = lattice.pop("temperature")
     return couplings, lattice
+
+
+def _measured(action: Action, word: str, value: Any) -> float:
+    """A word of the lattice as the action counts it, from a number or from an amount such as 300 K or 0.5 fs.
+
+    The entry of `temperature` is the inverse temperature.
+    """
+    system = action.system
+    if word == "temperature" or (isinstance(value, str) and word != "sites"):
+        try:
+            number, given = float(value), system.temperature
+        except ValueError:
+            number, given = amount(value)
+        if given is not None:
+            if word == "temperature" and given.powers not in (TEMPERATURE, ENERGY):
+                raise RequestError(f"temperature must be a temperature or an energy; {given} is {given.kind}")
+            return system.beta(number, given)
+        if word == "temperature":  # in natural units, k_B = 1
+            if not number > 0:
+                raise RequestError(f"temperature must be positive, got {number:g}")
+            return 1 / number
+    return _number(word, value)
 
 
 MOST_SITES = 200_000  # that `beta = vacuum` chooses
@@ -125,7 +154,8 @@ def unknown_keyword(word: str, action: Action) -> RequestError:
     near = difflib.get_close_matches(word, there, n=1)
     names = ", ".join(action.couplings) or "none"
     return RequestError(
-        f"{action.name} has no coupling {word}; its couplings are {names}, the lattice is set by a, beta, sites",
+        f"{action.name} has no coupling {word}; its couplings are {names}, the lattice is set by a, beta, sites, "
+        "temperature",
         repair=f"{near[0]} = …" if near else None,
     )
 
@@ -138,6 +168,14 @@ def _number(word: str, value: Any) -> float:
     if not math.isfinite(number):
         raise RequestError(f"{word} must be finite, got {number}")
     return number
+
+
+def _at_temperature(action: Action, asked: Mapping[str, float]) -> dict[str, float]:
+    """Where a temperature comes with a spacing or with none, beta gets a whole number of spacings, none longer."""
+    spacing = asked.get("a", action.geometry.spacing if action.geometry else 0.0)
+    if "sites" in asked or not spacing > 0:
+        return dict(asked)
+    return {"beta": asked["beta"], "sites": max(math.ceil(asked["beta"] / spacing * (1 - 1e-9)), 3)}
 
 
 def _geometry(action: Action, couplings: Mapping[str, float], asked: Mapping[str, float]) -> tuple[int, float]:

@@ -23,8 +23,12 @@ from quarterturn.reports.bundle import mimebundle
 from quarterturn.reports.report import Curve, Report, Row
 from quarterturn.reports.text import text as render_text
 from quarterturn.runs.exact import ENERGY, ExactColumn
-from quarterturn.runs.recording import base_record
+from quarterturn.runs.recording import base_record, with_unit
 from quarterturn.runs.settings import NO_SPECTRUM, Settings, examined, require_paths, resolve, split
+from quarterturn.runs.unit_words import along, level, step
+from quarterturn.runs.unit_words import facts as unit_facts
+from quarterturn.units.number import Number
+from quarterturn.units.quantity import UNKNOWN, Quantity
 
 Floats = NDArray[np.float64]
 CURVE_POINTS = 101
@@ -50,7 +54,7 @@ class Levels:
         """A measured quantity by its label, in any spelling of it; RequestError lists what there is."""
         for name in (label, measurement_label(label)):
             if name in self.numbers:
-                return self.numbers[name]
+                return Number(self.numbers[name], self._quantities.get(name, UNKNOWN))
             if name in self.curves:
                 return self.curves[name]
         raise RequestError(
@@ -63,6 +67,14 @@ class Levels:
 
     def __len__(self) -> int:
         return len(self.numbers) + len(self.curves)
+
+    @property
+    def _quantities(self) -> dict[str, Quantity]:
+        return {m.label: m.quantity for m in self.action.measurements}
+
+    def to(self, unit: str, *, scale: str | None = None) -> Floats:
+        """The energies counted in another unit, (count,); parameters and errors as `Estimate.to`."""
+        return self.energies * level(self.action).converted(unit, scale)[0]
 
     def at(self, beta: float) -> Levels:
         """The same spectrum at inverse temperature `beta`: thermal averages in the place of vacuum ones.
@@ -82,12 +94,24 @@ class Levels:
         """Everything a person sees, as plain data."""
         latex = {m.label: m.latex for m in self.action.measurements}
         rows = [
-            Row(f"E_{n}", f"E_{{{n}}}", float(e), float(err))
+            Row(f"E_{n}", f"E_{{{n}}}", float(e), float(err), unit=level(self.action).name)
             for n, (e, err) in enumerate(zip(self.energies, self.errors, strict=True))
         ]
-        rows += [Row(label, latex.get(label, ""), float(v)) for label, v in self.numbers.items() if np.isfinite(v)]
+        units = {label: quantity.name for label, quantity in self._quantities.items()}
+        rows += [
+            Row(label, latex.get(label, ""), float(v), unit=units.get(label, ""))
+            for label, v in self.numbers.items()
+            if np.isfinite(v)
+        ]
         curves = [
-            Curve(label, latex.get(label, ""), "t", tuple(map(float, c.t)), tuple(map(float, c.value)))
+            Curve(
+                label,
+                latex.get(label, ""),
+                along(self.action),
+                tuple(map(float, c.t)),
+                tuple(map(float, c.value)),
+                unit=c.unit,
+            )
             for label, c in self.curves.items()
         ]
         where = "in the continuum" if self.spectrum is not None else "at the lattice spacing"
@@ -99,13 +123,13 @@ class Levels:
             couplings=tuple(self.couplings.items()),
             rows=tuple(rows),
             curves=(*self._waves(), *curves),
-            facts=self.facts,
+            facts=(*self.facts, *unit_facts(self.action)),
             record_name=self.record_name,
             record=self.record,
         )
 
     def _waves(self) -> list[Curve]:
-        """The potential, and each wave function raised to its level, over the region that the levels reach."""
+        """The potential, and the wave function of each level, over the region that the levels reach."""
         if self.spectrum is None or len(self.action.euclidean.variables) > 1:
             return []
         grid, states = self.spectrum.grid, self.spectrum.states[:, : len(self.energies)]
@@ -114,12 +138,12 @@ class Levels:
         problem = one_path(self.action.euclidean, self.couplings)
         assert problem is not None
         x = tuple(map(float, grid[part]))
-        curves = [Curve("V", "V", "q", x, tuple(map(float, problem.potential(grid[part]))), style="potential")]
-        spread = float(self.energies[-1] - self.energies[0]) / max(1, len(self.energies)) or 1.0
+        q, unit = along(self.action, self.action.paths[0].name), level(self.action).name
+        potential = tuple(map(float, problem.potential(grid[part])))
+        curves = [Curve("V", "V", q, x, potential, style="potential", unit=unit)]
         for n, energy in enumerate(self.energies):
-            wave = np.real(states[part, n])
-            raised = energy + 0.45 * spread * wave / max(float(np.abs(states[:, n]).max()), 1e-300)
-            curves.append(Curve(f"E_{n}", f"E_{{{n}}}", "q", x, tuple(map(float, raised)), style="wave"))
+            wave = tuple(map(float, np.real(states[part, n])))
+            curves.append(Curve(f"E_{n}", f"E_{{{n}}}", q, x, wave, style="wave", baseline=float(energy), unit=unit))
         return curves
 
     def __repr__(self) -> str:
@@ -193,7 +217,7 @@ def _continuum(
         if value is None:
             continue
         if m.kind == "curve":
-            curves[m.label] = _bare(times, np.broadcast_to(value, times.shape), m.label)
+            curves[m.label] = _bare(times, np.broadcast_to(value, times.shape), m, action)
         else:
             numbers[m.label] = float(value)
     facts = (
@@ -217,9 +241,11 @@ def _continuum(
     )
 
 
-def _bare(t: Floats, value: Floats, label: str) -> CurveEstimate:
-    nothing = np.zeros(len(t))
-    return CurveEstimate(t, np.asarray(value, float), nothing, np.zeros((len(t), len(t))), None, label)
+def _bare(t: Floats, value: Floats, m: Measurement, action: Action) -> CurveEstimate:
+    nothing, none = np.zeros(len(t)), np.zeros((len(t), len(t)))
+    return CurveEstimate(
+        t, np.asarray(value, float), nothing, none, None, m.label, quantity=m.quantity, step=step(action)
+    )
 
 
 @dataclass(frozen=True)
@@ -295,7 +321,7 @@ def _lattice(action: Action, settings: Settings, count: int) -> Levels:
         if m.kind == "curve":
             curve = exact.curve(m, constants, steps)
             if curve is not None:
-                curves[m.label] = _bare(np.arange(steps, dtype=np.float64) * settings.spacing, curve, m.label)
+                curves[m.label] = _bare(np.arange(steps, dtype=np.float64) * settings.spacing, curve, m, action)
         else:
             number = exact.number(m, constants)
             if number is not None:
@@ -322,12 +348,14 @@ def _recorded(result: Levels, settings: Settings | None) -> Levels:
         record["lattice"] = None
     record["request"] = {"count": len(result.energies), "beta": result.beta if settings is None else None}
     record["method"] = dict(result.facts)
+    units = {m.label: with_unit(m.quantity) for m in result.action.measurements}
+    energies = with_unit(level(result.action))
     record["results"] = [
-        {"label": f"E_{n}", "kind": "number", "value": float(e), "error": float(err), "state": "good"}
+        {"label": f"E_{n}", "kind": "number", "value": float(e), "error": float(err), "state": "good", **energies}
         for n, (e, err) in enumerate(zip(result.energies, result.errors, strict=True))
     ]
     record["results"] += [
-        {"label": label, "kind": "number", "value": float(v), "error": None, "state": "good"}
+        {"label": label, "kind": "number", "value": float(v), "error": None, "state": "good", **units.get(label, {})}
         for label, v in result.numbers.items()
         if np.isfinite(v)
     ]
