@@ -22,6 +22,7 @@ import numpy as np  # noqa: E402
 
 from . import ours  # noqa: E402
 from .baselines import CompiledChains, Floats, PathProblem, compiled_chains, numpy_hamiltonian  # noqa: E402
+from .coupled import coupled_levels  # noqa: E402
 from .efficiency import autocorrelation_time, effective_samples  # noqa: E402
 
 BETA = 20.0
@@ -227,6 +228,7 @@ def main() -> None:
     print(f"\ntau(q^2) at N = 1600 over N = 200: {fine / coarse:.3f}   goal 1.1")
     compare(WELLS, chains, rounds, seconds, {("C Metropolis", "q"): "20,000x", ("C HMC", "q^2"): ""})
     levels()
+    coupled_levels()
     changed_coupling()
     sweep_parts()
     imports()

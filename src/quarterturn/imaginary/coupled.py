@@ -19,7 +19,7 @@ from quarterturn.errors import SpectrumError
 
 Floats = NDArray[np.float64]
 Field = Callable[[Floats], Floats]  # of the paths at one time, (C, …), to (…)
-COUPLED = 0.2  # a mixed curvature, relative to the diagonal ones, from which on normal modes are better
+COUPLED = 0.5  # a mixed curvature, relative to the diagonal ones, from which on normal modes are better
 MOST = 3
 
 

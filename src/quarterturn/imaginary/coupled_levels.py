@@ -25,7 +25,7 @@ from quarterturn.imaginary.product import Grid, Integers, ProductBasis
 from quarterturn.imaginary.spectrum import Spectrum
 
 Floats = NDArray[np.float64]
-AGREEMENT = 2e-12  # change between two bases, relative to the height of the levels, that counts as none
+AGREEMENT = 1e-11  # change between two bases, relative to the height of the levels, that counts as none
 LOOSE = 1e-5  # the same for the highest states of a thermal sum
 TOLERATED = 1e-3  # the largest error that is reported as one
 CONVERGED = 1e-9  # below which a level may enter sums
@@ -135,7 +135,7 @@ class Shape:
         return self._scaled(0.965, 0.965, FEWER)
 
     def larger(self) -> Shape:
-        return self._scaled(1.05, 1.08, 1.5)
+        return self._scaled(1.05, 1.08, 1.45)
 
     def _scaled(self, reach: float, density: float, products: float) -> Shape:
         extents = tuple(e.scaled(reach, density) for e in self.extents)
@@ -155,7 +155,7 @@ def shaped(problem: CoupledPaths, count: float, above: float = 0.0) -> tuple[Sha
     region, extents = settle(coordinates, centre, reach, count + 1.5, above)
     energy = region.energy_of(count + 1.5) + above
     number = region.number(energy)
-    products = {2: 40 + 3.5 * number, 3: 160 + 6 * number}[problem.size]
+    products = {2: 60 + 8 * number, 3: 260 + 17 * number}[problem.size]
     return Shape(
         coordinates, tuple(extents), (energy - region.bottom) / (2 * problem.size), math.ceil(products)
     ), region
