@@ -117,7 +117,7 @@ def test_a_rotated_quartic_has_the_levels_of_its_own_axes():
 # --- magnetic ---------------------------------------------------------------------------------------------------
 GAUGES: dict[str, tuple[Callable, Callable]] = {
     "symmetric": (lambda q: -q[1] / 2, lambda q: q[0] / 2),
-    "between": (lambda q: -0.7 * q[1], lambda q: 0.3 * q[0]),
+    "between": (lambda q: -0.55 * q[1], lambda q: 0.45 * q[0]),
 }
 
 

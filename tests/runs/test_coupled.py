@@ -94,3 +94,18 @@ def test_what_is_left_out_is_said() -> None:
     found = levels(pair)
     assert found["<r.r>"] == pytest.approx(1, rel=1e-11)
     assert any("left out" in name and "kink" in words for name, words in found.facts)
+
+
+def test_unit_vectors_are_an_angle_and_a_rotor() -> None:
+    """Mathieu levels for two components; second-order Stark shift -E^2 I/3 and l(l+1)/2I for three (textbook)."""
+    expected = [float(e) for e in value("pendulum-K1")["value"]][:6]
+    flat = action("n[2](t), n.n = 1\nL = 1/2 n'.n' + K n[1]\nK = 1\nmeasure <n[1]>, <n[2]>")
+    found = levels(flat, count=6)
+    assert found.energies == pytest.approx(expected, rel=1e-10)
+    assert abs(found["<n[2]>"]) < 1e-10
+    rotor = action("n[3](t), n.n = 1\nL = 1/2 I n'.n' + E n[2]\nI = 2, E = 0.001\nmeasure <n[2]>, <n[1](t) n[1](0)>")
+    found = levels(rotor, count=4)
+    assert found.energies == pytest.approx([-2e-6 / 3, 0.5, 0.5, 0.5], abs=2e-6)
+    assert found.energies[0] == pytest.approx(-2e-6 / 3, rel=1e-5)
+    assert found["<n[2]>"] == pytest.approx(2 * 2e-3 / 3, rel=1e-5)
+    assert found["<n[1](t) n[1](0)>"].value[0] == pytest.approx(1 / 3, rel=1e-5)

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import itertools
 from collections.abc import Callable, Mapping
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,8 +17,10 @@ from quarterturn.actions.model import EuclideanAction
 from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.coupled import MOST, CoupledPaths
 from quarterturn.imaginary.problem import OnePath
+from quarterturn.imaginary.rotor import Rotor
 
 Floats = NDArray[np.float64]
+Problem = OnePath | CoupledPaths | Rotor
 
 
 def coupling_values(couplings: Mapping[str, float]) -> dict[Atom, float]:
@@ -27,9 +30,15 @@ def coupling_values(couplings: Mapping[str, float]) -> dict[Atom, float]:
 def local_function(
     expression: Expression, euclidean: EuclideanAction, couplings: Mapping[str, float]
 ) -> Callable[[Floats], Floats]:
-    """An expression of the paths, as a function of an array of their values: (…) of one path, (C, …) of several."""
+    """An expression of the paths, as a function of an array of their values: (…) of one path, (C, …) of several.
+
+    Of a unit vector with two components it is a function of its angle.
+    """
     scalars = coupling_values(couplings)
     atoms = euclidean.variables
+    if euclidean.spheres == ((0, 1),):
+        plane = local_function(expression, replace(euclidean, spheres=()), couplings)
+        return lambda angle: plane(np.stack([np.cos(angle), np.sin(angle)]))
 
     def function(q: Floats) -> Floats:
         paths: dict[Atom, Floats] = {atoms[0]: q} if len(atoms) == 1 else dict(zip(atoms, q, strict=True))
@@ -41,13 +50,15 @@ def local_function(
     return function
 
 
-def problem_of(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> OnePath | CoupledPaths:
-    """The problem of one, two or three degrees of freedom.
+def problem_of(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> Problem:
+    """The problem of one, two or three degrees of freedom, or of a unit vector with two or three components.
 
     Raises SpectrumError where the action has more, or a source that depends on time.
     """
     if euclidean.sources:
         raise SpectrumError("a source depends on time: only log Z[J] of one or two paths has an exact value")
+    if euclidean.spheres:
+        return _unit_vector(euclidean, couplings)
     degrees = len(euclidean.variables)
     if degrees > MOST:
         raise SpectrumError(
@@ -60,6 +71,23 @@ def problem_of(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> On
             raise SpectrumError("a drift that depends on the path is solved on a line or for two or three paths only")
         return problem
     return coupled_paths(euclidean, couplings)
+
+
+def _unit_vector(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> OnePath | Rotor:
+    """A unit vector by itself: an angle, or a rigid rotor. Raises SpectrumError where there is more."""
+    components = len(euclidean.variables)
+    if euclidean.spheres != (tuple(range(components)),) or components not in (2, 3):
+        raise SpectrumError("a unit vector is solved by itself, with two or three components: sample it instead")
+    if any(a.terms for a in euclidean.drift):
+        raise SpectrumError("a unit vector is solved without terms linear in its velocity")
+    scalars = coupling_values(couplings)
+    mass = np.array([[float(k.evaluate(scalars, np)) for k in row] for row in euclidean.mass])
+    if np.any(mass != mass[0, 0] * np.eye(components)):
+        raise SpectrumError("a unit vector is solved with one moment of inertia for all its components")
+    potential = local_function(euclidean.potential, euclidean, couplings)
+    if components == 2:
+        return OnePath(float(mass[0, 0]), potential, period=2 * np.pi)
+    return Rotor(float(mass[0, 0]), potential)
 
 
 def coupled_paths(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> CoupledPaths:

@@ -19,8 +19,6 @@ from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.basis import Numbers
 from quarterturn.imaginary.coupled import Coordinates, CoupledPaths
 from quarterturn.imaginary.extent import INSTEAD, Extent, Region, curvature, lowest, settle
-from quarterturn.imaginary.levels import levels
-from quarterturn.imaginary.problem import OnePath
 from quarterturn.imaginary.product import Grid, Integers, ProductBasis
 from quarterturn.imaginary.spectrum import Spectrum
 
@@ -159,11 +157,6 @@ def shaped(problem: CoupledPaths, count: float, above: float = 0.0) -> tuple[Sha
     return Shape(
         coordinates, tuple(extents), (energy - region.bottom) / (2 * problem.size), math.ceil(products)
     ), region
-
-
-def spectrum_of(problem: OnePath | CoupledPaths, count: int) -> Spectrum:
-    """The lowest `count` levels of one, two or three degrees of freedom. Raises SpectrumError."""
-    return levels(problem, count) if isinstance(problem, OnePath) else coupled_levels(problem, count)
 
 
 def coupled_levels(problem: CoupledPaths, count: int, agreement: float = AGREEMENT) -> Spectrum:

@@ -19,11 +19,10 @@ from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.basis import Numbers
 from quarterturn.imaginary.coupled import CoupledPaths
 from quarterturn.imaginary.coupled_levels import Matrix, Shape, shaped
-from quarterturn.imaginary.problem import Local, OnePath
+from quarterturn.imaginary.problem import Local
 from quarterturn.imaginary.product import Integers
 from quarterturn.imaginary.product_observables import ProductObserver
 from quarterturn.imaginary.traces import chain, pair, together
-from quarterturn.imaginary.transfer import Transfer, transfer
 
 Floats = NDArray[np.float64]
 THERMAL_RESIDUE = 27.0  # states suppressed by exp(-27) = 2e-12 carry nothing in a trace
@@ -229,16 +228,6 @@ class CoupledTransfer:
         waves = self.link.waves(self.vectors[:, : len(self._ratios)])
         weights = (weight * np.exp(-self.spacing * self.link.kinetic)).ravel()
         return np.asarray(waves.conj().T @ (weights[:, None] * waves))
-
-
-AnyTransfer = Transfer | CoupledTransfer
-
-
-def transfer_of(problem: OnePath | CoupledPaths, spacing: float, sites: int) -> AnyTransfer:
-    """The transfer matrix of one or two degrees of freedom. Raises SpectrumError."""
-    if isinstance(problem, OnePath):
-        return transfer(problem, spacing, sites)
-    return coupled_transfer(problem, spacing, sites)
 
 
 def coupled_transfer(problem: CoupledPaths, spacing: float, sites: int) -> CoupledTransfer:

@@ -179,6 +179,11 @@ class ProductBasis:
         """Functions of each axis that occur, (n_i, M_i)."""
         return tuple(axis.functions[:, : m.max() + 1] for axis, m in zip(self.axes, self.members, strict=True))
 
+    @property
+    def periods(self) -> tuple[float | None, ...]:
+        """Of the paths."""
+        return self.coordinates.problem.periods
+
     @cached_property
     def energies(self) -> Floats:
         return np.asarray(sum(axis.energies[m] for axis, m in zip(self.axes, self.members, strict=True)))

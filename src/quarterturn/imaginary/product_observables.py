@@ -20,8 +20,10 @@ from quarterturn.imaginary.basis import Circle, Interval, Numbers
 from quarterturn.imaginary.observables import Diagonal, Observer
 from quarterturn.imaginary.problem import Local
 from quarterturn.imaginary.product import ProductBasis
+from quarterturn.imaginary.rotor import SphereBasis
 
 Floats = NDArray[np.float64]
+Several = ProductBasis | SphereBasis  # bases of more than one variable
 FACTORS = {2: (1, 2, 4, 8), 3: (1, 2, 3)}  # by which the grid is made finer for functions with kinks or poles
 SMOOTH = 1e-9  # of the mean of |f|, between the two sums
 ROUGH = 1e-7  # the same on the finest grid; what is rougher is refused
@@ -32,7 +34,7 @@ COLUMNS = 2_000_000  # numbers on the grid at once
 class Multiplication(Diagonal):
     """Multiplication with a function on the product grid, (P,), of coefficients in a product basis."""
 
-    basis: ProductBasis
+    basis: Several
 
     def __matmul__(self, vectors: Numbers) -> Numbers:
         width = max(1, COLUMNS // len(self.values))
@@ -46,23 +48,22 @@ class Multiplication(Diagonal):
 class ProductObserver:
     """Turns functions into operators, looked at with the states that matter: columns of `states`, with weights."""
 
-    basis: ProductBasis
+    basis: Several
     states: Numbers  # (N, s)
     weights: Floats  # (s,)
 
     @cached_property
-    def _refined(self) -> dict[int, tuple[ProductBasis, Numbers, Numbers]]:
+    def _refined(self) -> dict[int, tuple[Several, Numbers, Numbers]]:
         """Finer grids, and there the density times a constant and slow waves, on the grid and midway, (2, P) each."""
         return {}
 
-    def _on(self, factor: int) -> tuple[ProductBasis, Numbers, Numbers]:
+    def _on(self, factor: int) -> tuple[Several, Numbers, Numbers]:
         if factor not in self._refined:
-            basis = self.basis if factor == 1 else self.basis.refined(factor)
+            basis: Several = self.basis if factor == 1 else self.basis.refined(factor)
             on_grid, between = self._density(basis.on_grid), self._density(basis.between)
             mean = basis.grid @ on_grid
             width = np.sqrt(((basis.grid - mean[:, None]) ** 2) @ on_grid)
-            periods = basis.coordinates.problem.periods
-            slow = np.array([2 * np.pi / p if p else 1.7 / w for p, w in zip(periods, width, strict=True)])
+            slow = np.array([2 * np.pi / p if p else 1.7 / w for p, w in zip(basis.periods, width, strict=True)])
 
             def both(density: Floats, q: Floats) -> Numbers:
                 return np.stack([density + 0j, density * np.exp(1j * (slow @ (q - mean[:, None])))])
@@ -78,12 +79,12 @@ class ProductObserver:
 
     def operator(self, f: Local) -> Diagonal:
         """f(q) as an operator. Raises SpectrumError where f is not finite or not smooth enough for the finest grid."""
-        for factor in FACTORS[len(self.basis.axes)]:
+        for factor in FACTORS[len(self.basis.periods)]:
             basis, on_grid, between = self._on(factor)
             values = self._values(f, basis.grid)
             size = float(np.abs(values) @ np.real(on_grid[0]))
             change = float(np.max(np.abs(on_grid @ values - between @ self._values(f, basis.midpoints))))
-            if change <= (ROUGH if factor == FACTORS[len(self.basis.axes)][-1] else SMOOTH) * size:
+            if change <= (ROUGH if factor == FACTORS[len(self.basis.periods)][-1] else SMOOTH) * size:
                 return Multiplication(values, basis)
         raise SpectrumError(
             f"an observable with a kink, a step or a pole is not resolved with several paths: its average would be "
@@ -99,8 +100,8 @@ class ProductObserver:
         return np.asarray(value)
 
 
-def observer(basis: Interval | Circle | ProductBasis, states: Numbers, weights: Floats) -> Observer | ProductObserver:
+def observer(basis: Interval | Circle | Several, states: Numbers, weights: Floats) -> Observer | ProductObserver:
     """What turns functions into operators in a basis."""
-    if isinstance(basis, ProductBasis):
+    if isinstance(basis, Several):
         return ProductObserver(basis, states, weights)
     return Observer(basis, states, weights)

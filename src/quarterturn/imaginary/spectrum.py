@@ -12,8 +12,7 @@ from numpy.typing import NDArray
 from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.basis import Basis, Numbers
 from quarterturn.imaginary.problem import Local
-from quarterturn.imaginary.product import ProductBasis
-from quarterturn.imaginary.product_observables import observer
+from quarterturn.imaginary.product_observables import Several, observer
 from quarterturn.imaginary.thermal import Thermal, finer_for_kinks
 
 Floats = NDArray[np.float64]
@@ -31,7 +30,7 @@ class Spectrum:
 
     energies: Floats  # (count,) as asked for, ascending
     errors: Floats  # (count,)
-    basis: Basis | ProductBasis
+    basis: Basis | Several
     mass: float
     values: Floats  # (M,) all eigenvalues in the basis
     vectors: Numbers  # (M, M) orthonormal; real, but on a circle with flux
@@ -50,12 +49,12 @@ class Spectrum:
     @cached_property
     def weights(self) -> Floats:
         """(M,) of the quadrature on the grid."""
-        return np.full(self.grid.shape[-1], self.basis.step)
+        return np.broadcast_to(np.asarray(self.basis.step), self.grid.shape[-1:])
 
     @cached_property
     def states(self) -> Numbers:
         """(M, count) wave functions on the grid, sum weights |psi|^2 = 1, positive on their last lobe."""
-        return np.asarray(self.basis.on_grid(self.vectors[:, : len(self.energies)]) / np.sqrt(self.basis.step))
+        return np.asarray(self.basis.on_grid(self.vectors[:, : len(self.energies)]) / np.sqrt(self.weights)[:, None])
 
     def wave(self, n: int, q: Floats) -> Numbers:
         """Wave function of level n at any points q inside the box or on the circle; of several paths q is (C, K)."""
@@ -102,7 +101,7 @@ class Spectrum:
         return n
 
     def _continuum_is_resolved(self, longest: float) -> None:
-        if not np.isfinite(self.threshold) or isinstance(self.basis, ProductBasis):
+        if not np.isfinite(self.threshold) or isinstance(self.basis, Several):
             return
         mean = np.abs(self.vectors[:, 0]) ** 2 @ self.grid
         distance = min(mean - self.grid[0], self.grid[-1] - mean)

@@ -14,8 +14,7 @@ from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.basis import Basis, Numbers
 from quarterturn.imaginary.observables import Diagonal, Observer
 from quarterturn.imaginary.problem import Local
-from quarterturn.imaginary.product import ProductBasis
-from quarterturn.imaginary.product_observables import ProductObserver, observer
+from quarterturn.imaginary.product_observables import ProductObserver, Several, observer
 
 Floats = NDArray[np.float64]
 DAMPED = 28.0  # exp(-28) = 7e-13 of a wave is left
@@ -28,7 +27,7 @@ Refined = TypeVar("Refined")
 def finer_for_kinks(
     operators: Sequence[Diagonal | Numbers],
     times: Floats,
-    basis: Basis | ProductBasis,
+    basis: Basis | Several,
     mass: float,
     refine: Callable[[float], Refined],
 ) -> Refined | None:
@@ -37,7 +36,7 @@ def finer_for_kinks(
     A smooth function makes no wave that the basis does not hold; a kink makes arbitrarily fast ones, which only time
     damps. `refine` solves on a grid for waves up to a kinetic energy. Raises SpectrumError where times are too short.
     """
-    if isinstance(basis, ProductBasis) or all(isinstance(o, Diagonal) for o in operators) or not times.any():
+    if isinstance(basis, Several) or all(isinstance(o, Diagonal) for o in operators) or not times.any():
         return None
     shortest = float(np.min(np.abs(times[times != 0])))
     if (needed := DAMPED / shortest) <= np.max(basis.momenta**2) / (2 * mass):
@@ -54,7 +53,7 @@ def finer_for_kinks(
 class Thermal:
     """A spectrum at inverse temperature `beta`."""
 
-    basis: Basis | ProductBasis
+    basis: Basis | Several
     mass: float
     values: Floats  # (M,) ascending
     vectors: Numbers  # (M, M)

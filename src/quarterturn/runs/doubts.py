@@ -16,8 +16,8 @@ from quarterturn.actions.model import EuclideanAction, Measurement
 from quarterturn.errors import SpectrumError
 from quarterturn.estimates.estimate import Estimate
 from quarterturn.imaginary.binding import local_function, one_path, problem_of
-from quarterturn.imaginary.coupled_levels import spectrum_of
-from quarterturn.imaginary.coupled_transfer import AnyTransfer, CoupledTransfer
+from quarterturn.imaginary.coupled_transfer import CoupledTransfer
+from quarterturn.imaginary.solve import AnyTransfer, spectrum_of
 from quarterturn.imaginary.spectrum import Spectrum
 from quarterturn.imaginary.transfer import Transfer
 from quarterturn.runs.exact import ENERGY

@@ -18,7 +18,8 @@ from quarterturn.actions.model import Bracket, EuclideanAction, Measurement
 from quarterturn.compiled.observables import lattice_offsets
 from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.binding import local_function, problem_of
-from quarterturn.imaginary.coupled_transfer import AnyTransfer, CoupledTransfer, transfer_of
+from quarterturn.imaginary.coupled_transfer import CoupledTransfer
+from quarterturn.imaginary.solve import AnyTransfer, transfer_of
 from quarterturn.lattice.sources import source_values
 
 Floats = NDArray[np.float64]

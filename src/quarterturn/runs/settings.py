@@ -219,7 +219,7 @@ def cold_enough(action: Action, couplings: Mapping[str, float], spacing: float, 
     Raises RequestError where the gap of the action isn't known without sampling, or there is none.
     """
     from quarterturn.imaginary.binding import problem_of
-    from quarterturn.imaginary.coupled_levels import spectrum_of
+    from quarterturn.imaginary.solve import spectrum_of
 
     try:
         energies = spectrum_of(problem_of(action.euclidean, couplings), 2).energies

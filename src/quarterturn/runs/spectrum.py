@@ -15,7 +15,7 @@ from quarterturn.actions.model import Action, Bracket, Measurement
 from quarterturn.errors import RequestError, SpectrumError
 from quarterturn.estimates.estimate import CurveEstimate
 from quarterturn.imaginary.binding import local_function, one_path, problem_of
-from quarterturn.imaginary.coupled_levels import spectrum_of
+from quarterturn.imaginary.solve import spectrum_of
 from quarterturn.imaginary.spectrum import Spectrum
 from quarterturn.records.canonical import record_name
 from quarterturn.records.schema import validate
@@ -183,7 +183,8 @@ def levels(action: Action, *, count: int = 6, spacing: str | None = None, **keyw
         raise RequestError(f"count must be a whole number of levels, at least 1, got {count!r}")
     if spacing not in (None, "lattice"):
         raise RequestError(f"spacing must be 'lattice' (the action's own) or absent (the continuum), got {spacing!r}")
-    require_paths(action, "the spectrum")
+    if spacing == "lattice" or action.euclidean.dimension > 1 or action.euclidean.links:
+        require_paths(action, "the spectrum")
     if spacing == "lattice":
         return _lattice(action, resolve(action, keywords), int(count))
     couplings, lattice = split(action, keywords)
