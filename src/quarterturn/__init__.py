@@ -18,6 +18,7 @@ from quarterturn.errors import (
 
 if TYPE_CHECKING:
     from quarterturn.runs.declaration import action
+    from quarterturn.runs.propagation import propagate
     from quarterturn.runs.saddle import saddle
     from quarterturn.runs.sampling import sample
     from quarterturn.runs.series import series
@@ -36,6 +37,7 @@ __all__ = [
     "SpectrumError",
     "action",
     "levels",
+    "propagate",
     "saddle",
     "sample",
     "series",
@@ -46,6 +48,7 @@ _ROOMS = {
     "action": "quarterturn.runs.declaration",
     "sample": "quarterturn.runs.sampling",
     "levels": "quarterturn.runs.spectrum",
+    "propagate": "quarterturn.runs.propagation",
     "saddle": "quarterturn.runs.saddle",
     "series": "quarterturn.runs.series",
     "verify": "quarterturn.runs.verification",

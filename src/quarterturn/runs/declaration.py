@@ -28,7 +28,7 @@ RESERVED = frozenset(
         "spacing",
         "vacuum",
         "kind",
-        *("coupling", "order", "level"),
+        *("coupling", "order", "level", "start", "end", "scheme"),
         *LATTICE_WORDS,
     }
 )

@@ -28,6 +28,7 @@ from quarterturn.reports.report import Curve, Report, Row
 from quarterturn.reports.text import text as render_text
 from quarterturn.runs.recording import base_record
 from quarterturn.runs.settings import NO_SPECTRUM, Settings, examined, split
+from quarterturn.runs.unit_words import facts as unit_facts
 
 DEFAULT_ORDER = 50
 SHOWN_TERMS = 6  # of the series, in a report
@@ -301,7 +302,7 @@ def _facts(result: Series) -> tuple[tuple[str, str], ...]:
         solved = format_value_error(result.exact, result.exact_error)
         facts.append(("exact", f"E_{result.level} = {solved}, solved for"))
     facts.append(("errors", "the change that one, two and a sixth fewer coefficients make: estimates, no bounds"))
-    return tuple(facts)
+    return (*facts, *unit_facts(result.action))
 
 
 def _growth_facts(result: Series, growth: Growth) -> list[tuple[str, str]]:

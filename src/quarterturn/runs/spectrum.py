@@ -15,6 +15,7 @@ from quarterturn.actions.model import Action, Bracket, Measurement
 from quarterturn.errors import RequestError, SpectrumError
 from quarterturn.estimates.estimate import CurveEstimate
 from quarterturn.imaginary.binding import local_function, one_path, problem_of
+from quarterturn.imaginary.products import euclidean_product
 from quarterturn.imaginary.solve import spectrum_of
 from quarterturn.imaginary.spectrum import Spectrum
 from quarterturn.records.canonical import record_name
@@ -22,6 +23,7 @@ from quarterturn.records.schema import validate
 from quarterturn.reports.bundle import mimebundle
 from quarterturn.reports.report import Curve, Report, Row
 from quarterturn.reports.text import text as render_text
+from quarterturn.runs.consequences import Consequences
 from quarterturn.runs.exact import ENERGY, ExactColumn
 from quarterturn.runs.recording import base_record, with_unit
 from quarterturn.runs.settings import NO_SPECTRUM, Settings, examined, require_paths, resolve, split
@@ -35,7 +37,7 @@ CURVE_POINTS = 101
 
 
 @dataclass(frozen=True, eq=False)
-class Levels:
+class Levels(Consequences):
     """What `levels` returns: energies with errors, and measured quantities in the vacuum or at a temperature."""
 
     action: Action
@@ -292,7 +294,10 @@ class _View:
         if len(bracket.groups) == 1:
             return float(np.real(self.spectrum.expectation(self._function(bracket.groups[0][1]), self.beta)))
         if len(bracket.groups) > 2:
-            return None
+            if bracket.free:
+                return None
+            factors = [(float(time or 0), self._function(e)) for time, e in bracket.groups]
+            return float(np.real(euclidean_product(self.spectrum, factors, self.beta)))
         (t1, f), (t2, g) = bracket.groups
         if t1 is not None and t2 is not None:
             apart = np.array([abs(float(t1 - t2))])
