@@ -8,7 +8,7 @@ Molecular Vibrations, 1955, ch. 2), chosen sparse among degenerate ones so that 
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -106,19 +106,29 @@ class Coordinates:
         return Coordinates(problem, np.eye(problem.size), _inverse(problem.mass))
 
     @staticmethod
-    def normal(problem: CoupledPaths, curvature: Floats) -> Coordinates:
-        """Normal modes of the lines for the second derivatives `curvature`, (L, L), where anything is coupled."""
+    def candidates(problem: CoupledPaths, forms: Sequence[Floats]) -> list[Coordinates]:
+        """The paths themselves, where their masses do not mix lines, and axes that diagonalise quadratic forms, (L, L).
+
+        The best guess comes first: the paths themselves unless the first form couples them strongly.
+        """
         lines = np.ix_(problem.lines, problem.lines)
         inverse = _inverse(problem.mass)
         kinetic = inverse[lines]
-        if not (np.any(kinetic - np.diag(np.diag(kinetic))) or _coupling(curvature) > COUPLED):
-            return Coordinates.given(problem)
-        root = np.linalg.cholesky(kinetic)
+        turned = [Coordinates._turned(problem, inverse, form) for form in forms if _coupling(form) > 1e-6]
+        if np.any(kinetic - np.diag(np.diag(kinetic))):
+            return turned or [Coordinates._turned(problem, inverse, np.eye(len(kinetic)))]
+        given = Coordinates(problem, np.eye(problem.size), inverse)
+        return [*turned[:1], given, *turned[1:]] if turned and _coupling(forms[0]) > COUPLED else [given, *turned]
+
+    @staticmethod
+    def _turned(problem: CoupledPaths, inverse: Floats, form: Floats) -> Coordinates:
+        lines = np.ix_(problem.lines, problem.lines)
+        root = np.linalg.cholesky(inverse[lines])
         matrix = np.eye(problem.size)
-        matrix[lines] = root @ _modes(root.T @ curvature @ root)
+        matrix[lines] = root @ _modes(root.T @ form @ root)
         back = np.linalg.inv(matrix)
         turned = back @ inverse @ back.T
-        turned[lines] = np.eye(len(kinetic))
+        turned[lines] = np.eye(len(root))
         return Coordinates(problem, matrix, turned)
 
 

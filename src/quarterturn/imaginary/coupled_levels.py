@@ -8,7 +8,7 @@ same is done once more on a coarser grid in a smaller box with fewer products, a
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
 
@@ -24,6 +24,7 @@ from quarterturn.imaginary.spectrum import Spectrum
 
 Floats = NDArray[np.float64]
 AGREEMENT = 1e-11  # change between two bases, relative to the height of the levels, that counts as none
+FAR = 1e-7  # the same from which other coordinates are tried
 LOOSE = 1e-5  # the same for the highest states of a thermal sum
 TOLERATED = 1e-3  # the largest error that is reported as one
 CONVERGED = 1e-9  # below which a level may enter sums
@@ -140,23 +141,55 @@ class Shape:
         return replace(self, extents=extents, products=math.ceil(self.products * products))
 
 
-def shaped(problem: CoupledPaths, count: float, above: float = 0.0) -> tuple[Shape, Region]:
-    """A basis for levels up to the `count`th, and `above` more in energy.
+def shaped(
+    problem: CoupledPaths, count: float, above: float = 0.0
+) -> tuple[Shape, Region, Callable[[], Iterator[Shape]]]:
+    """A basis for levels up to the `count`th, and `above` more in energy; and the same in other coordinates.
 
     Raises SpectrumError where the potential does not confine.
     """
     centre, reach = lowest(problem)
-    lines = problem.lines
-    coordinates = (
-        Coordinates.normal(problem, curvature(problem, centre, reach)) if len(lines) > 1 else Coordinates.given(problem)
-    )
+    forms = [curvature(problem, centre, reach)] if len(problem.lines) > 1 else []
+    coordinates = Coordinates.candidates(problem, forms)[0]
     region, extents = settle(coordinates, centre, reach, count + 1.5, above)
     energy = region.energy_of(count + 1.5) + above
     number = region.number(energy)
-    products = {2: 60 + 8 * number, 3: 260 + 17 * number}[problem.size]
-    return Shape(
-        coordinates, tuple(extents), (energy - region.bottom) / (2 * problem.size), math.ceil(products)
-    ), region
+    products = math.ceil({2: 60 + 8 * number, 3: 260 + 17 * number}[problem.size])
+    spread = (energy - region.bottom) / (2 * problem.size)
+
+    def others() -> Iterator[Shape]:
+        for other in Coordinates.candidates(problem, [*forms, region.form(energy)]) if forms else []:
+            if not np.array_equal(other.matrix, coordinates.matrix):
+                moved = settle(other, centre, reach, count + 1.5, above)[1]
+                yield Shape(other, tuple(moved), spread, products)
+
+    return Shape(coordinates, tuple(extents), spread, products), region, others
+
+
+@dataclass(frozen=True, eq=False)
+class Attempt:
+    """The levels in one basis, and their changes from a smaller one."""
+
+    shape: Shape
+    values: Floats
+    vectors: Numbers
+    change: Floats
+
+    @staticmethod
+    def of(shape: Shape) -> Attempt:
+        values, vectors = shape.matrix.solve()
+        other = shape.smaller().matrix.values()
+        size = min(len(values), len(other))
+        return Attempt(shape, values, vectors, np.abs(values[:size] - other[:size]))
+
+    def worst(self, count: int) -> float:
+        return float(self.change[:count].max())
+
+    def height(self, count: int) -> float:
+        return float(self.values[count - 1]) - float(self.shape.matrix.grid.v.min())
+
+    def agrees(self, count: int, agreement: float) -> bool:
+        return self.worst(count) <= agreement * self.height(count) + 10 * self.shape.matrix.rounding
 
 
 def coupled_levels(problem: CoupledPaths, count: int, agreement: float = AGREEMENT) -> Spectrum:
@@ -183,35 +216,40 @@ def coupled_levels(problem: CoupledPaths, count: int, agreement: float = AGREEME
     """
     if count < 1:
         raise SpectrumError(f"at least one level must be asked for, not {count}")
-    shape, region = shaped(problem, count)
+    shape, region, others = shaped(problem, count)
     most = MOST_PRODUCTS[problem.size]
     if shape.products > most:
         raise SpectrumError(
             f"{count} levels of {problem.size} coupled paths need more than {most} products of functions: ask for "
             f"fewer levels, or {INSTEAD.split(',')[0]}"
         )
-    previous = np.inf
-    while True:
-        matrix = shape.matrix
-        values, vectors = matrix.solve()
-        other = shape.smaller().matrix.values()
-        size = min(len(values), len(other))
-        change = np.abs(values[:size] - other[:size])
-        bottom = float(matrix.grid.v.min())
-        height = float(values[count - 1]) - bottom
-        worst = float(change[:count].max())
-        larger = shape.larger()
-        stalled = STALLED * previous < worst <= TOLERATED * height / 100
-        if worst <= agreement * height + 10 * matrix.rounding or stalled or larger.products > most:
-            break
-        previous, shape = worst, larger
-    errors = _honest(change, worst, previous) + matrix.rounding
-    if not np.all(errors[:count] <= TOLERATED * height):
+    found, previous = _enlarged(shape, others, count, agreement)
+    errors = _honest(found.change, found.worst(count), previous) + found.shape.matrix.rounding
+    if not np.all(errors[:count] <= TOLERATED * found.height(count)):
         raise SpectrumError(
-            f"the levels do not settle: {matrix.basis.size} products still change them by {worst:.2g}; the potential "
-            f"is too rough, or singular; {INSTEAD}"
+            f"the levels do not settle: {len(found.values)} products still change them by {found.worst(count):.2g}; "
+            f"the potential is too rough, or singular; {INSTEAD}"
         )
-    return _spectrum(problem, matrix, region, values, vectors, errors, count, height, agreement)
+    return _spectrum(problem, found, region, errors, count, agreement)
+
+
+def _enlarged(
+    shape: Shape, others: Callable[[], Iterator[Shape]], count: int, agreement: float
+) -> tuple[Attempt, float]:
+    """The first basis that agrees with a smaller one, and what the one before it changed.
+
+    Where the first guess at coordinates is far off, the others are tried at the same size, and the best is enlarged.
+    """
+    found, previous = Attempt.of(shape), np.inf
+    if not found.agrees(count, max(agreement, FAR)):
+        found = min([found, *map(Attempt.of, others())], key=lambda attempt: attempt.worst(count))
+    while not found.agrees(count, agreement):
+        worst, larger = found.worst(count), found.shape.larger()
+        stalled = STALLED * previous < worst <= TOLERATED * found.height(count) / 100
+        if stalled or larger.products > MOST_PRODUCTS[larger.coordinates.problem.size]:
+            break
+        found, previous = Attempt.of(larger), worst
+    return found, previous
 
 
 def _honest(change: Floats, worst: float, previous: float) -> Floats:
@@ -221,16 +259,9 @@ def _honest(change: Floats, worst: float, previous: float) -> Floats:
 
 
 def _spectrum(
-    problem: CoupledPaths,
-    matrix: Matrix,
-    region: Region,
-    values: Floats,
-    vectors: Numbers,
-    errors: Floats,
-    count: int,
-    height: float,
-    agreement: float,
+    problem: CoupledPaths, found: Attempt, region: Region, errors: Floats, count: int, agreement: float
 ) -> Spectrum:
+    values, vectors, matrix, height = found.values, found.vectors, found.shape.matrix, found.height(count)
     limit = max(CONVERGED, agreement) * (values[: len(errors)] - values[0] + height)
     good = errors <= limit
     reliable = max(count, len(good) if good.all() else int(np.argmin(good)))

@@ -251,7 +251,7 @@ def coupled_transfer(problem: CoupledPaths, spacing: float, sites: int) -> Coupl
     if not (spacing > 0 and np.isfinite(spacing)) or sites < 1:
         raise SpectrumError(f"a lattice needs a positive spacing and at least one site, got {spacing} and {sites}")
     _require_separable_links(problem)
-    shape, _ = shaped(problem, LEVELS, THERMAL_RESIDUE / (spacing * sites))
+    shape, _, _ = shaped(problem, LEVELS, THERMAL_RESIDUE / (spacing * sites))
     _, link, values, vectors, trace, logs = _settled(shape, spacing, sites)
     if not logs[0] <= TOLERATED:
         raise SpectrumError(

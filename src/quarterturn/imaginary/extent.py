@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 
 from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.coupled import Coordinates, CoupledPaths
-from quarterturn.imaginary.fitting import MARGIN, _radius
+from quarterturn.imaginary.fitting import MARGIN, radius_of
 
 Floats = NDArray[np.float64]
 DECADES = 6
@@ -74,6 +74,18 @@ class Region:
             middle = (low + high) / 2
             low, high = (middle, high) if self.number(self.bottom + middle) < count else (low, middle)
         return self.bottom + high
+
+    def form(self, energy: float) -> Floats:
+        """The inverse covariance of the lines over the classically allowed phase space, in the paths, (L, L)."""
+        lines = self.coordinates.problem.lines
+        weights = np.maximum(energy - self.v, 0.0).ravel()
+        q = self.coordinates.paths(np.stack(np.meshgrid(*self.ticks, indexing="ij")).reshape(len(self.ticks), -1))[
+            lines
+        ]
+        q = q - (q @ weights / weights.sum())[:, None]
+        covariance = (q * weights) @ q.T / weights.sum()
+        size = np.sqrt(np.outer(np.diag(covariance), np.diag(covariance)))
+        return np.asarray(np.linalg.inv(np.where(np.abs(covariance) > 1e-6 * size, covariance, 0.0)))
 
     def along(self, i: int) -> Floats:
         """V along one coordinate, the others relaxed."""
@@ -219,5 +231,5 @@ def _extent(region: Region, i: int, energy: float, low: float, high: float) -> E
         if region.coordinates.problem.periods[i]
         else math.sin(math.pi / min(max(1 / max(growth - 0.5, 0.01), 2.0), 8.0))
     )
-    radius = _radius(DECAY / max(cells(energy), 0.3) / slow)
+    radius = radius_of(DECAY / max(cells(energy), 0.3) / slow)
     return Extent(low, high, math.sqrt(2 * mass * height) * radius * MARGIN, region.coordinates.problem.periods[i])

@@ -147,7 +147,7 @@ def line_frame(landscape: Landscape, energy: float) -> LineFrame:
         low, high, centre = -max(-low, high), max(-low, high), 0.0
     height = energy - landscape.bottom
     exponent = DECAY / max(landscape.number_in_well(energy), 0.3) / _slowness(landscape, height)
-    fastest = np.sqrt(2 * problem.mass * height) * _radius(exponent) * MARGIN
+    fastest = np.sqrt(2 * problem.mass * height) * radius_of(exponent) * MARGIN
     points = 4 + max(12, math.ceil((high - low) * fastest / np.pi))
     return LineFrame(problem, low, high, points, centre, walls).widened()
 
@@ -167,7 +167,7 @@ def _slowness(landscape: Landscape, height: float) -> float:
 def circle_frame(problem: OnePath, energy: float) -> CircleFrame:
     """The first guess for wave functions up to `energy`."""
     v, number, period = around(problem)
-    fastest = np.sqrt(2 * problem.mass * (energy - v.min())) * _radius(DECAY / max(number(energy), 0.3)) * MARGIN
+    fastest = np.sqrt(2 * problem.mass * (energy - v.min())) * radius_of(DECAY / max(number(energy), 0.3)) * MARGIN
     return CircleFrame(problem, max(11, math.ceil(fastest * period / np.pi)))
 
 
@@ -188,7 +188,7 @@ def around(problem: OnePath) -> tuple[Floats, Callable[[float], float], float]:
     return v, number, period
 
 
-def _radius(exponent: float) -> float:
+def radius_of(exponent: float) -> float:
     return float(np.interp(exponent, _EXPONENTS, _RADII))
 
 

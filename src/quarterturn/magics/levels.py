@@ -30,7 +30,7 @@ class LevelsMagic(Magics):
 
     @line_magic
     def levels(self, line: str) -> Levels:
-        """Energy levels and measured quantities of one path, without sampling.
+        """Energy levels and measured quantities of one, two or three paths, without sampling.
 
             %levels NAME [COUPLING=VALUE ...] [OPTION=VALUE ...] [as VARIABLE]
 
