@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 
-from quarterturn.actions.boundedness import confinement, value_at
+from quarterturn.actions.boundedness import Confinement, confinement, value_at
 from quarterturn.actions.circles import changed_by_a_turn
-from quarterturn.actions.expression import ZERO, Expression, Symbol
+from quarterturn.actions.expression import ONE, ZERO, Atom, Expression, PathAtom, Symbol
 from quarterturn.actions.model import EuclideanAction, Finding
 from quarterturn.actions.printing import notation
 from quarterturn.actions.turn import velocity
@@ -19,7 +19,7 @@ def check(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> tuple[F
     the continuum may exist; "note": worth knowing.
     """
     found = [*_kinetic(euclidean, couplings), *_single_valued(euclidean, couplings)]
-    verdict = confinement(without_sources(euclidean.potential), euclidean.variables, euclidean.periods, couplings)
+    verdict = _confined(euclidean, couplings)
     if verdict.verdict == "unbounded":
         found.append(Finding("fatal", "bounded", f"not bounded below: {verdict.words}"))
     elif verdict.verdict == "meaningless":
@@ -32,6 +32,38 @@ def check(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> tuple[F
     elif verdict.verdict == "undecided":
         found.append(Finding("note", "bounded", f"boundedness is undecided: {verdict.words}"))
     return tuple(found)
+
+
+def _confined(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> Confinement:
+    """Whether the action holds every variable that is not compact; unit vectors and angles hold themselves.
+
+    A lattice action is looked at on uniform and on staggered configurations, where its links are as low as they get.
+    """
+    on_spheres = {euclidean.variables[i] for group in euclidean.spheres for i in group}
+    left = [(v, p) for v, p in zip(euclidean.variables, euclidean.periods, strict=True) if v not in on_spheres]
+    if not left:
+        return Confinement("confined")
+    poles = {euclidean.variables[group[-1]] for group in euclidean.spheres}
+    variables, periods = tuple(v for v, _ in left), tuple(p for _, p in left)
+    found = Confinement("confined")
+    for sign in (1, -1) if euclidean.links else (1,):
+        whole = sum((_joined(link, sign) for link in euclidean.links), without_sources(euclidean.potential))
+        whole = whole.substitute(lambda a: (ONE if a in poles else ZERO) if a in on_spheres else None)
+        found = confinement(whole, variables, periods, couplings)
+        if found.verdict != "confined":
+            return found
+    return found
+
+
+def _joined(link: Expression, sign: int) -> Expression:
+    """A link between two sites whose fields are equal, or opposite."""
+
+    def value(atom: Atom) -> Expression | None:
+        if not isinstance(atom, PathAtom) or not atom.neighbour:
+            return None
+        return Expression.of(atom.value).scaled(sign)
+
+    return without_sources(link).substitute(value)
 
 
 def without_sources(expression: Expression) -> Expression:

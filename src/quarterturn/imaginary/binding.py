@@ -132,7 +132,7 @@ def _drift(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> tuple[
 
 def one_path(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> OnePath | None:
     """The problem of one degree of freedom, or None where the action has more, or a drift that depends on the path."""
-    if len(euclidean.variables) != 1 or euclidean.drift[0].paths or euclidean.sources:
+    if len(euclidean.variables) != 1 or euclidean.drift[0].paths or not of_paths(euclidean):
         return None
     scalars = coupling_values(couplings)
     period = euclidean.periods[0]
@@ -143,6 +143,11 @@ def one_path(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> OneP
         flux=float(euclidean.drift[0].evaluate(scalars, np)),
         even=(-1,) in euclidean.symmetries or _is_even(euclidean),
     )
+
+
+def of_paths(euclidean: EuclideanAction) -> bool:
+    """Whether this is an action of unconstrained paths in the continuum, without sources."""
+    return euclidean.dimension == 1 and not (euclidean.links or euclidean.spheres or euclidean.sources)
 
 
 def _is_even(euclidean: EuclideanAction) -> bool:

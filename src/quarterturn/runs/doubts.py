@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from quarterturn.actions.model import EuclideanAction, Measurement
 from quarterturn.errors import SpectrumError
 from quarterturn.estimates.estimate import Estimate
-from quarterturn.imaginary.binding import local_function, one_path, problem_of
+from quarterturn.imaginary.binding import local_function, of_paths, one_path, problem_of
 from quarterturn.imaginary.coupled_transfer import CoupledTransfer
 from quarterturn.imaginary.solve import AnyTransfer, spectrum_of
 from quarterturn.imaginary.spectrum import Spectrum
@@ -90,7 +90,7 @@ def stuck_sectors(
                     f"the sign of the mean of {names[c]} changed fewer than {FEWEST_VISITS} times: "
                     "its sectors are not sampled"
                 )
-    if any(p is not None for p in euclidean.periods):
+    if of_paths(euclidean) and any(p is not None for p in euclidean.periods):
         changes = sum(counts.windings.values())
         expected = _winding_moment(euclidean, transfer)
         if changes < FEWEST_VISITS and (expected is None or expected > 1e-3):

@@ -20,7 +20,7 @@ from quarterturn.estimates.curves import LinearCurve
 from quarterturn.estimates.estimate import CurveEstimate, Estimate, withheld
 from quarterturn.estimates.gamma import derived, estimate
 from quarterturn.estimates.series import Samples
-from quarterturn.runs.layout import Layout, gap_brackets
+from quarterturn.runs.layout import Layout, gap_brackets, mode_brackets
 
 Floats = NDArray[np.float64]
 LOST = "the average phase is compatible with zero: the sign problem leaves no signal"
@@ -130,13 +130,31 @@ class Evaluator:
         """Columns of a bracket in the ledger of curves."""
         return self.layout.curve(bracket) if bracket.free else np.array([self.layout.number(bracket)])
 
+    def correlation_length(self, measurement: Measurement, extent: int, spacing: float) -> Estimate:
+        """xi_2 = sqrt(G(0)/G(k) - 1) / (2 sin(k/2)) with k the lowest momentum of the longest direction.
+
+        Cooper, Freedman and Preston, Nucl. Phys. B 210 (1982) 210.
+        """
+        zero, lowest = (self.layout.number(b) for b in mode_brackets(measurement))
+
+        def length(means: Floats) -> float:
+            ratio = means[zero] / means[lowest] - 1
+            return float(spacing * np.sqrt(ratio) / (2 * np.sin(np.pi / extent))) if ratio > 0 else float("nan")
+
+        if self.phase_is_lost():
+            return withheld(LOST)
+        try:
+            return derived(self.numbers, length)
+        except EstimateError as reason:
+            return withheld(reason.message)
+
     # --- gaps -----------------------------------------------------------------------------------------------
     def gap(self, measurement: Measurement) -> GapResult:
         """The lowest level that the operators create, fitted to their correlation matrix.
 
         Expectation values are subtracted unless a sign symmetry of the action makes them vanish.
         """
-        matrix, means = gap_brackets(measurement)
+        matrix, means = gap_brackets(measurement, self.euclidean.dimension)
         indices = np.array([[self.layout.curve(b) for b in row] for row in matrix])
         if len(measurement.operators) == 1:
             indices = indices[0, 0]

@@ -13,6 +13,7 @@ from quarterturn.actions.circles import phase_of
 from quarterturn.actions.expression import Expression, apply
 from quarterturn.actions.model import Bracket, EuclideanAction, Measurement
 from quarterturn.actions.printing import notation
+from quarterturn.compiled.field_observables import LOWEST_MODE, SUMMED, ZERO_MODE
 from quarterturn.compiled.observables import Observables, lattice_offsets
 from quarterturn.compiled.target import Target
 
@@ -49,19 +50,32 @@ class Layout:
 
 def _place(brackets: tuple[Bracket, ...], wanted: Bracket) -> int:
     """Position of the bracket of the same meaning; labels do not count."""
-    return next(i for i, b in enumerate(brackets) if (b.groups, b.over) == (wanted.groups, wanted.over))
+    return next(i for i, b in enumerate(brackets) if _meaning(b) == _meaning(wanted))
 
 
-def pair_bracket(left: Expression, right: Expression, label: str) -> Bracket:
-    """<left(t) right(0)>."""
-    return Bracket(label, ((None, left), (NOW, right)))
+def _meaning(bracket: Bracket) -> tuple:
+    return bracket.groups, bracket.over, bracket.places
 
 
-def gap_brackets(measurement: Measurement) -> tuple[list[list[Bracket]], list[Bracket]]:
+def pair_bracket(left: Expression, right: Expression, label: str, dimension: int = 1) -> Bracket:
+    """<left(t) right(0)>, of fields summed over space: at zero momentum."""
+    space = dimension - 1
+    places = ((SUMMED,) * space, (NOW,) * space) if space else ()
+    return Bracket(label, ((None, left), (NOW, right)), places=places)
+
+
+def mode_brackets(measurement: Measurement) -> tuple[Bracket, Bracket]:
+    """The powers of the zero mode and of the longest waves of xi2's operator."""
+    (f,) = measurement.operators
+    zero, lowest = (Bracket(f"{measurement.label}: {kind}", ((NOW, f),), kind) for kind in (ZERO_MODE, LOWEST_MODE))
+    return zero, lowest
+
+
+def gap_brackets(measurement: Measurement, dimension: int = 1) -> tuple[list[list[Bracket]], list[Bracket]]:
     """The correlation matrix of a gap's operators and their expectation values."""
     operators = measurement.operators
     matrix = [
-        [pair_bracket(f, g, f"{measurement.label}: C[{i + 1},{j + 1}](t)") for j, g in enumerate(operators)]
+        [pair_bracket(f, g, f"{measurement.label}: C[{i + 1},{j + 1}](t)", dimension) for j, g in enumerate(operators)]
         for i, f in enumerate(operators)
     ]
     for i in range(len(operators)):
@@ -77,15 +91,17 @@ def lay_out(measurements: Sequence[Measurement], euclidean: EuclideanAction, sit
     free: dict[tuple, Bracket] = {}
     for measurement in measurements:
         brackets = list(measurement.brackets)
+        if measurement.kind == "xi2":
+            brackets = list(mode_brackets(measurement))
         if measurement.kind == "gap":
-            matrix, means = gap_brackets(measurement)
+            matrix, means = gap_brackets(measurement, euclidean.dimension)
             brackets = [*(b for row in matrix for b in row), *means]
         for bracket in brackets:
-            (free if bracket.free else fixed).setdefault((bracket.groups, bracket.over), bracket)
+            (free if bracket.free else fixed).setdefault(_meaning(bracket), bracket)
     is_complex = any(a.terms for a in euclidean.drift)
     if not fixed and not is_complex:  # curves alone: something has to tell whether the chains agree
         watched = _watched(euclidean)
-        fixed[(watched.groups, watched.over)] = watched
+        fixed[_meaning(watched)] = watched
     return Layout(tuple(fixed.values()), tuple(free.values()), sites // 2 + 1, is_complex)
 
 

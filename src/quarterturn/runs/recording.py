@@ -8,11 +8,13 @@ from typing import Any
 import numpy as np
 
 from quarterturn.actions.in_units import known
-from quarterturn.actions.model import Action
+from quarterturn.actions.model import Action, Geometry
 from quarterturn.estimates.estimate import CurveEstimate, Estimate
+from quarterturn.notation.symbols import COORDINATES
 from quarterturn.records.schema import SCHEMA, environment, validate
 from quarterturn.runs.settings import Settings
 from quarterturn.sampling.driver import Chain
+from quarterturn.sampling.fields.driver import FieldChain
 from quarterturn.units.constants import release
 from quarterturn.units.quantity import Quantity
 
@@ -25,7 +27,19 @@ def notation_of(action: Action) -> str:
         lines.append(", ".join(given))
     if action.measurements:
         lines.append("measure " + ", ".join(getattr(m, "source", "") or m.label for m in action.measurements))
+    if action.geometry is not None and action.geometry.edges:
+        lines.append(edges_line(action.geometry))
     return "\n".join(lines)
+
+
+def edges_line(geometry: Geometry) -> str:
+    """The lattice with its edges as notation; sites and spacings stand beside it in the record."""
+    edges = [
+        f"twist {name} = {edge.values[0]!r}" if edge.kind == "twist" else f"{edge.kind} {name}"
+        for name, edge in zip(COORDINATES, geometry.edges, strict=False)
+    ]
+    spacings = [f"a_{name} = {a!r}" for name, a in zip(COORDINATES, geometry.spacings, strict=False)]
+    return ", ".join(["lattice " + " x ".join(map(str, geometry.extents)), *spacings, *edges])
 
 
 def base_record(kind: str, action: Action, settings: Settings) -> dict[str, Any]:
@@ -41,7 +55,7 @@ def base_record(kind: str, action: Action, settings: Settings) -> dict[str, Any]
             "turned_digest": action.euclidean.digest,
         },
         "couplings": {name: float(value) for name, value in settings.couplings.items()},
-        "lattice": {"sites": settings.sites, "spacing": settings.spacing, "boundary": "periodic"},
+        "lattice": _lattice(action, settings),
         "versions": versions,
         "platform": platform,
         "precision": "float64",
@@ -62,6 +76,37 @@ def with_unit(quantity: Quantity) -> dict[str, str]:
     return {"unit": quantity.name} if quantity.name else {}
 
 
+def _lattice(action: Action, settings: Settings) -> dict[str, Any]:
+    if not settings.extents:
+        return {"sites": settings.sites, "spacing": settings.spacing, "boundary": "periodic"}
+    edges = action.geometry.edges if action.geometry else ()
+    kinds = {edge.kind for edge in edges} or {"periodic"}
+    boundary = kinds.pop() if len(kinds) == 1 else ", ".join(edge.kind for edge in edges)
+    return {"sites": list(settings.extents), "spacing": list(settings.spacings), "boundary": boundary}
+
+
+def field_record(
+    action: Action,
+    settings: Settings,
+    chain: FieldChain,
+    seed: int,
+    numbers: Mapping[str, Estimate],
+    curves: Mapping[str, CurveEstimate],
+    warnings: tuple[str, ...],
+) -> dict[str, Any]:
+    """The record of a Monte Carlo run of fields."""
+    method = {
+        "sampler": "Hamiltonian Monte Carlo in real space",
+        "moves": dict(chain.acceptance or {}),
+        "integrator": "minimum norm",
+        "step": chain.recipe.step,
+        "steps": chain.recipe.steps,
+        "masses": list(chain.recipe.masses),
+        "exp_minus_dH": list(chain.exp_change),
+    }
+    return _with_results(base_record("sample", action, settings), chain, method, seed, numbers, curves, warnings)
+
+
 def sample_record(
     action: Action,
     settings: Settings,
@@ -73,15 +118,7 @@ def sample_record(
 ) -> dict[str, Any]:
     """The record of a Monte Carlo run."""
     recipe = chain.recipe
-    record = base_record("sample", action, settings)
-    record["request"] = {
-        "seed": seed,
-        "chains": chain.program.chains,
-        "draws": chain.draws,
-        "warm_up": chain.warm_up,
-        "generator": "threefry2x32",
-    }
-    record["method"] = {
+    method = {
         "sampler": "Hamiltonian Monte Carlo, reference form evolved exactly",
         "moves": dict(chain.acceptance or {}),
         "integrator": recipe.integrator,
@@ -92,6 +129,26 @@ def sample_record(
         "segment_flips": recipe.segments,
         "exp_minus_dH": list(chain.exp_change),
     }
+    return _with_results(base_record("sample", action, settings), chain, method, seed, numbers, curves, warnings)
+
+
+def _with_results(
+    record: dict[str, Any],
+    chain: Chain | FieldChain,
+    method: dict[str, Any],
+    seed: int,
+    numbers: Mapping[str, Estimate],
+    curves: Mapping[str, CurveEstimate],
+    warnings: tuple[str, ...],
+) -> dict[str, Any]:
+    record["request"] = {
+        "seed": seed,
+        "chains": chain.program.chains,
+        "draws": chain.draws,
+        "warm_up": chain.warm_up,
+        "generator": "threefry2x32",
+    }
+    record["method"] = method
     record["results"] = [
         *(number_result(label, e) for label, e in numbers.items()),
         *(curve_result(label, c) for label, c in curves.items()),

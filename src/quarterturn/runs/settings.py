@@ -31,9 +31,11 @@ class Settings:
     """Couplings and lattice of one run, complete."""
 
     couplings: Mapping[str, float]
-    sites: int
+    sites: int  # in time
     spacing: float
     findings: tuple[Finding, ...] = ()
+    extents: tuple[int, ...] = ()  # of fields: sites and spacing of every direction, time first
+    spacings: tuple[float, ...] = ()
 
     @property
     def beta(self) -> float:
@@ -91,8 +93,14 @@ def require_paths(action: Action, what: str) -> None:
 
 def split(action: Action, keywords: Mapping[str, Any]) -> tuple[dict[str, float], dict[str, float]]:
     """The couplings, complete with their defaults, and the words of the lattice. Raises RequestError for others."""
+    couplings, lattice = split_words(action, keywords)
+    return couplings, {word: _number(word, value) for word, value in lattice.items()}
+
+
+def split_words(action: Action, keywords: Mapping[str, Any]) -> tuple[dict[str, float], dict[str, Any]]:
+    """As `split`, with the words of the lattice as they were given."""
     couplings = {name: coupling.default for name, coupling in action.couplings.items()}
-    lattice: dict[str, float] = {}
+    lattice: dict[str, Any] = {}
     for word, value in keywords.items():
         if word in couplings:
             couplings[word] = _number(word, value)
@@ -101,7 +109,7 @@ def split(action: Action, keywords: Mapping[str, Any]) -> tuple[dict[str, float]
                     f"{word} is known in these units, {action.couplings[word].default:.10g}: leave it out"
                 )
         elif word in LATTICE_WORDS:
-            lattice[word] = _measured(action, word, value)
+            lattice[word] = value if isinstance(value, (list, tuple)) else _measured(action, word, value)
         else:
             raise unknown_keyword(word, action)
     if "temperature" in lattice:

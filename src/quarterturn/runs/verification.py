@@ -7,6 +7,7 @@ evaluated, the couplings, the lattice, the seed and the number of draws.
 from __future__ import annotations
 
 import html
+import math
 from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
@@ -127,8 +128,6 @@ def rerun(record: dict[str, Any]) -> dict[str, Any]:
     settings: dict[str, Any] = dict(record["couplings"])
     request, lattice = record["request"], record["lattice"]
     if lattice is not None:
-        if lattice["boundary"] != "periodic" or isinstance(lattice["sites"], list):
-            raise QuarterturnError("only periodic paths can be made again by this version")
         settings |= {"sites": lattice["sites"], "a": lattice["spacing"]}
     if record["kind"] == "levels":
         if lattice is None and request.get("beta") is not None:
@@ -151,7 +150,9 @@ def rerun(record: dict[str, Any]) -> dict[str, Any]:
 def _refuse_the_endless(record: dict[str, Any], components: int) -> None:
     request = record["request"]
     draws = request["draws"] + request.get("warm_up", 0)
-    expected = SECONDS_PER_SITE * draws * request["chains"] * record["lattice"]["sites"] * components
+    sites = record["lattice"]["sites"]
+    volume, steps = (math.prod(sites), 2 * record["method"].get("steps", 1)) if isinstance(sites, list) else (sites, 1)
+    expected = SECONDS_PER_SITE * draws * request["chains"] * volume * components * max(1, min(float(steps), 200))
     if expected > LONGEST:
         raise QuarterturnError(
             f"the rerun would take some {expected / 3600:.1f} hours; the limit is {LONGEST / 60:.0f} minutes"

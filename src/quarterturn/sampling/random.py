@@ -18,11 +18,11 @@ import numpy as np
 from jax import Array
 from numpy.typing import NDArray
 
+from quarterturn.compiled.polynomials import COSINE, SINE, horner
+
 ROTATIONS = ((13, 15, 26, 6), (17, 29, 16, 24))
 PARITY = np.uint32(0x1BD11BDA)
 CHILDREN = 0xFFFFFFFF  # second counter word of the keys made from keys; streams of numbers use small ones
-SINE = tuple((-1) ** j / math.factorial(2 * j + 1) for j in range(8))  # to 1e-16 on an eighth of a turn
-COSINE = tuple((-1) ** j / math.factorial(2 * j) for j in range(9))
 AREA = tuple(1 / (2 * j + 1) for j in range(1, 11))  # of log m = 2 artanh s, |s| <= 3 - 2 sqrt 2
 HALF_ROOT = np.int64(0x3FE6A09E667F3BCD)  # the bits of sqrt(1/2)
 
@@ -98,21 +98,14 @@ def log(x: Array) -> Array:
     exponent = (bits - HALF_ROOT) >> np.int64(52)
     mantissa = jax.lax.bitcast_convert_type(bits - (exponent << np.int64(52)), jnp.float64)
     s = (mantissa - 1) / (mantissa + 1)
-    return exponent.astype(jnp.float64) * math.log(2.0) + 2 * s * (1 + s * s * _horner(AREA, s * s))
+    return exponent.astype(jnp.float64) * math.log(2.0) + 2 * s * (1 + s * s * horner(AREA, s * s))
 
 
 def turn_sine_cosine(turn: Array) -> tuple[Array, Array]:
     """sin and cos of 2 pi turn / 2^32 for uint32 `turn`, absolute error below 1e-15."""
     quarter = (turn + np.uint32(1 << 29)) >> np.uint32(30)
     rest = (turn - (quarter << np.uint32(30))).astype(jnp.int32).astype(jnp.float64) * (2 * math.pi / 2**32)
-    sine, cosine = rest * _horner(SINE, rest * rest), _horner(COSINE, rest * rest)
+    sine, cosine = rest * horner(SINE, rest * rest), horner(COSINE, rest * rest)
     swapped = (quarter & np.uint32(1)) == 1
     s, c = jnp.where(swapped, cosine, sine), jnp.where(swapped, sine, cosine)
     return jnp.where(quarter >= 2, -s, s), jnp.where((quarter == 1) | (quarter == 2), -c, c)
-
-
-def _horner(coefficients: tuple[float, ...], z: Array) -> Array:
-    total: Array | float = coefficients[-1]
-    for coefficient in coefficients[-2::-1]:
-        total = total * z + coefficient
-    return jnp.asarray(total)

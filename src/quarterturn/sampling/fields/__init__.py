@@ -1,0 +1,1 @@
+"""Sampling of fields on space: trajectories, flips, warm-up and the driver."""
