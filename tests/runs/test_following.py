@@ -202,3 +202,15 @@ def test_propagation_that_can_not_be_is_refused(quartic: DeclaredAction) -> None
         qt.propagate(action("q[3](t)\nL = 1/2 q'.q' - 1/2 q.q"))
     with pytest.raises(SpectrumError, match="does not fall off"):
         qt.propagate(quartic, start=lambda q: 1 + 0 * q, beta=1.0)
+
+
+def test_laboratory_units_are_carried() -> None:
+    """A bond in amu, angstrom and 1/cm: levels, evolution and series say one number, and its unit."""
+    bond = action("units amu, angstrom, 1/cm\nq(t)\nL = 1/2 m q'^2 - 1/2 k q^2 - lam q^4\nm = 1, k = 5000, lam = 300")
+    spectrum = qt.levels(bond, count=3)
+    ground, series = qt.propagate(bond), qt.series(bond, order=20, coupling="lam")
+    assert ground.energy == pytest.approx(spectrum.energies[0], rel=1e-12)
+    assert abs(series["Borel-Padé"].value - spectrum.energies[0]) <= series["Borel-Padé"].error + spectrum.errors[0]
+    assert {row.unit for row in (*ground.report().rows, *series.report().rows) if row.value} == {"1/cm"}
+    assert spectrum.real_time("<q(t) q(0)>", [0.0]).value[0] == pytest.approx(spectrum.euclidean("<q^2>"), rel=1e-11)
+    assert "energies in 1/cm" in repr(spectrum.thermodynamics(0.002))

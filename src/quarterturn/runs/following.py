@@ -18,7 +18,7 @@ from quarterturn.imaginary.rotation import OnTheArc
 from quarterturn.imaginary.thermodynamics import Thermodynamics
 from quarterturn.reports.report import Curve, Report, Row
 from quarterturn.runs.shown import Shown
-from quarterturn.runs.unit_words import along, facts
+from quarterturn.runs.unit_words import along, facts, level
 
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
@@ -41,13 +41,21 @@ class Context:
     beta: float | None
     units: tuple[tuple[str, str], ...] = ()  # facts about them
     time: str = "t"  # the axis of imaginary or real time, with its unit
+    energy: str = ""  # unit
 
     @staticmethod
     def of(action: Action, couplings: Mapping[str, float], beta: float | None) -> Context:
         """The context of results of an action at these couplings."""
         euclidean = action.euclidean
         return Context(
-            action.name, action.canonical, euclidean.latex, tuple(couplings.items()), beta, facts(action), along(action)
+            action.name,
+            action.canonical,
+            euclidean.latex,
+            tuple(couplings.items()),
+            beta,
+            facts(action),
+            along(action),
+            level(action).name,
         )
 
     @property
@@ -99,7 +107,9 @@ class ThermodynamicsTable(Shown):
         )  # fmt: skip
         if len(f.beta) == 1:
             errors = self._errors()
-            rows = [Row(label, "", float(c[0]), e) for (label, c), e in zip(named, errors, strict=True)]
+            units = ("", self.context.energy, self.context.energy, "", "")
+            columns = zip(named, errors, units, strict=True)
+            rows = [Row(label, "", float(c[0]), e, unit=unit) for (label, c), e, unit in columns]
             return self.context.report(f"thermodynamics at beta = {f.beta[0]:g}", rows, [], [])
         curves = [_curve(label, "beta", f.beta, column) for label, column in named[1:]]
         return self.context.report("thermodynamics", [], curves, [])

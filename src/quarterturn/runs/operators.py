@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -10,17 +11,16 @@ from quarterturn.actions.declare import declare
 from quarterturn.actions.expression import Expression
 from quarterturn.actions.model import Action, Measurement
 from quarterturn.errors import QuarterturnError, RequestError
+from quarterturn.runs.recording import notation_of
 
 
 def measured(action: Action, label: str) -> Measurement:
     """The measurement that `label` would be in the action's cell. Raises RequestError with the reason."""
-    body = [action.canonical]
-    if action.couplings:
-        body.append(", ".join(f"{name} = {c.default!r}" for name, c in action.couplings.items()))
+    body = notation_of(replace(action, measurements=()))
     try:
         if not label.strip() or "\n" in label or ";" in label:
             raise RequestError("one measurement is expected")
-        (found,) = declare("\n".join([*body, f"measure {label}"]), action.name).measurements
+        (found,) = declare(f"{body}\nmeasure {label}", action.name).measurements
     except (QuarterturnError, ValueError) as trouble:
         reason = trouble.message if isinstance(trouble, QuarterturnError) else "one measurement is expected"
         raise RequestError(f"{label!r} can't be measured: {reason}") from None

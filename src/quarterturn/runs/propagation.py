@@ -70,7 +70,7 @@ class GroundState(Shown):
             ("spread of the energy in the state", f"{f.spread:.1g}: some level lies no further away"),
             ("grid", " x ".join(map(str, f.grid.points)) + " points"),
         ]
-        rows = [Row("E_0", "E_{0}", f.energy, f.error)]
+        rows = [Row("E_0", "E_{0}", f.energy, f.error, unit=self.context.energy)]
         curves = _pictures(self.system, self.axes, self.wave, f.energy)
         return self.context.report("ground state by evolution", rows, curves, facts)
 
@@ -117,7 +117,10 @@ class Propagated(Shown):
 
     def report(self) -> Report:
         f = self.found
-        rows = [Row("<H>", "", self.energy), Row("norm", "", self.norm, 2 * f.error * self.norm)]
+        rows = [
+            Row("<H>", "", self.energy, unit=self.context.energy),
+            Row("norm", "", self.norm, 2 * f.error * self.norm),
+        ]
         facts = [
             ("scheme", f.scheme.name),
             ("measured order", _order_words(f.order)),

@@ -26,9 +26,10 @@ from quarterturn.records.schema import validate
 from quarterturn.reports.bundle import mimebundle
 from quarterturn.reports.report import Curve, Report, Row
 from quarterturn.reports.text import text as render_text
-from quarterturn.runs.recording import base_record
+from quarterturn.runs.recording import base_record, with_unit
 from quarterturn.runs.settings import NO_SPECTRUM, Settings, examined, split
 from quarterturn.runs.unit_words import facts as unit_facts
+from quarterturn.runs.unit_words import level as level_unit
 
 DEFAULT_ORDER = 50
 SHOWN_TERMS = 6  # of the series, in a report
@@ -118,6 +119,7 @@ class Series:
 
     def _row(self, method: str) -> Row:
         plain, typeset = _label(method, self.level)
+        unit = level_unit(self.action).name
         found = self.summation.sums.get(method)
         if found is None:
             return Row(plain, typeset, None, state="withheld", remark=self.summation.missing[method])
@@ -125,11 +127,11 @@ class Series:
         if found.ambiguity:
             remark += f"; ambiguous by {found.ambiguity:.2g} i"
         if not self.summation.determined:
-            return Row(plain, typeset, found.value, None, self.exact, state="unresolved", remark=remark)
+            return Row(plain, typeset, found.value, None, self.exact, state="unresolved", remark=remark, unit=unit)
         pull = None
         if self.exact is not None:
             pull = (found.value - self.exact) / math.hypot(found.error, self.exact_error or 0.0)
-        return Row(plain, typeset, found.value, found.error, self.exact, pull, remark=remark)
+        return Row(plain, typeset, found.value, found.error, self.exact, pull, remark=remark, unit=unit)
 
     def _curves(self) -> Iterator[Curve]:
         stride = self.summation.stride
@@ -138,7 +140,8 @@ class Series:
                 continue
             x = tuple(float(Fraction(n * stride, self.unit)) for n in range(len(values)))
             exact = (self.exact,) * len(x) if self.exact is not None else ()
-            yield Curve(method, "", "order", x, tuple(values), exact=exact, style="orders")
+            unit = level_unit(self.action).name
+            yield Curve(method, "", "order", x, tuple(values), exact=exact, style="orders", unit=unit)
 
     def __repr__(self) -> str:
         return render_text(self.report())
@@ -347,6 +350,7 @@ def _recorded(result: Series) -> Series:
             "error": row.error,
             "state": row.state,
             **({"remark": row.remark} if row.remark else {}),
+            **with_unit(level_unit(result.action)),
         }
         for row in report.rows
     ]
