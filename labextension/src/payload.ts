@@ -26,6 +26,7 @@ export interface Row {
   readonly nEff: number | null;
   readonly state: string;
   readonly remark: string;
+  readonly unit: string;
 }
 
 export interface Point {
@@ -111,7 +112,8 @@ function readRow(row: Record<string, unknown>): Row {
     tauError: number(row['tau_error']),
     nEff: number(row['n_eff']),
     state: text(row['state']) || 'good',
-    remark: text(row['remark'])
+    remark: text(row['remark']),
+    unit: text(row['unit'])
   };
 }
 

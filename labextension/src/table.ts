@@ -15,6 +15,7 @@ interface Column {
 /** A row in words and digits, empty where there is nothing to say; the Python half prints the same. */
 export interface Cells {
   readonly value: string;
+  readonly unit: string;
   readonly exact: string;
   readonly pull: string;
   readonly tau: string;
@@ -26,11 +27,12 @@ export interface Cells {
 export function cellsOf(row: Row): Cells {
   if (row.state === 'withheld' || row.value === null) {
     const remark = row.remark || 'no finite number came out';
-    return { value: 'withheld', exact: '', pull: '', tau: '', nEff: '', remark };
+    return { value: 'withheld', unit: '', exact: '', pull: '', tau: '', nEff: '', remark };
   }
   const resolved = row.state === 'good';
   return {
     value: resolved ? valueWithError(row.value, row.error) : withReason(row.value, row.state),
+    unit: row.unit,
     exact: row.exact === null ? '' : exactValue(row.exact, resolved ? row.error : null),
     pull: row.pull === null || !resolved ? '' : signed(row.pull, 1),
     tau: row.tau === null ? '' : autocorrelation(row.tau, row.tauError),
@@ -55,7 +57,10 @@ export function resultTable(rows: readonly Row[], typeset: Typeset): HTMLElement
     const cells = lines[i] ?? cellsOf(row);
     const label = html('th', 'label', formula(row.label, row.latex, typeset));
     label.scope = 'row';
-    const line = html('tr', '', label, ...columns.map(({ name }, k) => aligned(cells[name], widths[k] ?? 0)));
+    const parts = columns.map(({ name }, k) =>
+      name === 'unit' ? html('td', 'unit', cells.unit) : aligned(cells[name], widths[k] ?? 0)
+    );
+    const line = html('tr', '', label, ...parts);
     if (remarks) {
       line.append(html('td', 'remark', cells.remark));
     }
@@ -71,6 +76,7 @@ export function resultTable(rows: readonly Row[], typeset: Typeset): HTMLElement
 function allColumns(): Column[] {
   return [
     { name: 'value', head: ['value'], meaning: 'value and one standard error' },
+    { name: 'unit', head: ['unit'], meaning: 'of value, error and exact' },
     { name: 'exact', head: ['exact'], meaning: 'independent solution at the same lattice spacing' },
     { name: 'pull', head: ['pull'], meaning: '(value \u2212 exact) / error' },
     { name: 'tau', head: ['\u03c4'], meaning: 'integrated autocorrelation time, in draws' },

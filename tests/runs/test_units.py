@@ -142,3 +142,33 @@ def test_what_the_action_does_not_determine_needs_a_dimension() -> None:
         levels["<q^2>"].to("fm", scale="GeV")
     assert levels["<q^2>"].to("fm", scale="GeV", dimension=-1) == pytest.approx(0.5 * 0.1973269804593, rel=1e-9)
     assert levels["gap(q)"].to("GeV", scale="3 GeV") == pytest.approx(3, rel=1e-9)
+
+
+def test_numbers_of_a_saddle_have_their_units() -> None:
+    """x0 = L and V_b = hbar^2 / (m L^2) v: an instanton in two systems is one number after conversion."""
+    text = "x(t)\nunits {}\nL = 1/2 m x'^2 - v (x^2/l^2 - 1)^2\nm = {!r}, v = {!r}, l = {!r}"
+    amu = si.physical_constants["atomic mass constant"][0]
+    m_e, bohr, hartree = (si.physical_constants[n][0] for n in ("electron mass", "Bohr radius", "Hartree energy"))
+    cm = si.h * si.c * 100
+    one = qt.saddle(qt.action(text.format("amu, angstrom, 1/cm", 2.487, 2018.0, 0.3816)))
+    scaled = (2.487 * amu / m_e, 2018.0 * cm / hartree, 0.3816e-10 / bohr)
+    other = qt.saddle(qt.action(text.format("m_e, bohr, hartree", *scaled)))
+    assert one["S"] == pytest.approx(other["S"], rel=1e-7)
+    for label, unit in (("E_1 - E_0", "GHz"), ("omega", "eV"), ("duration", "fs"), ("det'/det_0", "1/eV^2")):
+        assert one[label].to(unit) == pytest.approx(other[label].to(unit), rel=1e-6)
+    units = {row.label: row.unit for row in one.report().rows}
+    assert (units["S"], units["E_1 - E_0"], units["duration"]) == ("", "1/cm", "(1/cm)^-1")
+
+
+def test_the_steps_of_the_turn_end_with_the_seam() -> None:
+    last = molecule().steps.steps[-1]
+    assert "tau / hbar" in last[0]
+    assert "hbar^-2" in last[1]
+
+
+def test_the_picture_of_levels_has_each_wave_on_its_energy() -> None:
+    levels = qt.levels(molecule(), count=3)
+    waves = [c for c in levels.report().curves if c.style == "wave"]
+    assert [c.baseline for c in waves] == list(levels.energies)
+    assert all(abs(np.sum(np.square(c.y)) * (c.x[1] - c.x[0]) - 1) < 1e-3 for c in waves)  # bare and normalised
+    assert {c.unit for c in waves} == {"1/cm"}

@@ -41,7 +41,9 @@ def turn_steps(action: Action) -> tuple[Step, ...]:
         ),
     ]  # fmt: skip
     whole = -_without_dropped(action)
-    if whole != turned:
+    if action.system.laboratory:
+        found.append(_step(_in_units(action), "L_E", -whole))
+    elif whole != turned:
         found.append(_step("what is a total derivative drops out between periodic ends", "L_E", -whole))
     return tuple(found)
 
@@ -50,6 +52,14 @@ def _without_dropped(action: Action) -> Expression:
     from quarterturn.actions.declare import whole_action
 
     return whole_action(action.euclidean)
+
+
+def _in_units(action: Action) -> str:
+    """The seam of `units.system`, and the total derivatives that drop out on the way."""
+    unit = action.system.quantity(action.system.step).name
+    if action.system.seam[2]:
+        return f"the weight is exp(-S_E / hbar), written as exp(-S_E) with hbar divided out; tau in {unit}"
+    return f"the weight is exp(-S_E / hbar); tau becomes an inverse energy, tau / hbar, in {unit}, so that V stays"
 
 
 def _as_read(action: Action) -> str:

@@ -11,6 +11,7 @@ from quarterturn.reports.text import SHORT_NAME
 
 TITLES = {
     **{name: (words(heading), "") for name, heading in HEADINGS.items()},
+    "unit": ("unit", "of value, error and exact"),
     "exact": ("exact", "an independent solution at the same spacing"),
     "pull": ("pull", "(value − exact) / error"),
     "tau": ("<i>τ</i>", "integrated autocorrelation time in draws, 1/2 + sum of the autocorrelations"),
@@ -63,7 +64,7 @@ def _heading(column: str) -> str:
 def _cell(line: Cells, column: str, widths: dict[str, int]) -> str:
     if column == "label":
         return f'<th scope="row">{formula(line.latex, line.label)}</th>'
-    return f"<td>{number(line[column], widths[column])}</td>"
+    return f"<td>{number(line[column], widths[column]) if column in NUMBERS else words(line[column])}</td>"
 
 
 def _pictures(pictures: tuple[Picture, ...]) -> str:

@@ -21,14 +21,17 @@ from quarterturn.reports.bundle import mimebundle
 from quarterturn.reports.report import Curve, Report, Row
 from quarterturn.reports.text import text as render_text
 from quarterturn.runs.bubble import field_saddle
-from quarterturn.runs.recording import base_record
+from quarterturn.runs.recording import base_record, with_unit
 from quarterturn.runs.settings import Settings, split
 from quarterturn.runs.unit_words import facts as unit_facts
+from quarterturn.runs.unit_words import of_saddle
 from quarterturn.saddles.landscape import Landscape, survey
 from quarterturn.saddles.problem import Problem, paths_problem
 from quarterturn.saddles.rates import crossover, decay_rate, doubts, tunnelling_rates
 from quarterturn.saddles.saddle import Saddle
 from quarterturn.saddles.search import chosen, equivalents, escape, tunnelling
+from quarterturn.units.number import Number
+from quarterturn.units.quantity import Quantity
 
 Floats = NDArray[np.float64]
 KINDS = ("instanton", "bounce")
@@ -55,12 +58,17 @@ class Saddles:
     record: dict[str, Any] = field(default_factory=dict, repr=False)
     record_name: str = ""
 
-    def __getitem__(self, label: str) -> float | None:
+    def __getitem__(self, label: str) -> Number | None:
         """A number by its label, None where it is withheld. RequestError lists what there is."""
         for row in self.rows:
             if row.label == label:
-                return row.value
+                return None if row.value is None else Number(row.value, self.quantity(label))
         raise RequestError(f"there is no {label!r} here; there is {', '.join(self)}")
+
+    def quantity(self, label: str) -> Quantity:
+        """What the number of a label counts."""
+        zero_modes = next((row.value for row in self.rows if row.label == "zero modes"), None)
+        return of_saddle(self.action, label, zero_modes or 0)
 
     def __iter__(self) -> Iterator[str]:
         return (row.label for row in self.rows)
@@ -76,7 +84,7 @@ class Saddles:
             action_text=self.action.canonical,
             latex=self.action.euclidean.latex,
             couplings=tuple(self.couplings.items()),
-            rows=self.rows,
+            rows=tuple(replace(row, unit=self.quantity(row.label).name) for row in self.rows),
             curves=self.curves,
             warnings=self.warnings,
             facts=(*self.facts, *unit_facts(self.action)),
@@ -358,6 +366,7 @@ def _recorded(found: Saddles, request: dict[str, Any], seconds: float) -> Saddle
     record["method"] = {"saddle": found.kind, **dict(found.facts)}
     record["results"] = [
         {"label": row.label, "kind": "number", "value": row.value, "error": row.error, "state": row.state}
+        | with_unit(found.quantity(row.label))
         for row in found.rows
     ]
     record["warnings"] = list(found.warnings)

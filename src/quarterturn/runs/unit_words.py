@@ -2,10 +2,18 @@
 
 from __future__ import annotations
 
+from quarterturn.actions.dimensions import times
 from quarterturn.actions.in_units import HBAR, known
 from quarterturn.actions.model import Action
 from quarterturn.units.constants import release
 from quarterturn.units.quantity import UNKNOWN, Quantity
+
+# numbers of a saddle, as powers of an energy; the tension of a wall depends on the coordinates it is measured in
+POWERS = {
+    "S": 0, "S, thin wall": 0, "negative modes": 0, "zero modes": 0, "det/det_0": 0, "det/det_0, on a lattice": 0,
+    "omega": 1, "V_b": 1, "T_c": 1, "K exp(-S)": 1, "E_1 - E_0": 1, "width of the band": 1, "decay rate": 1,
+    "duration": -1, "radius": -1, "thickness": -1, "lambda_-": 2,
+}  # fmt: skip
 
 
 def counted(action: Action, name: str) -> str:
@@ -22,6 +30,16 @@ def step(action: Action) -> Quantity:
 def level(action: Action) -> Quantity:
     """What the energy of a state counts."""
     return action.system.quantity(action.system.level)
+
+
+def of_saddle(action: Action, label: str, zero_modes: float) -> Quantity:
+    """What a number of a saddle counts; the determinant without zero modes lacks an eigenvalue for each."""
+    if label.startswith("det'/det_0"):
+        return action.system.quantity(times(action.system.level, -2 * int(zero_modes)))
+    if label in POWERS:
+        return action.system.quantity(times(action.system.level, POWERS[label]))
+    field = action.paths[0]
+    return field.quantity if label in ("false vacuum", f"{field.name}(0)") else action.system.quantity(None)
 
 
 def along(action: Action, variable: str = "t") -> str:
