@@ -6,7 +6,7 @@ from typing import Any
 import pytest
 
 from quarterturn.actions.declare import declare
-from quarterturn.actions.model import Action
+from quarterturn.actions.model import Action, Geometry
 from quarterturn.errors import ActionError, NotationError
 from tests.outside.values import value
 
@@ -114,3 +114,44 @@ def test_fields_and_lattice_actions_take_no_laboratory_system() -> None:
     named = declare("phi(t, x)\nunits GeV\nL = 1/2 (d phi)^2 - 1/2 m2 phi^2\nm2 = 1\nmeasure gap(phi)")
     assert units_of(named) == {"m2": "GeV^2"}
     assert named.measurements[0].quantity.name == "GeV"
+
+
+def lattice_at(line: str) -> Geometry | None:
+    return declare(
+        f"q(t)\nunits amu, angstrom, 1/cm\nL = 1/2 m q'^2 - 1/2 k q^2\nm = 1, k = 1000\nlattice {line}"
+    ).geometry
+
+
+def test_a_lattice_may_be_given_by_its_temperature() -> None:
+    """beta = 1 / (k_B T) in (1/cm)^-1, with k_B = 0.695034800 1/(cm K) (CODATA)."""
+    beta = 1 / (0.695034800 * 300)
+    for line, sites in (("64, temperature = 300 K", 64), ("temperature = 300 K, a = 0.0001", 48),
+                        ("temperature = 300, a = 0.0001", 48)):  # fmt: skip
+        found = lattice_at(line)
+        assert found is not None
+        assert (found.sites, found.beta) == (sites, pytest.approx(beta, rel=1e-8))
+    natural = declare("q(t)\nL = 1/2 q'^2 - 1/2 q^2\nlattice temperature = 0.5, a = 0.1").geometry
+    assert natural is not None
+    assert (natural.sites, natural.beta) == (20, pytest.approx(2))
+
+
+@pytest.mark.parametrize(
+    ("line", "words"),
+    [
+        ("temperature = 300 fs, a = 0.1", "fs is a time"),
+        ("temperature = , a = 1", "a temperature is a number"),
+        ("temperature = 0, a = 1", "must be positive"),
+        ("temperature = 1e-320 K, a = 1", "can hold"),
+        ("temperature = 1e999 K, a = 1", "can hold"),
+        ("temperature = 1e-30 K, a = 1", "more than"),
+        ("temperature = 300 K, beta = 3", "one thing"),
+        ("temperatur = 300 K, a = 1", "there is temperature"),
+        ("temperature = 300 K", "lacks its second half"),
+        ("64, a = 1, temperature = 300 K", "one thing twice"),
+    ],
+)
+def test_a_temperature_of_the_lattice_that_makes_no_sense(line: str, words: str) -> None:
+    with pytest.raises((ActionError, NotationError), match=words) as complaint:
+        lattice_at(line)
+    assert complaint.value.span is not None
+    assert complaint.value.span.line == 5

@@ -81,7 +81,8 @@ def test_products_and_powers_of_units(text: str, si: float) -> None:
 @pytest.mark.parametrize(
     ("text", "words"),
     [("angstrm", "there is angstrom"), ("gev", "there is GeV"), ("GeV^", "no unit"), ("", "no unit"), ("1", "no unit"),
-     ("J/mol K", "two ways"), ("m^999", "power beyond 64"), ("(" * 500, "no unit"), ("m" * 5000, "there is no unit")],
+     ("J/mol K", "two ways"), ("m^999", "power beyond 64"),
+     ("(1/cm)^64", "no size"), ("PHz^64", "no size"), ("(" * 500, "no unit"), ("m" * 5000, "there is no unit")],
 )  # fmt: skip
 def test_what_is_no_unit_is_refused_with_the_nearest(text: str, words: str) -> None:
     with pytest.raises(RequestError, match=words):

@@ -172,7 +172,7 @@ class _Declaration:
             if any(symbol.kind == "source" and symbol.name == n for symbol in written.symbols)
         )
         lagrangian, bare = self.turned(on_spheres(written, paths), dynamics, paths, variables, scope)
-        geometry = geometry_of(self.text, self.of(LatticeStatement), coordinates)
+        geometry = geometry_of(self.text, self.of(LatticeStatement), coordinates, system)
         measurements, used = self.measurements(scope, paths, geometry, dynamics, _defaults(given.couplings))
         known = _dimensions(bare, paths, system)
         couplings, bare = counted(given.couplings, known), through_the_seam(bare, system)

@@ -2,24 +2,32 @@
 
 from __future__ import annotations
 
+import math
+
 from quarterturn.actions.model import Edge, Geometry
 from quarterturn.actions.numbers import constant_value
 from quarterturn.actions.scope import Scope
-from quarterturn.errors import ActionError, Span
+from quarterturn.errors import ActionError, RequestError, Span
 from quarterturn.notation.tree import Boundary, LatticeStatement
+from quarterturn.units.system import System, natural
 
+MOST = 10**9  # sites that a temperature asks for
 FEWEST = 3  # sites of a periodic direction: two would double each link
 VACUUM = 1e-6  # exp(-beta gap) where `beta = vacuum` names no tolerance
 
 
-def geometry_of(text: str, statements: list[LatticeStatement], coordinates: tuple[str, ...]) -> Geometry | None:
-    """The geometry that the lattice statements give together, None where there is none."""
-    return _Lattice(text, statements, coordinates).geometry()
+def geometry_of(
+    text: str, statements: list[LatticeStatement], coordinates: tuple[str, ...], system: System | None = None
+) -> Geometry | None:
+    """The geometry that the lattice statements give together, None where there is none; `system` reads temperatures."""
+    return _Lattice(text, statements, coordinates, system or natural()).geometry()
 
 
 class _Lattice:
-    def __init__(self, text: str, statements: list[LatticeStatement], coordinates: tuple[str, ...]) -> None:
-        self.text, self.statements, self.coordinates = text, statements, coordinates
+    def __init__(
+        self, text: str, statements: list[LatticeStatement], coordinates: tuple[str, ...], system: System
+    ) -> None:
+        self.text, self.statements, self.coordinates, self.system = text, statements, coordinates, system
         self.settings: dict[str, float] = {}
         self.extents: tuple[int, ...] = ()
         self.vacuum: float | None = None
@@ -51,10 +59,28 @@ class _Lattice:
             self.settings[word] = constant_value(Scope(self.text, {}, {}, {}), formula, word)
             if not self.settings[word] > 0:
                 raise self.error(f"{word} must be positive, got {self.settings[word]:g}", formula.span)
+        if s.temperature:
+            self.heated(s)
         if s.vacuum is not None:
             self.vacuum = constant_value(Scope(self.text, {}, {}, {}), s.vacuum, "a tolerance")
             if not 0 < self.vacuum < 1:
                 raise self.error("the tolerance for exp(-beta gap) lies between 0 and 1", s.vacuum.span, "1e-6")
+
+    def heated(self, s: LatticeStatement) -> None:
+        """beta from a temperature; where a path has a spacing, the lattice gets a whole number of them, none longer."""
+        if "beta" in self.settings:
+            raise self.error("temperature and beta are one thing: give one of them", s.span)
+        try:
+            beta = self.system.beta_at(s.temperature)
+        except RequestError as trouble:
+            raise self.error(trouble.message, s.span, trouble.repair) from None
+        self.settings["beta"] = beta
+        spacing = self.settings.get("a", 0.0)
+        if len(self.coordinates) == 1 and not self.extents and spacing > 0:
+            if beta / spacing > MOST:
+                raise self.error(f"beta = {beta:g} is more than {MOST:.0e} spacings a = {spacing:g}", s.span)
+            del self.settings["a"]
+            self.extents = (max(math.ceil(beta / spacing * (1 - 1e-9)), FEWEST),)
 
     def wrong_dimension(self, s: LatticeStatement) -> None:
         if len(self.coordinates) == 1:

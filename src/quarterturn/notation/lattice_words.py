@@ -27,6 +27,7 @@ def lattice(source: Source, piece: Piece, word: str | None, names: Names) -> Lat
     settings: list[tuple[str, Node]] = []
     boundaries: list[Boundary] = []
     vacuum: Node | None = None
+    temperature = ""
     for part in parts(source, inner):
         written = source.text[part.start : part.end]
         text = written.strip()
@@ -45,6 +46,11 @@ def lattice(source: Source, piece: Piece, word: str | None, names: Names) -> Lat
             rest = Piece(part.start + cold.end(), part.end)
             blank = not source.text[rest.start : rest.end].strip()
             vacuum = Number(VACUUM, span) if blank else read_formula(source, rest.start, rest.end, names)
+        elif hot := re.match(r"\s*temperature\s*=(?!=)", written):
+            temperature = written[hot.end() :].strip()
+            if not re.match(r"[0-9.]", temperature):
+                words = "a temperature is a number, and its unit where units are named"
+                raise source.error(words, part.start + hot.end(), part.end, "temperature = 300 K")
         elif assigned := re.match(r"\s*(a(?:_[txyz])?|beta|β)\s*=(?!=)", written):
             formula = read_formula(source, part.start + assigned.end(), part.end, names)
             if canonical_name(assigned.group(1)) in dict(settings):
@@ -52,7 +58,7 @@ def lattice(source: Source, piece: Piece, word: str | None, names: Names) -> Lat
             settings.append((canonical_name(assigned.group(1)), formula))
         else:
             raise _no_setting(source, part, text)
-    return LatticeStatement(extents, tuple(settings), tuple(boundaries), vacuum, span)
+    return LatticeStatement(extents, tuple(settings), tuple(boundaries), vacuum, span, temperature)
 
 
 def _no_setting(source: Source, part: Piece, text: str) -> NotationError:
@@ -64,7 +70,7 @@ def _no_setting(source: Source, part: Piece, text: str) -> NotationError:
         size, power = re.findall(r"[0-9]+|[²³⁴]", text)
         sizes = " x ".join([size] * int("²³⁴".index(power) + 2 if power in "²³⁴" else power))
         return source.error("the sites are written out, one number a direction", start, end, f"lattice {sizes}")
-    known = (*BOUNDARIES, "beta", "a", "vacuum")
+    known = (*BOUNDARIES, "beta", "a", "vacuum", "temperature")
     near = difflib.get_close_matches(re.split(r"[^A-Za-z]", text)[0], known, n=1)
     if near and near[0] != "a" and not text.startswith(near[0]):
         rest = re.sub(r"^[A-Za-z]*", "", text)

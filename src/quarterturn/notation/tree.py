@@ -249,6 +249,7 @@ class LatticeStatement:
     boundaries: tuple[Boundary, ...] = ()
     vacuum: Node | None = None
     span: Span = field(default=NOWHERE, compare=False, repr=False)
+    temperature: str = ""  # an amount such as 300 K, in the place of beta
 
 
 @dataclass(frozen=True, slots=True)

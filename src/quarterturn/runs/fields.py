@@ -31,6 +31,7 @@ from quarterturn.runs.recording import field_record
 from quarterturn.runs.run import Run
 from quarterturn.runs.session import REASONS, Session
 from quarterturn.runs.settings import Goal, Settings, examined, split_words
+from quarterturn.runs.unit_words import facts as unit_facts
 from quarterturn.sampling.driver import Request
 from quarterturn.sampling.fields.driver import FieldChain, run_fields
 from quarterturn.sampling.fields.program import default_field_chains, field_program_for
@@ -240,4 +241,5 @@ class FieldSession(Session):
             ("moves accepted", moves),
             ("<exp(-dH)>", f"{mean:.5f} ± {error:.5f}"),
             ("stopped", f"{REASONS[chain.stop]}, {chain.seconds:.1f} s"),
+            *unit_facts(self.action),
         )

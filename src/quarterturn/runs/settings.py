@@ -17,7 +17,7 @@ from quarterturn.actions.findings import check
 from quarterturn.actions.in_units import known
 from quarterturn.actions.model import Action, Finding
 from quarterturn.errors import ActionError, RequestError, SpectrumError
-from quarterturn.units.unit import ENERGY, TEMPERATURE, amount
+from quarterturn.units.unit import amount
 
 LATTICE_WORDS = ("a", "beta", "sites", "temperature")
 DEFAULT_ERROR = "1%"
@@ -124,20 +124,10 @@ def _measured(action: Action, word: str, value: Any) -> float:
 
     The entry of `temperature` is the inverse temperature.
     """
-    system = action.system
-    if word == "temperature" or (isinstance(value, str) and word != "sites"):
-        try:
-            number, given = float(value), system.temperature
-        except ValueError:
-            number, given = amount(value)
-        if given is not None:
-            if word == "temperature" and given.powers not in (TEMPERATURE, ENERGY):
-                raise RequestError(f"temperature must be a temperature or an energy; {given} is {given.kind}")
-            return system.beta(number, given)
-        if word == "temperature":  # in natural units, k_B = 1
-            if not number > 0:
-                raise RequestError(f"temperature must be positive, got {number:g}")
-            return 1 / number
+    if word == "temperature":
+        return action.system.beta_at(value if isinstance(value, str) else _number(word, value))
+    if isinstance(value, str) and word != "sites" and not _is_number(value):
+        return action.system.beta(*amount(value))
     return _number(word, value)
 
 
@@ -176,6 +166,14 @@ def _number(word: str, value: Any) -> float:
     if not math.isfinite(number):
         raise RequestError(f"{word} must be finite, got {number}")
     return number
+
+
+def _is_number(text: str) -> bool:
+    try:
+        float(text)
+    except ValueError:
+        return False
+    return True
 
 
 def _at_temperature(action: Action, asked: Mapping[str, float]) -> dict[str, float]:

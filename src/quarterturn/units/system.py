@@ -29,7 +29,7 @@ from functools import cache
 from quarterturn.errors import NotationError, RequestError
 from quarterturn.units.constants import constant
 from quarterturn.units.quantity import ALL_ONE, IN_A_LABORATORY, Quantity
-from quarterturn.units.unit import ENERGY, LENGTH, MASS, TEMPERATURE, TIME, Unit, product, table, unit
+from quarterturn.units.unit import ENERGY, LENGTH, MASS, TEMPERATURE, TIME, Unit, amount, product, table, unit
 
 Dimension = tuple[Fraction, ...]  # natural: powers of mass; laboratory: of the mass, the length and the energy or time
 EXAMPLE = "units amu, angstrom, 1/cm"
@@ -71,6 +71,24 @@ class System:
         scale = self.bases[0] if self.bases else None
         known = None if mass is None or scale is None else product([(scale, mass / scale.dimension)])
         return Quantity(known, mass, ALL_ONE, scale)
+
+    def beta_at(self, temperature: str | float) -> float:
+        """An inverse temperature from a number (in the unit of temperature, or with k_B = 1) or an amount as a text.
+
+        Raises RequestError where it is no temperature or energy, or not positive.
+        """
+        try:
+            value, given = float(temperature), self.temperature
+        except ValueError:
+            value, given = amount(str(temperature))
+        if given is not None and given.powers not in (TEMPERATURE, ENERGY):
+            raise RequestError(f"temperature must be a temperature or an energy; {given} is {given.kind}")
+        if not value > 0:
+            raise RequestError(f"temperature must be positive, got {temperature}")
+        found = 1 / value if given is None else self.beta(value, given)
+        if not 0 < found < float("inf"):
+            raise RequestError(f"temperature = {temperature} gives no inverse temperature that a number can hold")
+        return found
 
     def beta(self, value: float, given: Unit) -> float:
         """An inverse temperature as this system counts it, from a temperature, an energy or a time.

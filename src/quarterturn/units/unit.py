@@ -12,7 +12,8 @@ import re
 from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
-from functools import cache
+from functools import cache, lru_cache
+from math import prod
 
 from quarterturn.errors import RequestError
 from quarterturn.units.constants import constant
@@ -86,10 +87,14 @@ class Unit:
 def product(factors: Iterable[tuple[Unit, Fraction | int]]) -> Unit:
     """The unit that is a product of powers of others, named as it would be written."""
     kept = [(u, Fraction(p)) for u, p in factors if p]
-    size = 1.0
     total = list(PURE)
+    try:
+        size = prod(u.size ** float(p) for u, p in kept)
+    except OverflowError:
+        size = 0.0
+    if not 0 < size < float("inf"):
+        raise RequestError(f"{_joined((u.name, p) for u, p in kept)} is no size that a number can hold")
     for u, p in kept:
-        size *= u.size ** float(p)
         total = [a + b * p for a, b in zip(total, u.powers, strict=True)]
     return Unit(_joined((u.name, p) for u, p in kept), size, (total[0], total[1], total[2], total[3]))
 
@@ -137,7 +142,7 @@ def table() -> Mapping[str, Unit]:
     return {name: Unit(name, size, kind) for name, (size, kind) in sizes.items()}
 
 
-@cache
+@lru_cache(maxsize=1024)
 def unit(text: str) -> Unit:
     """The unit that is called `text`: a name, or a product such as GeV^2, 1/fm, MeV fm, kg m^2/s^2.
 
