@@ -53,8 +53,13 @@ def local_function(
 def problem_of(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> Problem:
     """The problem of one, two or three degrees of freedom, or of a unit vector with two or three components.
 
-    Raises SpectrumError where the action has more, or a source that depends on time.
+    Raises SpectrumError for fields on space and lattice actions, where there are more degrees of freedom, or a source
+    that depends on time.
     """
+    if euclidean.dimension > 1:
+        raise SpectrumError("a field on space has too many degrees of freedom for a spectrum: sample it instead")
+    if euclidean.links:
+        raise SpectrumError("a lattice action SE has no Hamiltonian of its own: sample it, or write L")
     if euclidean.sources:
         raise SpectrumError("a source depends on time: only log Z[J] of one or two paths has an exact value")
     if euclidean.spheres:

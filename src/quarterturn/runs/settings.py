@@ -82,13 +82,16 @@ def resolve(action: Action, keywords: Mapping[str, Any]) -> Settings:
 
 
 def require_paths(action: Action, what: str) -> None:
-    """Raises ActionError for what the rooms of paths can't treat: fields, lattice actions, spheres."""
+    """Raises ActionError for what the solvers of paths can't treat: fields on space, lattice actions, unit vectors."""
     euclidean = action.euclidean
-    if euclidean.dimension > 1:
-        raise ActionError(f"{what} of fields on space is not available yet; {action.name} is declared and turned only")
-    for there, words in ((euclidean.links, "a lattice action SE"), (euclidean.spheres, "unit vectors")):
+    kinds = (
+        (euclidean.dimension > 1, "a field on space"),
+        (euclidean.links, "a lattice action SE"),
+        (euclidean.spheres, "an action of unit vectors"),
+    )
+    for there, words in kinds:
         if there:
-            raise ActionError(f"{what} of {words} is not available yet; {action.name} is declared and turned only")
+            raise ActionError(f"{what} is solved for paths; {action.name} is {words}: sample it instead")
 
 
 def split(action: Action, keywords: Mapping[str, Any]) -> tuple[dict[str, float], dict[str, float]]:
