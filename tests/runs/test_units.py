@@ -172,3 +172,22 @@ def test_the_picture_of_levels_has_each_wave_on_its_energy() -> None:
     assert [c.baseline for c in waves] == list(levels.energies)
     assert all(abs(np.sum(np.square(c.y)) * (c.x[1] - c.x[0]) - 1) < 1e-3 for c in waves)  # bare and normalised
     assert {c.unit for c in waves} == {"1/cm"}
+
+
+@pytest.mark.parametrize("theta", [0.0, 1.0])
+def test_a_lattice_in_time_steps_is_the_lattice_in_inverse_energies(theta: float) -> None:
+    """A rotor with a theta term: the seams of both kinds of system, at a finite spacing, with a complex weight."""
+    text = ("x(t) mod 2 pi\nunits {}\nL = 1/2 I x'^2 + g cos(x) + hbar vt/(2 pi) x'\nI = {!r}, g = {!r}, vt = {!r}\n"
+            "lattice 24, a = {!r}\nmeasure <cos(x)>, energy, gap(cos(x))")  # fmt: skip
+    amu, cm = si.physical_constants["atomic mass constant"][0], si.h * si.c * 100
+    tau = cm / si.hbar * 1e-15  # 1 fs in (1/cm)^-1
+    one = qt.action(text.format("amu, angstrom, 1/cm", 2.0, 10.0, theta, 20.0 * tau))
+    other = qt.action(text.format("amu, angstrom, fs", 2.0, 10.0 * cm / (amu * 1e10), theta, 20.0))
+    left, right = (qt.levels(action, count=3, spacing="lattice") for action in (one, other))
+    np.testing.assert_allclose(left.to("meV"), right.to("meV"), rtol=1e-9)
+    assert left["<cos(x)>"] == pytest.approx(right["<cos(x)>"], rel=1e-9)
+    assert left["energy"].to("K") == pytest.approx(right["energy"].to("K"), rel=1e-8)
+    free = si.hbar**2 / (2 * 2.0 * amu * 1e-20) / cm  # (n - theta / 2 pi)^2 hbar^2 / 2I without the potential
+    plain = qt.levels(one, count=2, g=0)
+    shift = theta / (2 * math.pi)
+    np.testing.assert_allclose(plain.energies, [free * shift**2, free * (1 - shift) ** 2], atol=1e-8)

@@ -57,6 +57,7 @@ SUPERSCRIPTS = str.maketrans("⁰¹²³⁴⁵⁶⁷⁸⁹⁻", "0123456789-")
 NUMBER = r"[0-9]+(?:\.[0-9]*)?(?:[eE][-+]?[0-9]+)?|\.[0-9]+(?:[eE][-+]?[0-9]+)?"
 FACTOR = re.compile(r"\s*(?P<name>[A-Za-zÅåµμ][A-Za-z_åöÅ0]*)(?:\^(?P<power>-?\d+|\(-?\d+(?:/\d+)?\)))?\s*")
 LARGEST_POWER = 64
+LONGEST = 60  # letters of a unit that a complaint repeats
 
 
 @dataclass(frozen=True, slots=True)
@@ -93,10 +94,14 @@ def product(factors: Iterable[tuple[Unit, Fraction | int]]) -> Unit:
     except OverflowError:
         size = 0.0
     if not 0 < size < float("inf"):
-        raise RequestError(f"{_joined((u.name, p) for u, p in kept)} is no size that a number can hold")
+        raise RequestError(f"{_shown(_joined((u.name, p) for u, p in kept))} is no size that a number can hold")
     for u, p in kept:
         total = [a + b * p for a, b in zip(total, u.powers, strict=True)]
     return Unit(_joined((u.name, p) for u, p in kept), size, (total[0], total[1], total[2], total[3]))
+
+
+def _shown(text: str) -> str:
+    return text if len(text) <= LONGEST else f"{text[:LONGEST]}…"
 
 
 def _joined(factors: Iterable[tuple[str, Fraction]]) -> str:
@@ -172,7 +177,7 @@ def _factors(plain: str, text: str) -> Iterator[tuple[Unit, Fraction]]:
     for part in below:
         grouped = re.fullmatch(r"\s*\((.*)\)\s*", part)
         if not grouped and len(part.split()) > 1:
-            raise RequestError(f"{text} can be read in two ways: put what stands below the slash in brackets")
+            raise RequestError(f"{_shown(text)} can be read in two ways: put what stands below the slash in brackets")
         yield from _product(grouped.group(1) if grouped else part, text, -1)
 
 
@@ -181,10 +186,12 @@ def _product(part: str, text: str, sign: int) -> Iterator[tuple[Unit, Fraction]]
     while at < len(part) or not part.strip():
         match = FACTOR.match(part, at)
         if match is None:
-            raise RequestError(f"{text!r} is no unit: expected names and powers, such as GeV, 1/fm or amu angstrom^2")
+            raise RequestError(
+                f"{_shown(text)!r} is no unit: expected names and powers, such as GeV, 1/fm or amu angstrom^2"
+            )
         power = Fraction((match["power"] or "1").strip("()"))
         if abs(power) > LARGEST_POWER:
-            raise RequestError(f"{text}: a power beyond {LARGEST_POWER}")
+            raise RequestError(f"{_shown(text)}: a power beyond {LARGEST_POWER}")
         yield _named(match["name"]), sign * power
         at = match.end()
 
@@ -196,7 +203,7 @@ def _named(name: str) -> Unit:
         known = [*table(), *ALIASES]
         near = [k for k in known if k.lower() == name.lower()][:1] or difflib.get_close_matches(name, known, n=1)
         raise RequestError(
-            f"there is no unit {name!r}" + (f"; there is {ALIASES.get(near[0], near[0])}" if near else ""),
+            f"there is no unit {_shown(name)!r}" + (f"; there is {ALIASES.get(near[0], near[0])}" if near else ""),
             repair=ALIASES.get(near[0], near[0]) if near else None,
         )
     return found
