@@ -37,6 +37,14 @@ X2Y2 = System(
 )
 
 
+def tilted(q: Any) -> Any:
+    return 2.04 * q - 2.56 * q**2 + 0.42 * q**3 + 0.383 * q**4
+
+
+def tilted_slope(q: Any) -> Any:
+    return 2.04 - 5.12 * q + 1.26 * q**2 + 1.532 * q**3
+
+
 def mehler(b: float, a: float, beta: float) -> float:
     """Mehler 1866: the kernel of H = p^2/2 + q^2/2 in imaginary time."""
     sinh, cosh = np.sinh(beta), np.cosh(beta)
@@ -116,6 +124,13 @@ def test_the_kernel_of_the_oscillator_is_mehlers(name: str, outside: Outside) ->
         (anharmonic(1.0), QUARTIC, 0.5, -0.8, 0.3),
         (anharmonic(1.0), QUARTIC, 2.0, -2.0, 1.0),  # 2e-7, deep under the barrier of the path
         (double_well(1.0, 1.0), WELL, 1.0, -1.0, 6.0),
+        (
+            OnePath(0.15, tilted),
+            one(tilted, tilted_slope, 0.15),
+            -4.08,
+            -2.4,
+            0.38,
+        ),  # many levels beyond those asked for
         (OnePath(1.0, lambda q: -2 * np.cos(q), 2 * np.pi, 0.3, even=True), PENDULUM, 1.0, -1.0, 1.5),
     ],
 )

@@ -17,6 +17,7 @@ from quarterturn.imaginary.boxes import checked, fitted_grid
 from quarterturn.imaginary.product import ProductBasis
 from quarterturn.imaginary.propagation import CHIN_4A, Grid, Propagator, Scheme, System, measured_order
 from quarterturn.imaginary.spectrum import Spectrum
+from quarterturn.imaginary.warm import warmed
 
 COARSE = 32  # steps of a propagation that only has to be roughly right
 SMOOTHED = 60.0  # exponent by which the fastest momentum of the grid has decayed over beta
@@ -44,7 +45,7 @@ def from_levels(spectrum: Spectrum, b: Sequence[float], a: Sequence[float], beta
     SpectrumError
         A continuum, too high a temperature, or an end outside the box of the basis.
     """
-    thermal = spectrum.at(beta)
+    thermal, energy_error = warmed(spectrum, beta)
     basis = thermal.basis
     ends = np.array([b, a], dtype=np.float64).T  # (C, 2)
     if isinstance(basis, Interval) and not (basis.low < ends.min() and ends.max() < basis.high):
@@ -58,7 +59,7 @@ def from_levels(spectrum: Spectrum, b: Sequence[float], a: Sequence[float], beta
     scale = float(np.exp(-beta * thermal.values[0]))
     total = complex(np.sum(terms)) * scale
     sizes = [np.abs(w) * np.sqrt(size) for w in waves]
-    relative = 10 * ROUNDING + beta * float(np.max(spectrum.errors))
+    relative = 10 * ROUNDING + beta * energy_error
     exact_enough = beta * (thermal.values - thermal.values[0]) < spectrum.residue - 1
     unsure = float(np.sum((sizes[0] * sizes[1])[~exact_enough]))
     noise = 10 * ROUNDING * float(np.sqrt(np.sum(size) / basis.step) * (np.linalg.norm(sizes[0] + sizes[1])))
@@ -110,7 +111,7 @@ def propagated(
     found = values[-1] * scale
     return FixedEnds(
         found if system.flux.any() else found.real, error * scale, tuple(counts), tuple(v * scale for v in values),
-        measured_order(counts, changes),
+        measured_order(counts, changes, max(1e-10, floor / max(abs(values[-1]), 1e-300))),
     )  # fmt: skip
 
 

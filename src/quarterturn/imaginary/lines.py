@@ -20,6 +20,7 @@ from quarterturn.imaginary.problem import Local
 from quarterturn.imaginary.product_observables import observer
 from quarterturn.imaginary.spectrum import Spectrum
 from quarterturn.imaginary.thermal import Thermal
+from quarterturn.imaginary.warm import warmed
 
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
@@ -157,7 +158,10 @@ def lines(spectrum: Spectrum, f: Local, g: Local, beta: float | None = None) -> 
             f"a continuum begins at V = {spectrum.threshold:.6g}: its lines are dense, and a finite basis shows "
             "others; its Euclidean correlators can be had"
         )
-    solved = spectrum if beta is None else spectrum.at(beta)
+    solved: Spectrum | Thermal = spectrum
+    level_error = float(np.max(spectrum.errors))
+    if beta is not None:
+        solved, level_error = warmed(spectrum, beta)
     probabilities = solved.probabilities if isinstance(solved, Thermal) else np.ones(1)
     values, vectors, count = solved.values, solved.vectors, len(probabilities)
     states = vectors[:, :count]
@@ -172,8 +176,7 @@ def lines(spectrum: Spectrum, f: Local, g: Local, beta: float | None = None) -> 
     diagonal = [float(np.real(np.sum(probabilities * d))) for d in (np.diagonal(left), np.diagonal(right))]
     sizes = [np.sum(probabilities[:, None] * np.abs(m) ** 2) for m in (left, right.T)]
     uncertain += ROUNDING * np.sqrt(sizes[0] * sizes[1])
-    energy_error = 2 * float(np.max(spectrum.errors))
-    return Lines(omega, merged, beta, float(uncertain), (diagonal[0], diagonal[1]), energy_error)
+    return Lines(omega, merged, beta, float(uncertain), (diagonal[0], diagonal[1]), 2 * level_error)
 
 
 def _merged(frequencies: Floats, weights: Numbers) -> tuple[Floats, Numbers]:

@@ -211,9 +211,9 @@ class Evolved:
         return measured_order(self.steps, self.changes)
 
 
-def measured_order(steps: Sequence[int], changes: Sequence[float]) -> float | None:
-    """log(change / next change) / log(2) of the last pair of changes that are well above rounding."""
-    clean = [i for i in range(len(changes) - 1) if changes[i + 1] > 1e-10 and changes[i] < 1e-2]
+def measured_order(steps: Sequence[int], changes: Sequence[float], noise: float = 1e-10) -> float | None:
+    """log(change / next change) / log(2) of the last pair of changes above the noise, which rounding makes."""
+    clean = [i for i in range(len(changes) - 1) if changes[i + 1] > noise and changes[i] < 1e-2]
     if not clean:
         return None
     i = clean[-1]

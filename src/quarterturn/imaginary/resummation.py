@@ -24,6 +24,7 @@ DIGITS_PER_ORDER, LEAST_DIGITS = 6, 60
 NODES = 200  # of the double-exponential rule for a Laplace integral
 ROUNDING = 4e-15  # relative, of a value; integrals over doubles take ten times as much
 BESIDE, FAR_BESIDE = 0.05, 0.5  # angles [rad] of a path beside the positive axis: to test it, and to avoid a cut
+SAFETY = 2  # of random series, one sum in fifty misses its level by more than the spread alone
 WINDOW = 4  # orders that must agree
 
 
@@ -57,12 +58,17 @@ def partial_sums(series: Sequence[Decimal], z: Decimal) -> Floats:
 
 
 def truncated(series: Sequence[Decimal], z: Decimal) -> Sum:
-    """The partial sum that stops before its smallest term, whose size is the error."""
+    """The partial sum that stops before the smallest terms, the largest of which is the error.
+
+    A single small term means nothing where signs and sizes fluctuate: a term and its three neighbours are looked at.
+    """
     with localcontext(prec=digits_for(len(series))):
-        sizes = [(abs(a * z**n), n) for n, a in enumerate(series) if n and a]
-    smallest, n = min(sizes, default=(Decimal(0), len(series)))
-    if sizes and n == sizes[-1][1] and len(series) > 2 * n + 2:  # nothing but zeros follows: the series ends
+        sizes = [(n, abs(a * z**n)) for n, a in enumerate(series) if n and a]
+    if not sizes or len(series) > 2 * sizes[-1][0] + 2:  # nothing but zeros follows: the series ends
         smallest, n = Decimal(0), len(series)
+    else:
+        around = [sizes[max(0, i - 1) : i + 3] for i in range(len(sizes))]
+        smallest, n = min((max(size for _, size in near), sizes[i][0]) for i, near in enumerate(around))
     value = float(partial_sums(series[:n], z)[-1])
     return Sum(value, float(smallest) + ROUNDING * max(abs(value), float(abs(series[0]))), n - 1)
 
@@ -121,7 +127,7 @@ def pade_values(fraction: ContinuedFraction, z: Decimal) -> list[float]:
 
 
 def settled(values: Sequence[float], rounding: float) -> Sum | None:
-    """The last value; its error is the spread with one, two, and a sixth fewer coefficients.
+    """The last value; its error is twice the spread with one, two, and a sixth fewer coefficients.
 
     For a Stieltjes series the value with one coefficient fewer lies on the other side of the limit.
     """
@@ -129,7 +135,7 @@ def settled(values: Sequence[float], rounding: float) -> Sum | None:
     used = [values[last - fewer] for fewer in (0, 1, 2, max(3, len(values) // 6)) if fewer <= last]
     if len(used) < 4 or not all(map(math.isfinite, used)):
         return None
-    return Sum(used[0], max(used) - min(used) + rounding * abs(used[0]), last)
+    return Sum(used[0], SAFETY * (max(used) - min(used)) + rounding * abs(used[0]), last)
 
 
 def pade_sum(fraction: ContinuedFraction, z: Decimal) -> Sum | None:

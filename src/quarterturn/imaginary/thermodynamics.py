@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from quarterturn.errors import SpectrumError
 from quarterturn.imaginary.spectrum import Spectrum
+from quarterturn.imaginary.warm import warmed
 
 Floats = NDArray[np.float64]
 NEGLIGIBLE = 1e-17
@@ -25,6 +26,7 @@ class Thermodynamics:
     energy: Floats  # <H>
     entropy: Floats  # beta (<H> - F)
     heat_capacity: Floats  # beta^2 (<H^2> - <H>^2)
+    energy_error: float  # of a level
 
 
 def thermodynamics(spectrum: Spectrum, betas: Sequence[float] | Floats) -> Thermodynamics:
@@ -43,10 +45,12 @@ def thermodynamics(spectrum: Spectrum, betas: Sequence[float] | Floats) -> Therm
         raise SpectrumError("beta must be a number or a list of numbers")
     if not np.all((given > 0) & np.isfinite(given)):
         raise SpectrumError("every beta must be positive and finite")
-    above = spectrum.at(float(given.min())).values
+    thermal, error = warmed(spectrum, float(given.min()))
+    above = thermal.values
     ground = float(above[0])
     rows = [_at(above - ground, ground, float(beta)) for beta in given]
-    return Thermodynamics(given, *(np.array(column) for column in zip(*rows, strict=True)))
+    partition, free, energy, entropy, capacity = (np.array(column) for column in zip(*rows, strict=True))
+    return Thermodynamics(given, partition, free, energy, entropy, capacity, error)
 
 
 def _at(above: Floats, ground: float, beta: float) -> tuple[float, float, float, float, float]:

@@ -58,9 +58,7 @@ class Consequences:
         betas: Any = self.beta if beta is None else beta
         if betas is None:
             raise RequestError("beta is missing: thermodynamics(beta=2), or a list of inverse temperatures")
-        return ThermodynamicsTable(
-            self._context(), thermodynamics(self._solved(), betas), float(np.max(self._solved().errors))
-        )
+        return ThermodynamicsTable(self._context(), thermodynamics(self._solved(), betas))
 
     def propagator(self, q_b: Place, q_a: Place, beta: float | None = None) -> Kernel:
         """K(q_b, beta; q_a, 0) = <q_b| exp(-beta H) |q_a>, from the levels and by split-operator propagation.

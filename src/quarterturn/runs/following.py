@@ -81,15 +81,13 @@ class ThermodynamicsTable(Shown):
     context: Context
     functions: Thermodynamics
 
-    energy_error: float  # of a level
-
     @property
     def beta(self) -> Floats:
         return self.functions.beta
 
     def _errors(self) -> tuple[float, ...]:
         """What wrong levels do to Z, F, E, S, C at the first beta, each level by its own error; first order."""
-        f, error = self.functions, self.energy_error + 1e-15 * float(abs(self.functions.energy[0]))
+        f, error = self.functions, self.functions.energy_error + 1e-15 * float(abs(self.functions.energy[0]))
         shift, spread = float(f.beta[0]) * error, 1 + float(np.sqrt(f.heat_capacity[0]))
         return shift * float(f.partition[0]), error, 2 * error * spread, shift * spread, 4 * shift * spread
 

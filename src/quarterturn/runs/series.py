@@ -304,7 +304,7 @@ def _facts(result: Series) -> tuple[tuple[str, str], ...]:
     if result.exact is not None:
         solved = format_value_error(result.exact, result.exact_error)
         facts.append(("exact", f"E_{result.level} = {solved}, solved for"))
-    facts.append(("errors", "the change that one, two and a sixth fewer coefficients make: estimates, no bounds"))
+    facts.append(("errors", "from the change that one, two and a sixth fewer coefficients make: estimates, no bounds"))
     return (*facts, *unit_facts(result.action))
 
 
