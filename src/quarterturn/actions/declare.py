@@ -16,6 +16,7 @@ from quarterturn.actions.circles import phase_of
 from quarterturn.actions.couplings import Assigned, assigned
 from quarterturn.actions.degrees import degrees
 from quarterturn.actions.dimensions import Dimensions, dimensions
+from quarterturn.actions.effort import limited
 from quarterturn.actions.expression import IMAGINARY, ZERO, Atom, Expression, PathAtom
 from quarterturn.actions.findings import check, phase_finding
 from quarterturn.actions.geometry import geometry_of
@@ -85,7 +86,9 @@ def declare(text: str, name: str = "action") -> Action:
         It can be read, but is no action, or one that is not available yet. Both say where.
     """
     try:
-        return _Declaration(text, name, parse(text)).action()
+        statements = parse(text)
+        with limited():
+            return _Declaration(text, name, statements).action()
     except RecursionError:  # brackets are counted by the parser; this is for towers of powers and the like
         raise NotationError("the formulas of this cell are nested too deeply to be read") from None
 

@@ -8,7 +8,6 @@ unit is the atom `I` and is reduced by I^2 = -1. Nothing here evaluates text.
 
 from __future__ import annotations
 
-import math
 from collections.abc import Callable, Iterable, Iterator, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
@@ -27,7 +26,9 @@ from quarterturn.actions.atoms import Power as Power
 from quarterturn.actions.atoms import Symbol as Symbol
 from quarterturn.actions.atoms import Tabulated as Tabulated
 from quarterturn.actions.atoms import monomial_key
+from quarterturn.actions.effort import checked_number, spend
 from quarterturn.actions.evaluation import atom_value, depends_on_path
+from quarterturn.actions.roots import rational_root
 from quarterturn.errors import ActionError
 
 TERM_LIMIT = 2000  # a product that expands to more terms is refused: no cell may hang the kernel
@@ -65,11 +66,13 @@ class Expression:
     def collect(pairs: Iterable[tuple[Monomial, Fraction]]) -> Expression:
         """Sum the coefficients of equal monomials and sort."""
         total: dict[Monomial, Fraction] = {}
-        for monomial, coefficient in pairs:
+        found = tuple(pairs)
+        spend(1 + len(found) // 3)
+        for monomial, coefficient in found:
             total[monomial] = total.get(monomial, Fraction(0)) + coefficient
             if len(total) > TERM_LIMIT:
                 raise ActionError(f"the expression expands to more than {TERM_LIMIT} terms")
-        kept = [(m, c) for m, c in total.items() if c]
+        kept = [(m, checked_number(c)) for m, c in total.items() if c]
         return Expression(tuple(sorted(kept, key=lambda item: monomial_key(item[0]))))
 
     @staticmethod
@@ -78,12 +81,21 @@ class Expression:
 
     @staticmethod
     def of(atom: Atom, power: int = 1) -> Expression:
+        if isinstance(atom, Compound):
+            spend(sum(part.size for part in atom.inner))
         return Expression(((((atom, power),), Fraction(1)),))
 
     # --- questions ------------------------------------------------------------------------------------------
     @cached_property
     def key(self) -> tuple[Any, ...]:
         return tuple((monomial_key(m), c) for m, c in self.terms)
+
+    @cached_property
+    def size(self) -> int:
+        """Atoms in the whole tree, those inside functions included, each counted where it stands."""
+        plain = sum(1 + len(monomial) for monomial, _ in self.terms)
+        inner = (part.size for m, _ in self.terms for a, _p in m if isinstance(a, Compound) for part in a.inner)
+        return plain + sum(inner)
 
     @cached_property
     def _hash(self) -> int:
@@ -131,6 +143,7 @@ class Expression:
     def __mul__(self, other: Expression) -> Expression:
         if len(self.terms) * len(other.terms) > 50 * TERM_LIMIT:
             raise ActionError(f"the expression expands to more than {TERM_LIMIT} terms")
+        spend(len(self.terms) * len(other.terms))
         pairs = []
         for left, a in self.terms:
             for right, b in other.terms:
@@ -139,7 +152,8 @@ class Expression:
         return Expression.collect(pairs)._reduced()
 
     def scaled(self, factor: int | Fraction) -> Expression:
-        return Expression(tuple((m, c * factor) for m, c in self.terms)) if factor else ZERO
+        spend(1 + len(self.terms) // 10)
+        return Expression(tuple((m, checked_number(c * factor)) for m, c in self.terms)) if factor else ZERO
 
     def __pow__(self, exponent: int) -> Expression:
         """Integer power; a negative power of a sum stays a `Power`."""
@@ -169,7 +183,7 @@ class Expression:
         if value is not None and value.denominator == 1:
             return self ** int(value)
         if value is not None:
-            root = _rational_root(self.constant, value)
+            root = rational_root(self.constant, value)
             if root is not None:
                 return Expression.number(root)
             unit = Fraction(1, value.denominator)
@@ -195,25 +209,41 @@ class Expression:
     # --- calculus -------------------------------------------------------------------------------------------
     def diff(self, atom: Atom) -> Expression:
         """Partial derivative with respect to an atom, by the chain rule through functions and powers."""
-        total = ZERO
-        for monomial, coefficient in self.terms:
+        pairs: list[tuple[Monomial, Fraction]] = []
+        direct, compound = self._places
+        for place in sorted({*direct.get(atom, ()), *compound}):
+            monomial, coefficient = self.terms[place]
             for inner, power in monomial:
                 slope = _derivative(inner, atom)
                 if not slope.terms:
                     continue
                 rest = tuple((a, p - (a == inner)) for a, p in monomial if p - (a == inner))
-                total = total + Expression(((rest, coefficient * power),)) * slope
-        return total
+                term = Expression(((rest, coefficient * power),))
+                pairs += (term if slope is ONE else term * slope).terms
+        return Expression.collect(pairs)
+
+    @cached_property
+    def _places(self) -> tuple[dict[Atom, list[int]], list[int]]:
+        """In which terms each atom stands, and in which there are atoms with expressions inside."""
+        direct: dict[Atom, list[int]] = {}
+        compound: list[int] = []
+        for place, (monomial, _) in enumerate(self.terms):
+            for atom, _power in monomial:
+                direct.setdefault(atom, []).append(place)
+            if any(isinstance(atom, Compound) for atom, _power in monomial):
+                compound.append(place)
+        return direct, compound
 
     def substitute(self, replace: Callable[[Atom], Expression | None]) -> Expression:
         """Rebuild with atoms replaced where `replace` gives an expression, inside functions and powers too."""
-        total = ZERO
+        pairs: list[tuple[Monomial, Fraction]] = []
         for monomial, coefficient in self.terms:
             term = Expression.number(coefficient)
             for atom, power in monomial:
-                term = term * (_substituted(atom, replace) ** power)
-            total = total + term
-        return total
+                new = _substituted(atom, replace)
+                term = term * (new if power == 1 else new**power)
+            pairs += term.terms
+        return Expression.collect(pairs)
 
     # --- numbers --------------------------------------------------------------------------------------------
     def evaluate(self, lookup: Mapping[Atom, Any] | Callable[[Atom], Any], module: Any) -> Any:
@@ -272,21 +302,6 @@ def chosen(branches: Branches, otherwise: Expression) -> Expression:
         for conditions, value in branches
     )
     return Expression.of(Cases(scaled, otherwise))
-
-
-def _rational_root(base: Fraction | None, exponent: Fraction) -> Fraction | None:
-    """base ** exponent where that is rational (square roots of squares), else None."""
-    if base is None or base < 0 or exponent.denominator != 2:
-        return None
-    top, bottom = _exact_root(base.numerator), _exact_root(base.denominator)
-    if top is None or bottom is None or (top == 0 and exponent < 0):
-        return None
-    return Fraction(top, bottom) ** exponent.numerator
-
-
-def _exact_root(value: int) -> int | None:
-    root = math.isqrt(value)
-    return root if root * root == value else None
 
 
 def _whole_power(atom: Atom, power: int) -> tuple[Expression, int] | None:

@@ -87,7 +87,10 @@ def _from_file(scope: Scope, data: Text) -> Points:
             raise scope.error(f"{data.value!r} is no file", data.span)
         if size > LARGEST_FILE:
             raise scope.error(f"{data.value} has {size} bytes; {LARGEST_FILE} are the most", data.span)
-        content = file.read_bytes()
+        with file.open("rb") as stream:
+            content = stream.read(LARGEST_FILE + 1)  # some files do not know how large they are
+        if len(content) > LARGEST_FILE:
+            raise scope.error(f"{data.value} has more than {LARGEST_FILE} bytes", data.span)
     except (OSError, ValueError) as trouble:
         reason = getattr(trouble, "strerror", None) or "no such name"
         raise scope.error(f"the file {data.value!r} can't be read: {reason}", data.span) from None

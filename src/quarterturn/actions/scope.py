@@ -8,7 +8,9 @@ from __future__ import annotations
 import math
 from collections.abc import Callable
 from dataclasses import dataclass, field
+from functools import lru_cache
 
+from quarterturn.actions.effort import spend
 from quarterturn.actions.expression import IMAGINARY, ONE, PI, Expression, Function, PathAtom, Symbol, apply
 from quarterturn.actions.indices import IndexRules, has_index
 from quarterturn.actions.model import Path
@@ -121,6 +123,7 @@ class Scope:
         return value
 
     def any_value(self, node: Node) -> Value | Slopes:
+        spend(1)
         try:
             return self._value(node)
         except QuarterturnError as trouble:
@@ -369,6 +372,7 @@ def entry_name(name: str, indices: list[int]) -> str:
     return f"{name}_{joint.join(map(str, indices))}"
 
 
+@lru_cache(maxsize=256)
 def _of_path(path: Path) -> Value:
     if path.kind != "complex":
         return _atoms(path.atoms)

@@ -6,6 +6,7 @@ import math
 from itertools import product as combinations
 from typing import TYPE_CHECKING
 
+from quarterturn.actions.effort import spend
 from quarterturn.actions.expression import Expression
 from quarterturn.actions.indices import contracted, has_index, mentioned
 from quarterturn.actions.values import Slopes, Value, added, derivative, moved, scaled
@@ -47,6 +48,7 @@ def summed(scope: Scope, node: Product | Quotient | Dot | Raised) -> Value:
 
 def with_bound(scope: Scope, node: Node, names: list[str], values: tuple[int, ...]) -> Value:
     """The value of a formula where some indices have values."""
+    spend(4)
     kept, scope.bound = scope.bound, {**scope.bound, **dict(zip(names, values, strict=True))}
     try:
         return scope.value(node)

@@ -8,7 +8,16 @@ from collections.abc import Iterator
 from quarterturn.errors import NotationError
 from quarterturn.notation.parse import read_formula
 from quarterturn.notation.source import Source
-from quarterturn.notation.symbols import NAME, canonical_name
+from quarterturn.notation.symbols import (
+    COMPLEX,
+    CONSTANTS,
+    FUNCTIONS,
+    MEASURES,
+    NAME,
+    PIECES,
+    RESERVED,
+    canonical_name,
+)
 from quarterturn.notation.tree import Assignment, Constraint, Dynamics, PathStatement, Statement
 from quarterturn.notation.vocabulary import Names, Piece, parts
 
@@ -63,16 +72,45 @@ def declarations(source: Source, piece: Piece, names: Names) -> Iterator[Stateme
         if form := FORM.match(body):
             yield Dynamics(form.group(1), read_formula(source, part.start + form.end(), part.end, names), span)
         elif assigned := ASSIGN.match(body):
-            parameters = tuple(canonical_name(p.strip()) for p in (assigned.group(2) or "").split(",") if p.strip())
+            _check_name(source, assigned, part)
+            parameters = _parameters(source, assigned, part)
             formula = read_formula(source, part.start + assigned.end(), part.end, names.inside(parameters))
             yield Assignment(_assigned_name(assigned), parameters, formula, span)
         elif declared := PATH.match(body):
+            _check_name(source, declared, part)
             yield _path(source, part, declared, names)
         elif (constrained := CONSTRAINT.match(body)) and constrained.group(1) == constrained.group(2):
             value = read_formula(source, part.start + constrained.end(), part.end, names)
             yield Constraint(canonical_name(constrained.group(1)), value, span)
         else:
             raise _no_statement(source, offset, end)
+
+
+def _check_name(source: Source, left: re.Match[str], part: Piece) -> None:
+    name = canonical_name(left.group(1))
+    start, end = part.start + left.start(1), part.start + left.end(1)
+    if name in RESERVED:
+        raise source.error(f"{name} is {RESERVED[name]} and can't be a name", start, end, f"{name}_1")
+    if name == "t" or (left.re is PATH and name in _coordinates(left.group(3))):
+        raise source.error(f"{name} is a coordinate and can't be a name here", start, end, f"{name}_1")
+
+
+def _parameters(source: Source, assigned: re.Match[str], part: Piece) -> tuple[str, ...]:
+    """The parameters of a definition. Raises NotationError for one that is no name, or stands twice."""
+    if assigned.group(2) is None:
+        return ()
+    start, end = part.start + assigned.start(2), part.start + max(assigned.end(2), assigned.start(2) + 1)
+    written = [p.strip() for p in assigned.group(2).split(",")]
+    found = tuple(canonical_name(p) for p in written)
+    for word, name in zip(written, found, strict=True):
+        if not re.fullmatch(NAME, word):
+            words = f"{word!r} is no parameter: " if word else ""
+            raise source.error(f"{words}a definition has names in its bracket, as in V(q) = …", start - 1, end + 1)
+        if name in RESERVED or any(name in table for table in (FUNCTIONS, CONSTANTS, MEASURES, COMPLEX, PIECES)):
+            raise source.error(f"{name} has a meaning of its own and can't be a parameter", start, end)
+        if found.count(name) > 1:
+            raise source.error(f"the parameter {name} stands twice", start, end)
+    return found
 
 
 def _coordinates(inside: str) -> tuple[str, ...]:
@@ -139,6 +177,9 @@ def _no_statement(source: Source, start: int, end: int) -> NotationError:
     number = re.search(r"=\s*([0-9]+),\s*$", source.text[max(start - 40, 0) : start])
     if number and re.fullmatch(r"[0-9]+", body):
         return source.error("a decimal number has a point", start - 1, end, f"{number.group(1)}.{body}")
+    if word := re.match(r"(?:lattice|measure|metric|units)\b", body):
+        words = f"{word.group()} begins a statement of its own: it stands on its own line, or behind ;"
+        return source.error(words, start, start + word.end())
     if other := OTHER_CONSTRAINT.match(body):
         name = other["length"] or other["square"] or other["indexed"]
         words = f"a unit vector is constrained by its dot product: {name}.{name} = 1"

@@ -36,6 +36,18 @@ PIECES: dict[str, str] = {
 CONSTANTS = ("pi",)
 COORDINATES = ("t", "x", "y", "z")
 GEOMETRY = ("vol", "beta")  # in measurements
+RESERVED: dict[str, str] = {
+    "mean": "the average over the whole lattice",
+    "energy": "the thermal energy",
+    "where": "a word of cases in braces",
+    "otherwise": "a word of cases in braces",
+    "and": "a word of cases in braces",
+    "mod": "a word of periods",
+    "L": "the Lagrangian",
+    "LE": "the Euclidean Lagrangian",
+    "SE": "the lattice action",
+    "H": "the Hamiltonian",
+}  # words that can't be names
 BOUNDARIES = ("periodic", "open", "antiperiodic", "twist", "fixed")
 WORDS = ("L", "LE", "H", "SE", "lattice", "measure", "metric", "units", "mod", "mean", "energy", "t", "d_t", "d")
 
