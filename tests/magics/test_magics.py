@@ -78,6 +78,14 @@ def test_a_series_takes_its_options_and_is_kept(person: Any, registry: Any) -> N
     assert "beta has no meaning for a series" in str(refused.error)
 
 
+def test_a_series_in_a_notebook_is_verified(person: Any, notebook_of: Callable[..., Path]) -> None:
+    person.gets("%%action cubic\nq(t)\nL = 1/2 q'^2 - 1/2 q^2 (1 - sqrt(g) q)^2\ng = 0.02")
+    person.gets("%%action quartic\nq(t)\nL = 1/2 q'^2 - 1/2 w^2 q^2 - lam q^4\nw = 1, lam = 0.1")
+    for name in ("cubic", "quartic"):  # one withheld and unresolved, one with errors
+        path = notebook_of(person.gets(f"%series {name} order=30"))
+        assert person.gets(f"%verify {path}").answer == "identical"
+
+
 def test_levels_take_their_options(person: Any) -> None:
     assert len(person.gets("%levels well count=3").energies) == 3
     assert person.gets("%levels well beta=2").beta == 2

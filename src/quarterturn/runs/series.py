@@ -34,6 +34,7 @@ from quarterturn.runs.unit_words import level as level_unit
 DEFAULT_ORDER = 50
 SHOWN_TERMS = 6  # of the series, in a report
 LONGEST_TERM = 100  # bits of a coefficient that is still shown
+FOLLOWED = 20.0  # times the distance of the first sum
 RECORDED = 200  # coefficients whose floats a record holds
 DETERMINED_TO = 1e-3  # relative error to which the growth must be known to be told
 
@@ -134,14 +135,18 @@ class Series:
         return Row(plain, typeset, found.value, found.error, self.exact, pull, remark=remark, unit=unit)
 
     def _curves(self) -> Iterator[Curve]:
-        stride = self.summation.stride
+        """Sums against order; where a diverging one has left the region of all the others, it is not followed."""
+        stride, unit = self.summation.stride, level_unit(self.action).name
+        first = self.summation.by_order["partial sum"][0]
+        best = self.exact if self.exact is not None else self.summation.sums["partial sum"].value
+        reach = FOLLOWED * max(abs(first - best), 1e-9 * abs(best))
         for method, values in self.summation.by_order.items():
-            if not values:
+            points = [(n, y) for n, y in enumerate(values) if abs(y - best) <= reach]
+            if not points:
                 continue
-            x = tuple(float(Fraction(n * stride, self.unit)) for n in range(len(values)))
+            x = tuple(float(Fraction(n * stride, self.unit)) for n, _ in points)
             exact = (self.exact,) * len(x) if self.exact is not None else ()
-            unit = level_unit(self.action).name
-            yield Curve(method, "", "order", x, tuple(values), exact=exact, style="orders", unit=unit)
+            yield Curve(method, "", "order", x, tuple(y for _, y in points), exact=exact, style="orders", unit=unit)
 
     def __repr__(self) -> str:
         return render_text(self.report())
