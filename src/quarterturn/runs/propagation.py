@@ -211,9 +211,7 @@ def propagate(
         raise RequestError(f"scheme must be 'second' or 'fourth', got {scheme!r}")
     couplings, lattice = split(action, keywords)
     examined(action, couplings, NO_SPECTRUM)
-    beta = lattice.pop("beta", None)
-    if lattice:
-        raise RequestError(f"{', '.join(lattice)} has no meaning here: steps are chosen until nothing changes")
+    beta = _only_beta(lattice)
     system = system_of(action.euclidean, couplings)
     context = Context.of(action, couplings, None)
     if start is None:
@@ -228,8 +226,15 @@ def propagate(
         return Propagated(context, system, _evolved(system, start, beta, SCHEMES[scheme]), beta)
     if end is None:
         raise RequestError("end is missing: from a point, the propagator leads to another, end=…")
-    a, b = (point(word, x, system.degrees) for word, x in (("start", start), ("end", end)))
+    a, b = point("start", start, system.degrees), point("end", end, system.degrees)
     return BetweenEnds(context, between_ends(system, b, a, beta, SCHEMES[scheme]), SCHEMES[scheme], (b, a), beta)
+
+
+def _only_beta(lattice: dict[str, float]) -> float | None:
+    others = [word for word in lattice if word != "beta"]
+    if others:
+        raise RequestError(f"{', '.join(others)} has no meaning here: steps are chosen until nothing changes")
+    return lattice.get("beta")
 
 
 def _evolved(system: System, start: Start, beta: float, scheme: Scheme) -> Evolved:
