@@ -17,6 +17,7 @@ from quarterturn.errors import (
 )
 
 if TYPE_CHECKING:
+    from quarterturn.notation.reference import reference
     from quarterturn.runs.declaration import action
     from quarterturn.runs.propagation import propagate
     from quarterturn.runs.saddle import saddle
@@ -38,6 +39,7 @@ __all__ = [
     "action",
     "levels",
     "propagate",
+    "reference",
     "saddle",
     "sample",
     "series",
@@ -45,6 +47,7 @@ __all__ = [
 ]
 
 _ROOMS = {
+    "reference": "quarterturn.notation.reference",
     "action": "quarterturn.runs.declaration",
     "sample": "quarterturn.runs.sampling",
     "levels": "quarterturn.runs.spectrum",

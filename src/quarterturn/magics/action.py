@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+import inspect
 from typing import TYPE_CHECKING
 
 from IPython.core.magic import Magics, cell_magic, magics_class
 
 from quarterturn.magics.registry import session
 from quarterturn.magics.words import NAME, NOT_NAMES, read, required_name
+from quarterturn.notation.reference import reference
 
 if TYPE_CHECKING:
     from quarterturn.runs.declaration import DeclaredAction
@@ -32,15 +34,6 @@ class ActionMagic(Magics):
         NAME          what %sample, %levels and %saddle know the action by
         as VARIABLE   also put the action into a Python variable, for qt.sample(VARIABLE, ...)
 
-        Statements
-        ----------
-        q(t)   r[3](t)   theta(t) mod 2 pi       paths, vectors, angles
-        L = ...   LE = ...   H = ...             real time; imaginary time; a Hamiltonian in q and p
-        V(q) = ...                               a local definition
-        lam = 0.1, w = 1                         couplings and their defaults
-        lattice 200, a = 0.1                     sites and spacing; or: lattice beta = 20, a = 0.1
-        measure <q^2>, <q(t) q(0)>, gap(q)       numbers, curves in t, energy gaps; energy; G = <q^4> - 3 <q^2>^2
-
         Example
         -------
             %%action quartic
@@ -49,6 +42,8 @@ class ActionMagic(Magics):
             w = 1, lam = 0.1
             lattice 200, a = 0.1
             measure <q^2>, <q(t) q(0)>, gap(q)
+
+        The notation on one page, which qt.reference() shows as a table
         """
         words = read("%%action", line)
         name = required_name(words, "the name of the action", "the cell begins with %%action NAME")
@@ -62,3 +57,6 @@ class ActionMagic(Magics):
         declared = action(cell, name.text)
         session.declare(declared, words, self.shell)
         return declared
+
+
+ActionMagic.action.__doc__ = f"{inspect.getdoc(ActionMagic.action)}\n\n{reference()}\n"

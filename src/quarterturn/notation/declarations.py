@@ -11,6 +11,7 @@ from quarterturn.notation.source import Source
 from quarterturn.notation.symbols import (
     COMPLEX,
     CONSTANTS,
+    FORMS,
     FUNCTIONS,
     MEASURES,
     NAME,
@@ -22,7 +23,6 @@ from quarterturn.notation.tree import Assignment, Constraint, Dynamics, PathStat
 from quarterturn.notation.vocabulary import Names, Piece, parts
 
 MOST_COMPONENTS = 64
-FORMS = ("L", "LE", "H", "SE")
 PATH = re.compile(rf"\s*({NAME})\s*(?:\[\s*([0-9]+)\s*\])?\s*\(([^()]*)\)\s*")
 GROUP = r"(?:su|u|so|sp|SU|U|SO|SP|Sp)\s*\(\s*[0-9]+\s*\)"
 TAIL = re.compile(
@@ -36,7 +36,7 @@ OTHER_CONSTRAINT = re.compile(
     rf"\s*(?:\|\s*(?P<length>{NAME})\s*\|(?:\^2|²)?|(?P<square>{NAME})(?:\^2|\*\*2|²)|"
     rf"(?P<indexed>{NAME})\[(?P<i>\w+)\]\s*(?P=indexed)\[(?P=i)\])\s*=(?!=)"
 )
-FORM = re.compile(r"\s*(LE|L|H|SE)\s*=(?!=)")
+FORM = re.compile(rf"\s*({'|'.join(FORMS)})\s*=(?!=)")
 PYTHON = re.compile(r"(import|from|def|for|if|while|return|print|lambda|class|with|try)\b(?!\s*[=(])")
 BEFORE = re.compile(
     rf"(?P<word>complex|real|field|path|vector|angle|scalar)\s+(?P<path>{NAME}(?:\[[0-9]+\])?\s*\([^()]*\))"

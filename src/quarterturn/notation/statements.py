@@ -12,13 +12,13 @@ from quarterturn.notation.lattice_words import lattice
 from quarterturn.notation.lines import pieces, without_comments
 from quarterturn.notation.parse import read_formula
 from quarterturn.notation.source import Source
-from quarterturn.notation.symbols import BOUNDARIES, NAME
+from quarterturn.notation.symbols import BOUNDARIES, KEYWORDS, NAME
 from quarterturn.notation.tree import Dynamics, Measure, MeasureItem, Metric, Statement, Units
 from quarterturn.notation.vocabulary import Names, Piece, parts
 
 LONGEST = 20_000
 KEYWORD = re.compile(
-    rf"\s*(lattice|measure|metric|units|{'|'.join(BOUNDARIES)})\b(?!\s*=(?!=))(?!\s*\(\s*{NAME}\s*(?:,\s*{NAME}\s*)*\)\s*(?:=|\Z))"
+    rf"\s*({'|'.join((*KEYWORDS, *BOUNDARIES))})\b(?!\s*=(?!=))(?!\s*\(\s*{NAME}\s*(?:,\s*{NAME}\s*)*\)\s*(?:=|\Z))"
 )
 
 

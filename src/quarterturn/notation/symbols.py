@@ -36,20 +36,37 @@ PIECES: dict[str, str] = {
 CONSTANTS = ("pi",)
 COORDINATES = ("t", "x", "y", "z")
 GEOMETRY = ("vol", "beta")  # in measurements
+FORMS: dict[str, str] = {
+    "L": "Lagrangian (density) in real time, kinetic minus potential energy",
+    "LE": "Lagrangian (density) in imaginary time, taken as it stands",
+    "SE": "lattice action per site, taken as it stands",
+    "H": "Hamiltonian of the paths and their momenta p (p_x, p_y for several), at most quadratic in them",
+}
+KEYWORDS: dict[str, str] = {
+    "lattice": "sites and spacings of the box in imaginary time, and what happens at its ends",
+    "measure": "what to report",
+    "metric": "the signature, time first; mostly minus where there is none",
+    "units": "what numbers count in; natural, hbar = c = 1, where there is none",
+}
+BOUNDARIES: dict[str, str] = {
+    "periodic": "the last site is the neighbour of the first (the default)",
+    "open": "the ends are free",
+    "antiperiodic": "the field changes its sign from the last site to the first",
+    "twist": "the field turns by an angle from the last site to the first: twist x = 0.3",
+    "fixed": "the ends have given values: fixed q(0) = -1, q(beta) = 1",
+}
 RESERVED: dict[str, str] = {
     "mean": "the average over the whole lattice",
     "energy": "the thermal energy",
     "where": "a word of cases in braces",
     "otherwise": "a word of cases in braces",
     "and": "a word of cases in braces",
-    "mod": "a word of periods",
+    "mod": "the word before a period",
     "L": "the Lagrangian",
     "LE": "the Euclidean Lagrangian",
     "SE": "the lattice action",
     "H": "the Hamiltonian",
 }  # words that can't be names
-BOUNDARIES = ("periodic", "open", "antiperiodic", "twist", "fixed")
-WORDS = ("L", "LE", "H", "SE", "lattice", "measure", "metric", "units", "mod", "mean", "energy", "t", "d_t", "d")
 
 # Greek letters: typed letter -> name; several spellings of one name
 LETTERS: dict[str, str] = {
