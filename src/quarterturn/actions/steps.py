@@ -28,7 +28,7 @@ def turn_steps(action: Action) -> tuple[Step, ...]:
                       action.lagrangian),)  # fmt: skip
     turned = action.lagrangian.substitute(_quarter)
     dropped = -turned
-    measure = "t" if len(action.coordinates) == 1 else "d^D x"
+    measure = "dt" if len(action.coordinates) == 1 else "d^Dx"
     found = [
         _step(_as_read(action), "L", action.lagrangian),
         _step(

@@ -120,7 +120,7 @@ class FieldObservables:
         extents = self.target.lattice.extents
         f = self._local(bracket.groups[place][1], phi, p)
         g = self._product(index, bracket, phi, p)
-        if SUMMED in bracket.places[place]:
+        if not bracket.places or SUMMED in bracket.places[place]:
             f = jnp.sum(f.reshape(*f.shape[:-1], extents[0], -1), axis=-1)
             g = jnp.sum(g.reshape(*g.shape[:-1], extents[0], -1), axis=-1)
             a, b = jnp.fft.rfft(f, axis=-1), jnp.fft.rfft(g, axis=-1)

@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 
 from quarterturn.actions.model import EuclideanAction, Measurement
 from quarterturn.errors import SpectrumError
-from quarterturn.estimates.estimate import Estimate
+from quarterturn.estimates.estimate import GOOD, Estimate
 from quarterturn.imaginary.binding import local_function, of_paths, one_path, problem_of
 from quarterturn.imaginary.coupled_transfer import CoupledTransfer
 from quarterturn.imaginary.solve import AnyTransfer, spectrum_of
@@ -144,12 +144,18 @@ def contradictions(labels: Sequence[str], estimates: Sequence[Estimate]) -> tupl
     return tuple(words)
 
 
-def contamination(beta: float, transfer: AnyTransfer | None) -> tuple[str, ...]:
+def lowest_gap(transfer: AnyTransfer | None, measured: Sequence[Estimate]) -> float | None:
+    """The lowest excitation: from the transfer matrix, else the smallest gap that was measured, else None."""
+    if transfer is not None and len(transfer.energies) > 1:
+        return max(float(transfer.energies[1] - transfer.energies[0]), 0.0)
+    return min((e.value for e in measured if e.state == GOOD and e.value > 0), default=None)
+
+
+def contamination(beta: float, gap: float | None) -> tuple[str, ...]:
     """Thermal admixture to vacuum quantities."""
-    if transfer is None or len(transfer.energies) < 2:
+    if gap is None:
         return ()
-    gap = float(transfer.energies[1] - transfer.energies[0])
-    weight = math.exp(-beta * max(gap, 0.0))
+    weight = math.exp(-beta * gap)
     if weight < CONTAMINATION:
         return ()
     return (

@@ -241,5 +241,16 @@ class FieldSession(Session):
             ("moves accepted", moves),
             ("<exp(-dH)>", f"{mean:.5f} ± {error:.5f}"),
             ("stopped", f"{REASONS[chain.stop]}, {chain.seconds:.1f} s"),
+            ("discretisation", self.discretisation()),
+            *self.vacuum(),
             *unit_facts(self.action),
         )
+
+    def discretisation(self) -> str:
+        """What the links are, and the order of the leading lattice artefact."""
+        euclidean = self.action.euclidean
+        if euclidean.links:
+            return "the lattice action as it was declared"
+        if euclidean.dimension == 1 and euclidean.spheres:
+            return "-n.n' on each link, leading artefact of order a: the sphere's measure is not corrected for"
+        return "forward differences on each link, leading artefact of order a^2"

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import time as clock
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
@@ -64,6 +65,7 @@ class Session:
     met: bool = False
     basins: doubts.Basins | None = None
     functionals: dict[str, Estimate] = field(default_factory=dict)
+    gap: float | None = None  # the lowest excitation, as far as it is known
 
     # --- before ---------------------------------------------------------------------------------------------
     def check_labels(self) -> None:
@@ -185,6 +187,7 @@ class Session:
             )
         evaluator, constants = self.evaluator(chain), self.constants()
         gaps = {m.label: evaluator.gap(m) for m in self.action.measurements if m.kind == "gap"}
+        self.gap = doubts.lowest_gap(self.exact.transfer, [result.estimate for result in gaps.values()])
         numbers: dict[str, Estimate] = {}
         phase = evaluator.phase()
         if phase is not None:
@@ -258,13 +261,21 @@ class Session:
             *error_warnings(evaluator.numbers, list(primary.values()), list(primary)),
             *doubts.energy_violation(chain),
             *doubts.contradictions(list(judged), list(judged.values())),
-            *doubts.contamination(self.settings.beta, self.exact.transfer),
+            *doubts.contamination(self.settings.beta, self.gap),
             *doubts.artefacts(measurements, judged, euclidean, couplings, self.settings.beta),
         ]
         if self.layout.is_complex:
             phase = numbers["average phase"]
             words.insert(0, f"the weight is complex: the numbers are reweighted by a phase whose average is {phase}")
         return tuple(words), judged
+
+    def vacuum(self) -> tuple[tuple[str, str], ...]:
+        """How far the lattice is from zero temperature."""
+        if self.gap is None:
+            return (("temperature", "the gap isn't known here: measure gap(…) for the size of exp(-beta gap)"),)
+        whence = "of the transfer matrix" if self.exact.transfer is not None else "measured"
+        weight = math.exp(-self.settings.beta * self.gap)
+        return (("temperature", f"exp(-beta gap) = {weight:.2g}, with the lowest gap {self.gap:.4g} {whence}"),)
 
     def facts(self, chain: Chain) -> tuple[tuple[str, str], ...]:
         """The method, line by line."""
@@ -286,7 +297,7 @@ class Session:
             ("<exp(-dH)>", f"{mean:.5f} ± {error:.5f}"),
             ("stopped", f"{REASONS[chain.stop]}, {chain.seconds:.1f} s"),
         ]
-        facts += unit_facts(self.action)
+        facts += [*self.vacuum(), *unit_facts(self.action)]
         if self.exact.reason:
             facts.append(("exact column", self.exact.reason))
         return tuple(facts)

@@ -204,7 +204,7 @@ def _continuum(
 ) -> Levels:
     if beta is not None and not beta > 0:
         raise RequestError(f"beta must be positive, got {beta:g}")
-    longest = beta or (action.geometry.beta if action.geometry else 20.0)
+    longest = beta or (action.geometry.beta if action.geometry and action.geometry.sites else 20.0)
     times = np.linspace(0, longest / 2, CURVE_POINTS)
     view = _View(action, couplings, spectrum, beta, times)
     numbers, curves = {}, {}
