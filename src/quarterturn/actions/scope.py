@@ -16,7 +16,7 @@ from quarterturn.actions.indices import IndexRules, has_index
 from quarterturn.actions.model import Path
 from quarterturn.actions.pieces import cases, table
 from quarterturn.actions.summation import along, component, gradient, neighbour, primed, sum_over, summed
-from quarterturn.actions.unknown import applied_to_nothing, closest
+from quarterturn.actions.unknown import applied_to_nothing, closest, refuse_other_places
 from quarterturn.actions.values import (
     Slopes,
     Value,
@@ -320,6 +320,7 @@ class Scope:
     def call(self, node: Call) -> Value:
         name = node.name
         if name in self.paths or name in self.momenta or name in self.sources:
+            refuse_other_places(self, node)
             return self.name(Name(name, node.span))
         if name in (*COMPLEX, "abs") and len(node.arguments) == 1:
             return self.of_complex(name, self.value(node.arguments[0]))

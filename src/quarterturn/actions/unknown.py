@@ -27,6 +27,15 @@ def applied_to_nothing(scope: Scope, node: Call) -> ActionError:
     return scope.error(f"{node.name}(…) has no meaning here", node.span)
 
 
+def refuse_other_places(scope: Scope, node: Call) -> None:
+    """In an action a field stands at the point (t, x): a number in its bracket would be lost."""
+    written = tuple(a.name if isinstance(a, Name) else "" for a in node.arguments)
+    if scope.average is None and written != scope.coordinates:
+        place = f"{node.name}({', '.join(scope.coordinates)})"
+        words = f"in an action {node.name} is taken at {place}, and its bracket holds nothing else"
+        raise scope.error(words, node.span, node.name)
+
+
 def _special(scope: Scope, node: Name) -> ActionError | None:
     name, first = node.name, next(iter(scope.paths), "q")
     if name in FUNCTIONS and follows(scope.text, node.span).startswith(("^", "²", "³")):

@@ -20,6 +20,7 @@ def opening(source: Source, found: list[Lexeme], position: int, end: int, names:
         sign = "+" if step.group(1) == "+" else "-"
         return "NEIGHBOUR", sign + canonical_name(step.group(2)), step.end()
     if found and found[-1].kind == "NAME" and names.is_call(found[-1].value, rest):
+        _refuse_two_readings(source, found[-1], position, end, names)
         return "CALL_OPEN", "(", position + 1
     path = _derived(found)
     if path and names.is_call(path, rest):
@@ -31,6 +32,15 @@ def opening(source: Source, found: list[Lexeme], position: int, end: int, names:
     ):
         return "AT_OPEN", "(", position + 1
     return "OPEN", "(", position + 1
+
+
+def _refuse_two_readings(source: Source, name: Lexeme, position: int, end: int, names: Vocabulary) -> None:
+    """q (1/2): a path at a time, or a factor? Raises NotationError."""
+    numbers = re.compile(r"\([\s0-9.+\-−–/]*\)").match(source.text, position, end)
+    if numbers and name.end < position and names.is_field(name.value):
+        time = numbers.group()
+        words = f"{name.value} {time} can be read as {name.value} at a time and as a product: leave no blank for a time"
+        raise source.error(words, name.start, numbers.end(), f"{name.value}{time} or {time} {name.value}")
 
 
 def _owner(found: list[Lexeme]) -> str:

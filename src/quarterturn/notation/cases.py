@@ -25,20 +25,37 @@ def read_cases(source: Source, start: int, end: int, names: Vocabulary) -> Cases
     for begin, stop in parts[:-1]:
         where = _word(source.text, begin, stop, "where")
         if where is None:
+            _refuse_if(source, begin, stop)
             raise _no_case(source, begin, stop, "each case says where it holds")
         value = read_formula(source, begin, where.start(), names)
         pieces.append((value, tuple(_conditions(source, where.end(), stop, names))))
     begin, stop = parts[-1]
     last = _word(source.text, begin, stop, "otherwise")
     if last is None or source.text[last.end() : stop].strip():
+        _refuse_else(source, begin, stop)
         raise _no_case(source, begin, stop, "the last case ends in 'otherwise'")
+    if not pieces and (inner := _word(source.text, begin, stop, "where")):
+        raise _no_case(source, inner.start(), stop, "a comma is missing between the cases")
     if not pieces:
         raise source.error(f"a single case needs no braces; several are written {EXAMPLE}", start, end)
     return Cases(tuple(pieces), read_formula(source, begin, last.start(), names), source.span(start, end))
 
 
 def _no_case(source: Source, begin: int, stop: int, words: str) -> NotationError:
-    return source.error(f"{words}, as in {EXAMPLE}", min(begin, stop - 1), stop)
+    body = source.text[begin:stop]
+    start = min(begin + len(body) - len(body.lstrip()), stop - 1)
+    return source.error(f"{words}, as in {EXAMPLE}", start, max(begin + len(body.rstrip()), start + 1))
+
+
+def _refuse_if(source: Source, begin: int, stop: int) -> None:
+    for word in ("if", "when", "for"):
+        if found := _word(source.text, begin, stop, word):
+            raise source.error("a case says where it holds", found.start(), found.end(), "where")
+
+
+def _refuse_else(source: Source, begin: int, stop: int) -> None:
+    if found := re.compile(r"\b(?:else|elsewhere|other)\b").search(source.text, begin, stop):
+        raise source.error("the last case ends in 'otherwise'", found.start(), found.end(), "otherwise")
 
 
 def _split(text: str, start: int, end: int) -> Iterator[tuple[int, int]]:
@@ -67,6 +84,9 @@ def _conditions(source: Source, start: int, end: int, names: Vocabulary) -> Iter
 
 
 def _chain(source: Source, start: int, end: int, names: Vocabulary) -> Iterator[Comparison]:
+    if odd := re.compile(r"\bor\b|(?<![<>])=+|≠|!=").search(source.text, start, end):
+        words = "conditions are comparisons with <, <=, > or >=, joined by 'and'; for 'or', write one more case"
+        raise source.error(words, odd.start(), odd.end())
     signs = list(SIGN.finditer(source.text, start, end))
     if not signs:
         raise _no_case(source, start, end, "a condition compares two numbers")

@@ -30,6 +30,15 @@ def unexpected(source: Source, tokens: list[Lexeme], place: int) -> NotationErro
             words = f"this bracket is never closed: {partner} is missing"
             return source.error(words, opened.start, opened.end, _closed(source, tokens, partner))
         return source.error("the formula ends too early", start, end)
+    if opened and opened.kind == "SQUARE_OPEN" and here.kind not in ("COMMA", *CLOSERS):
+        words = "an index is a number or a letter, and ] closes its bracket, as in r[1] and r[a]"
+        return source.error(words, opened.start, end)
+    if here.kind == "ANGLE_CLOSE" and not opened:
+        words = (
+            f"{written!r} closes no bracket: an expectation value begins with <, and a comparison stands in a case, "
+            "as in {q^2 where q > 1, q otherwise}"
+        )
+        return source.error(words, start, end)
     if here.kind in CLOSERS and not opened:
         return source.error(f"{written!r} closes a bracket that was never opened", start, end)
     if here.kind in CLOSERS and opened and OPENERS[opened.kind] != CLOSERS[here.kind]:

@@ -83,7 +83,7 @@ def declarations(source: Source, piece: Piece, names: Names) -> Iterator[Stateme
             value = read_formula(source, part.start + constrained.end(), part.end, names)
             yield Constraint(canonical_name(constrained.group(1)), value, span)
         else:
-            raise _no_statement(source, offset, end)
+            raise _no_statement(source, offset, end, names)
 
 
 def _check_name(source: Source, left: re.Match[str], part: Piece) -> None:
@@ -162,7 +162,7 @@ def _strange_tail(source: Source, declared: re.Match[str], start: int, end: int)
     return source.error(words, start, end)
 
 
-def _no_statement(source: Source, start: int, end: int) -> NotationError:
+def _no_statement(source: Source, start: int, end: int, names: Names) -> NotationError:
     body = source.text[start:end]
     if not body.strip():
         return source.error("a declaration is missing between the commas", max(start - 1, 0), max(end, start + 1))
@@ -180,16 +180,17 @@ def _no_statement(source: Source, start: int, end: int) -> NotationError:
     if word := re.match(r"(?:lattice|measure|metric|units)\b", body):
         words = f"{word.group()} begins a statement of its own: it stands on its own line, or behind ;"
         return source.error(words, start, start + word.end())
-    if other := OTHER_CONSTRAINT.match(body):
-        name = other["length"] or other["square"] or other["indexed"]
+    other = OTHER_CONSTRAINT.match(body)
+    name = canonical_name(other["length"] or other["square"] or other["indexed"]) if other else ""
+    if names.is_vector(name):
         words = f"a unit vector is constrained by its dot product: {name}.{name} = 1"
         return source.error(words, start, end, f"{name}.{name} = 1")
     if before := BEFORE.match(body):
         behind = before["word"] if before["word"] == "complex" else ""
         words = "a path is declared by its name and its coordinates; what kind it is stands behind them"
         return source.error(words, start, end, f"{before['path']} {behind}".rstrip())
-    if re.match(r"(?:L_E|L_e|Le|S_E)\s*\(?", body):
-        return source.error("the Euclidean Lagrangian is called LE: LE = …", start, end)
+    if colon := re.match(rf"({NAME})\s*:=?", body):
+        return source.error("a name is given by =", start, start + colon.end(), f"{colon.group(1)} = …")
     if re.match(r"'''|\"|\\", body):
         return source.error("a cell of notation holds neither texts nor LaTeX: # starts a comment", start, start + 1)
     if "=" in body:

@@ -25,6 +25,7 @@ NUMBERED = re.compile(rf"{STARTS}[d∂]_(?P<index>[0-3]){ENDS}")
 LOW_INDEX = re.compile(rf"{STARTS}(?P<name>{NAME})")
 HIGH_INDEX = re.compile(rf"{STARTS}(?P<name>{NAME})\^(?P<index>[A-Za-z])(?![A-Za-z0-9_(\[])")
 TIME_IN_SQUARES = re.compile(rf"{STARTS}(?P<name>{NAME})\[\s*(?P<inside>t(?:\s*,\s*[xyz])*)\s*\]")
+FUNCTIONAL = re.compile(rf"{STARTS}log[ ]{{1,3}}Z{ENDS}(?!\s*\[)")
 EXPONENTIAL = re.compile(rf"{STARTS}e(?:\^|\*\*)")
 STAR = re.compile(rf"{STARTS}(?P<name>{NAME})\*(?=\s|\)|$)")
 BRACES = re.compile(rf"(?:{STARTS}(?P<base>[A-Za-z][A-Za-z0-9]*))?(?P<sign>[_^])\{{(?P<inside>[^{{}}]*)\}}?")
@@ -123,6 +124,14 @@ def _exponential(source: Source, start: int, end: int, names: Vocabulary) -> Not
     )
 
 
+def _functional(source: Source, start: int, end: int, names: Vocabulary) -> NotationError | None:
+    if names.is_given("Z") or names.is_field("Z"):
+        return None
+    match = FUNCTIONAL.search(source.text, start, end)
+    words = "the generating functional names its source"
+    return source.error(words, match.start(), match.end(), "log Z[J]") if match else None
+
+
 def _star(source: Source, start: int, end: int, names: Vocabulary) -> NotationError | None:
     """psi* psi of a complex psi: the conjugate, or a product?"""
     for match in STAR.finditer(source.text, start, end):
@@ -171,6 +180,6 @@ def _function_power(source: Source, start: int, end: int, names: Vocabulary) -> 
 
 
 FINDERS: tuple[Finder, ...] = (
-    _braces, _leibniz, _bare_index, _numbered, _time_in_squares, _low_index, _high_index, _exponential, _star,
-    _function_power, _decimal_comma,
+    _braces, _leibniz, _bare_index, _numbered, _time_in_squares, _low_index, _high_index, _exponential, _functional,
+    _star, _function_power, _decimal_comma,
 )  # fmt: skip

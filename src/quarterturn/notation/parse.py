@@ -131,6 +131,9 @@ class _Builder:
         kind, span, children = str(tree.data), self.span(tree), tree.children
         match kind:
             case "number":
+                top, slash, bottom = str(children[0]).partition("/")  # ½ is 1/2
+                if slash:
+                    return Quotient(Number(Fraction(top), span), Number(Fraction(bottom), span), False, span)
                 return Number(self.number(children[0]), span)
             case "name":
                 return Name(str(children[0]), span)

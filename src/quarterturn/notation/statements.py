@@ -77,6 +77,7 @@ def _statements(source: Source, piece: Piece, names: Names) -> Iterator[Statemen
 
 def _units(source: Source, start: int, end: int) -> tuple[str, ...]:
     """The names of the units as they are written, one blank where there were several."""
+    start, end = _trimmed(source.text, start, end)
     named = [part.strip() for part in source.text[start:end].split(",")]
     if not all(named) and named != [""]:
         raise source.error("a unit is missing between the commas, as in units amu, angstrom, 1/cm", start, end)
