@@ -150,7 +150,8 @@ def test_the_force_is_the_slope_of_the_action() -> None:
         target = FieldTarget(lattice, tuple(sorted(couplings)))
         with double():
             p = target.parameters(couplings, geometry.spacings)
-            phi = jnp.asarray(np.random.default_rng(1).normal(size=(2, target.components, target.sites)))
+            normals = np.random.default_rng(1).normal(size=(target.components, target.sites, 2))
+            phi = tuple(jnp.asarray(f) for f in normals)
             slope = jax.grad(lambda x, p=p, target=target: jnp.sum(target.action(x, p)))(phi)
             assert np.allclose(slope, target.force(phi, p), atol=1e-11), text
 

@@ -4,6 +4,10 @@ From the continuum, S = sum_x cell [ V(phi) + sum_mu 1/2 K^mu_ij D_mu phi_i D_mu
 D_mu phi = (phi(x + mu) - phi(x)) / a_mu the forward difference and B at the midpoint of the link; the leading artefact
 is of order a^2 (Montvay and Muenster, Quantum Fields on a Lattice, 1994, section 2.1). The square of the difference of
 two angles becomes the periodic 2 (1 - cos), in units of a turn. A lattice action SE is taken as it stands.
+
+On a closed direction squares are multiplied out: phi(x + mu)^2 and phi(x)^2 have the same sum, so that only the product
+of neighbours is left in the link, and of unit vectors nothing else at all. Cosines of differences become products of
+cosines and sines of single sites, each of which is computed once.
 """
 
 from __future__ import annotations
@@ -11,7 +15,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from functools import cached_property
 
-from quarterturn.actions.expression import PI, ZERO, Atom, Expression, PathAtom, Symbol, apply
+from quarterturn.actions.expression import PI, ZERO, Atom, Expression, Function, PathAtom, Symbol, apply
 from quarterturn.actions.model import Edge, EuclideanAction
 from quarterturn.errors import ActionError, RequestError
 
@@ -41,20 +45,54 @@ class FieldLattice:
             total *= n
         return total
 
+    @property
+    def symmetries(self) -> tuple[tuple[int, ...], ...]:
+        """Sign vectors that leave the action and its edges unchanged: a twist turns re and im into each other."""
+        twisted = any(edge.kind == "twist" for edge in self.edges)
+        pairs = range(0, len(self.euclidean.variables) - 1, 2)
+        kept = [s for s in self.euclidean.symmetries if not twisted or all(s[k] == s[k + 1] for k in pairs)]
+        return tuple(kept)
+
     @cached_property
     def onsite(self) -> Expression:
         """S of one site, without its links."""
         if self.euclidean.links:
             return self.euclidean.potential
-        return Expression.of(CELL) * self.euclidean.potential
+        total = Expression.of(CELL) * self.euclidean.potential
+        for mu, edge in enumerate(self.edges):
+            if edge.kind != "open":
+                total = total + self._ends(mu)
+        return total
 
     @cached_property
     def links(self) -> tuple[Expression, ...]:
         """S of the link that leads forwards from a site, per direction, in the variables and their `moved(mu)`."""
         if self.euclidean.links:
-            return self.euclidean.links
-        matrices = (self.euclidean.mass, *self.euclidean.stiffness)
-        return tuple(self._stretched(mu, matrix) + self._tilted(mu) for mu, matrix in enumerate(matrices))
+            return tuple(single_sites(link) for link in self.euclidean.links)
+        found = []
+        for mu, edge in enumerate(self.edges):
+            link = self._stretched(mu) + self._tilted(mu)
+            if edge.kind == "open":
+                ends = self._ends(mu)
+                link = link + (ends + ends.substitute(lambda a, mu=mu: _forwards(a, mu))) * HALF  # type: ignore[misc]
+            found.append(link)
+        return tuple(found)
+
+    def _form(self, mu: int) -> tuple[tuple[Expression, ...], ...]:
+        return self.euclidean.mass if mu == 0 else self.euclidean.stiffness[mu - 1]
+
+    def _ends(self, mu: int) -> Expression:
+        """K_ij phi_i phi_j / a^2 of one site: what the squares of both links of a direction leave there.
+
+        Of a unit vector whose components are equally stiff it is a number, and left out.
+        """
+        total, form = ZERO, self._form(mu)
+        equal = {i for ball in self.euclidean.spheres if _round(form, ball) for i in ball}
+        for i, v in enumerate(self.euclidean.variables):
+            for j, w in enumerate(self.euclidean.variables):
+                if form[i][j].terms and self.euclidean.periods[i] is None and not (i == j and i in equal):
+                    total = total + form[i][j] * Expression.of(v) * Expression.of(w)
+        return total * Expression.of(CELL) * Expression.of(spacing_symbol(mu), -2)
 
     @cached_property
     def phase(self) -> Expression:
@@ -68,28 +106,32 @@ class FieldLattice:
     def _step(self, v: PathAtom, mu: int) -> Expression:
         return Expression.of(v.moved(mu)) - Expression.of(v)
 
-    def _stretched(self, mu: int, matrix: tuple[tuple[Expression, ...], ...]) -> Expression:
-        total = ZERO
+    def _stretched(self, mu: int) -> Expression:
+        """The products of neighbours in 1/2 K_ij D phi_i D phi_j; of angles the whole, periodic."""
+        total, form = ZERO, self._form(mu)
         for i, v in enumerate(self.euclidean.variables):
             for j, w in enumerate(self.euclidean.variables):
-                if not matrix[i][j].terms:
+                if not form[i][j].terms:
                     continue
-                if i != j and (self.euclidean.periods[i] is not None or self.euclidean.periods[j] is not None):
+                angles = self.euclidean.periods[i] is not None, self.euclidean.periods[j] is not None
+                if i != j and any(angles):
                     raise ActionError(
                         "a kinetic term that mixes an angle with another field has no periodic difference"
                     )
-                total = total + matrix[i][j] * (
-                    self._wrapped(i, mu) if i == j else self._step(v, mu) * self._step(w, mu)
-                )
+                if any(angles):
+                    total = total + form[i][j] * self._wrapped(i, mu)
+                else:
+                    across = Expression.of(v) * Expression.of(w.moved(mu)) + Expression.of(v.moved(mu)) * Expression.of(w)
+                    total = total - form[i][j] * across
         return total * HALF * Expression.of(CELL) * Expression.of(spacing_symbol(mu), -2)
 
     def _wrapped(self, i: int, mu: int) -> Expression:
-        """The squared difference of neighbours; periodic for an angle."""
-        step, period = self._step(self.euclidean.variables[i], mu), self.euclidean.periods[i]
-        if period is None:
-            return step * step
+        """2 (1 - cos) of the difference of two angles in units of a turn."""
+        period = self.euclidean.periods[i]
+        assert period is not None
         turn = Expression.of(PI).scaled(2) * period.inverse()
-        return (Expression.number(1) - apply("cos", turn * step)).scaled(2) * (turn * turn).inverse()
+        cosine = single_sites(apply("cos", turn * self._step(self.euclidean.variables[i], mu)))
+        return (Expression.number(1) - cosine).scaled(2) * (turn * turn).inverse()
 
     def _tilted(self, mu: int) -> Expression:
         total = ZERO
@@ -105,6 +147,33 @@ class FieldLattice:
             return (Expression.of(atom) + Expression.of(atom.moved(mu))) * HALF
 
         return expression.substitute(middle)
+
+
+def _forwards(atom: Atom, mu: int) -> Expression | None:
+    return Expression.of(atom.moved(mu)) if isinstance(atom, PathAtom) else None
+
+
+def _round(form: tuple[tuple[Expression, ...], ...], ball: tuple[int, ...]) -> bool:
+    """Whether a kinetic form does not tell the components of a unit vector apart."""
+    return all(form[i][i] == form[ball[0]][ball[0]] for i in ball)
+
+
+def single_sites(link: Expression) -> Expression:
+    """cos and sin of a sum over two sites as products of those of single sites; the rest is left as it is."""
+    return link.substitute(_split)
+
+
+def _split(atom: Atom) -> Expression | None:
+    if not isinstance(atom, Function) or atom.name not in ("cos", "sin"):
+        return None
+    terms = [Expression((term,)) for term in atom.argument.terms]
+    places = [{q.neighbour for q in term.paths} for term in terms]
+    if any(len(p) > 1 for p in places) or len(set().union(*places)) != 2:
+        return None
+    here = sum((term for term, p in zip(terms, places, strict=True) if not p - {0}), ZERO)
+    there = atom.argument - here
+    (c1, s1), (c2, s2) = ((apply("cos", part), apply("sin", part)) for part in (here, there))
+    return c1 * c2 - s1 * s2 if atom.name == "cos" else s1 * c2 + c1 * s2
 
 
 def put_on_lattice(euclidean: EuclideanAction, extents: tuple[int, ...], edges: tuple[Edge, ...]) -> FieldLattice:

@@ -46,10 +46,24 @@ class Evaluator:
     euclidean: EuclideanAction
     beta: float
     spacing: float
+    spacings: tuple[float, ...] = ()  # of fields: of every direction, time first
 
     @property
     def times(self) -> Floats:
         return np.arange(self.layout.steps, dtype=np.float64) * self.spacing
+
+    def separations(self, measurement: Measurement) -> Floats:
+        """The abscissae of a curve: times, or distances along a direction of space.
+
+        Raises EstimateError where its brackets run along unlike directions.
+        """
+        free = [b for b in measurement.brackets if b.free]
+        directions = {self.layout.direction(b) for b in free}
+        if len(directions) > 1:
+            raise EstimateError("its brackets run along different directions: measure them apart")
+        points = len(self.layout.curve(free[0]))
+        spacing = self.spacings[directions.pop()] if self.spacings else self.spacing
+        return np.arange(points, dtype=np.float64) * spacing
 
     def phase(self) -> Estimate | None:
         """The average phase, or None where the weight is real."""
@@ -113,8 +127,11 @@ class Evaluator:
 
     # --- curves ---------------------------------------------------------------------------------------------
     def curve(self, measurement: Measurement) -> CurveEstimate:
-        """A curve on the lattice's separations 0 … beta/2."""
-        times = self.times
+        """A curve on the lattice's separations, 0 to half an extent."""
+        try:
+            times = self.separations(measurement)
+        except EstimateError as reason:
+            return nothing(self.times, measurement.label, reason.message)
         if self.phase_is_lost():
             return nothing(times, measurement.label, LOST)
         columns = [self.columns(b) for b in measurement.brackets]

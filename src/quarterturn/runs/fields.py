@@ -7,7 +7,7 @@ import os
 import threading
 import time as clock
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from quarterturn.actions.expression import Atom, Symbol
 from quarterturn.actions.model import Action, Edge, Measurement
-from quarterturn.compiled.field_observables import FieldObservables, field_offsets
+from quarterturn.compiled.field_observables import FieldObservables, field_places
 from quarterturn.compiled.field_target import FieldTarget
 from quarterturn.errors import RequestError
 from quarterturn.estimates.estimate import CurveEstimate, Estimate
@@ -32,8 +32,8 @@ from quarterturn.runs.run import Run
 from quarterturn.runs.session import REASONS, Session
 from quarterturn.runs.settings import Goal, Settings, examined, split_words
 from quarterturn.runs.unit_words import facts as unit_facts
-from quarterturn.sampling.driver import Request
-from quarterturn.sampling.fields.driver import FieldChain, run_fields
+from quarterturn.sampling.driver import Chain, Request
+from quarterturn.sampling.fields.driver import run_fields
 from quarterturn.sampling.fields.program import default_field_chains, field_program_for
 
 Floats = NDArray[np.float64]
@@ -129,25 +129,26 @@ def sample_fields(
     _refuse_too_large(target, count)
     layout = lay_out(action.measurements, action.euclidean, settings.sites)
     _refuse_unavailable(action, layout, edges)
-    program = field_program_for(target, _observables(layout, target, settings.spacings), count)
+    observables = _observables(layout, target, settings.spacings)
+    layout = replace(layout, directions=observables.directions, lengths=observables.lengths)
+    program = field_program_for(target, observables, count)
     session = FieldSession(action, settings, layout, wanted, NoExact(), progress, clock.monotonic())
     session.check_labels()
     with stoppable(event):
         session.say("compiling" if program.compilations == 0 else "warming up", None)
         chain = run_fields(
             program, settings.couplings, settings.spacings, Request(seed, wanted.draws, wanted.seconds),
-            session.basin_edges(), event.is_set, session.satisfied,  # type: ignore[arg-type]
+            session.basin_edges(), event.is_set, session.satisfied,
         )  # fmt: skip
-    return session.finish(chain, seed)  # type: ignore[arg-type]
+    return session.finish(chain, seed)
 
 
 def _observables(layout: Layout, target: FieldTarget, spacings: tuple[float, ...]) -> FieldObservables:
     lattice = target.lattice
-    offsets = tuple(
-        field_offsets(b, lattice.euclidean.coordinates, lattice.extents, spacings)
-        for b in (*layout.fixed, *layout.free)
+    places = tuple(
+        field_places(b, lattice.euclidean.coordinates, spacings, lattice.extents) for b in (*layout.fixed, *layout.free)
     )
-    return FieldObservables(target, layout.fixed, layout.free, offsets)
+    return FieldObservables(target, layout.fixed, layout.free, places)
 
 
 def _chain_count(asked: int | None, target: FieldTarget) -> int:
@@ -213,9 +214,9 @@ class FieldSession(Session):
         extent = max(self.settings.extents)
         return evaluator.correlation_length(m, extent, self.settings.spacings[self.settings.extents.index(extent)])
 
-    def record(  # type: ignore[override]
+    def record(
         self,
-        chain: FieldChain,
+        chain: Chain,
         seed: int,
         numbers: Mapping[str, Estimate],
         curves: Mapping[str, CurveEstimate],
@@ -223,10 +224,10 @@ class FieldSession(Session):
     ) -> dict[str, Any]:
         return field_record(self.action, self.settings, chain, seed, numbers, curves, warnings)
 
-    def artefacts(self) -> tuple[str, ...]:
+    def artefacts(self, measurements: Sequence[Measurement], numbers: Mapping[str, Estimate]) -> tuple[str, ...]:
         return ()
 
-    def facts(self, chain: FieldChain) -> tuple[tuple[str, str], ...]:  # type: ignore[override]
+    def facts(self, chain: Chain) -> tuple[tuple[str, str], ...]:
         """The method, line by line."""
         moves = ", ".join(f"{name} {rate:.0%}" for name, rate in (chain.acceptance or {}).items())
         mean, error = chain.exp_change
@@ -237,7 +238,7 @@ class FieldSession(Session):
         return (
             ("lattice", f"{extents} sites, a = {spacings}, {kinds}"),
             ("chains", f"{chain.program.chains} chains of {chain.draws} draws after {chain.warm_up} of warm-up"),
-            ("trajectory", f"minimum norm, {chain.recipe.steps:.1f} steps of {chain.recipe.step:.3g} on average"),
+            ("trajectory", f"minimum norm, {chain.recipe.steps} steps of {chain.recipe.step:.3g} on average"),
             ("moves accepted", moves),
             ("<exp(-dH)>", f"{mean:.5f} ± {error:.5f}"),
             ("stopped", f"{REASONS[chain.stop]}, {chain.seconds:.1f} s"),

@@ -13,7 +13,7 @@ from quarterturn.actions.circles import phase_of
 from quarterturn.actions.expression import Expression, apply
 from quarterturn.actions.model import Bracket, EuclideanAction, Measurement
 from quarterturn.actions.printing import notation
-from quarterturn.compiled.field_observables import LOWEST_MODE, SUMMED, ZERO_MODE
+from quarterturn.compiled.field_observables import AVERAGED, LOWEST_MODE, ZERO_MODE
 from quarterturn.compiled.observables import Observables, lattice_offsets
 from quarterturn.compiled.target import Target
 
@@ -26,17 +26,29 @@ class Layout:
 
     fixed: tuple[Bracket, ...]
     free: tuple[Bracket, ...]
-    steps: int  # points of a curve
+    steps: int  # points of a curve in time
     is_complex: bool  # column 0 is then the phase
+    directions: tuple[int, ...] = ()  # of fields: along which direction each curve runs; in time where there are none
+    lengths: tuple[int, ...] = ()  # of fields: points of each curve
 
     def number(self, bracket: Bracket) -> int:
         """Column of a fixed bracket, in the ledger of numbers and at the head of the ledger of curves."""
         return _place(self.fixed, bracket) + self.is_complex
 
     def curve(self, bracket: Bracket) -> NDArray[np.int_]:
-        """Columns of a free bracket in the ledger of curves, (steps,)."""
-        first = len(self.fixed) + self.is_complex + _place(self.free, bracket) * self.steps
-        return np.arange(first, first + self.steps)
+        """Columns of a free bracket in the ledger of curves, (points,)."""
+        place, lengths = _place(self.free, bracket), self.points
+        first = len(self.fixed) + self.is_complex + sum(lengths[:place])
+        return np.arange(first, first + lengths[place])
+
+    def direction(self, bracket: Bracket) -> int:
+        """Along which direction a free bracket runs, 0 for time."""
+        return self.directions[_place(self.free, bracket)] if self.directions else 0
+
+    @property
+    def points(self) -> tuple[int, ...]:
+        """Points of each curve."""
+        return self.lengths or (self.steps,) * len(self.free)
 
     @property
     def number_names(self) -> tuple[str, ...]:
@@ -45,7 +57,8 @@ class Layout:
 
     @property
     def curve_names(self) -> tuple[str, ...]:
-        return (*self.number_names, *(f"{b.label} at step {n}" for b in self.free for n in range(self.steps)))
+        steps = [f"{b.label} at step {n}" for b, count in zip(self.free, self.points, strict=True) for n in range(count)]
+        return (*self.number_names, *steps)
 
 
 def _place(brackets: tuple[Bracket, ...], wanted: Bracket) -> int:
@@ -58,9 +71,9 @@ def _meaning(bracket: Bracket) -> tuple:
 
 
 def pair_bracket(left: Expression, right: Expression, label: str, dimension: int = 1) -> Bracket:
-    """<left(t) right(0)>, of fields summed over space: at zero momentum."""
+    """<left(t) right(0)>, of fields with left averaged over space: at zero momentum."""
     space = dimension - 1
-    places = ((SUMMED,) * space, (NOW,) * space) if space else ()
+    places = ((AVERAGED,) * space, (NOW,) * space) if space else ()
     return Bracket(label, ((None, left), (NOW, right)), places=places)
 
 

@@ -14,7 +14,6 @@ from quarterturn.notation.symbols import COORDINATES
 from quarterturn.records.schema import SCHEMA, environment, validate
 from quarterturn.runs.settings import Settings
 from quarterturn.sampling.driver import Chain
-from quarterturn.sampling.fields.driver import FieldChain
 from quarterturn.units.constants import release
 from quarterturn.units.quantity import Quantity
 
@@ -88,7 +87,7 @@ def _lattice(action: Action, settings: Settings) -> dict[str, Any]:
 def field_record(
     action: Action,
     settings: Settings,
-    chain: FieldChain,
+    chain: Chain,
     seed: int,
     numbers: Mapping[str, Estimate],
     curves: Mapping[str, CurveEstimate],
@@ -101,7 +100,8 @@ def field_record(
         "integrator": "minimum norm",
         "step": chain.recipe.step,
         "steps": chain.recipe.steps,
-        "masses": list(chain.recipe.masses),
+        "scale": list(chain.recipe.scale),
+        "clusters": chain.recipe.clusters,
         "exp_minus_dH": list(chain.exp_change),
     }
     return _with_results(base_record("sample", action, settings), chain, method, seed, numbers, curves, warnings)
@@ -134,7 +134,7 @@ def sample_record(
 
 def _with_results(
     record: dict[str, Any],
-    chain: Chain | FieldChain,
+    chain: Chain,
     method: dict[str, Any],
     seed: int,
     numbers: Mapping[str, Estimate],

@@ -108,6 +108,7 @@ class Session:
             self.action.euclidean,
             self.settings.beta,
             self.settings.spacing,
+            self.settings.spacings,
         )
 
     def satisfied(self, chain: Chain) -> bool:
@@ -241,8 +242,7 @@ class Session:
         self, chain: Chain, evaluator: Evaluator, numbers: Mapping[str, Estimate], measurements: Sequence[Measurement]
     ) -> tuple[tuple[str, ...], dict[str, Estimate]]:
         """All warnings, and the numbers with the state they deserve."""
-        couplings, euclidean = self.settings.couplings, self.action.euclidean
-        stuck = doubts.stuck_sectors(chain, euclidean, self.basins, self.exact.transfer)
+        stuck = doubts.stuck_sectors(chain, self.action.euclidean, self.basins, self.exact.transfer)
         judged = dict(numbers)
         judged = {label: _doubted(e) for label, e in judged.items()}
         if stuck:
@@ -262,7 +262,7 @@ class Session:
             *doubts.energy_violation(chain),
             *doubts.contradictions(list(judged), list(judged.values())),
             *doubts.contamination(self.settings.beta, self.gap),
-            *doubts.artefacts(measurements, judged, euclidean, couplings, self.settings.beta),
+            *self.artefacts(measurements, judged),
         ]
         if self.layout.is_complex:
             phase = numbers["average phase"]
@@ -276,6 +276,11 @@ class Session:
         whence = "of the transfer matrix" if self.exact.transfer is not None else "measured"
         weight = math.exp(-self.settings.beta * self.gap)
         return (("temperature", f"exp(-beta gap) = {weight:.2g}, with the lowest gap {self.gap:.4g} {whence}"),)
+
+    def artefacts(self, measurements: Sequence[Measurement], numbers: Mapping[str, Estimate]) -> tuple[str, ...]:
+        """What the spacing does to the numbers, where the continuum is known."""
+        couplings, beta = self.settings.couplings, self.settings.beta
+        return doubts.artefacts(measurements, numbers, self.action.euclidean, couplings, beta)
 
     def facts(self, chain: Chain) -> tuple[tuple[str, str], ...]:
         """The method, line by line."""

@@ -9,6 +9,7 @@ from __future__ import annotations
 import time
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
+from typing import Any
 
 import jax
 import jax.numpy as jnp
@@ -17,7 +18,8 @@ from jax import Array
 from numpy.typing import NDArray
 
 from quarterturn.compiled.precision import double
-from quarterturn.compiled.target import Parameters, PathState
+from quarterturn.sampling.fields.program import FieldProgram
+from quarterturn.sampling.fields.warm_up import FieldRecipe, FieldTrial
 from quarterturn.sampling.ledger import Ledger
 from quarterturn.sampling.points import PointAction
 from quarterturn.sampling.program import BLOCK, BlockOutput, Program
@@ -47,8 +49,8 @@ class Request:
 class Chain:
     """A run of many chains: ledgers of what was measured, and how the moves fared."""
 
-    program: Program
-    recipe: Recipe
+    program: Program | FieldProgram
+    recipe: Recipe | FieldRecipe
     numbers: Ledger
     curves: Ledger  # columns: the numbers, then the curves flattened (curve, step); entries are means of a block
     warm_up: int  # draws per chain before the first measured one
@@ -60,7 +62,8 @@ class Chain:
     warm_up_seconds: float = 0.0
     nonfinite: int = 0  # trajectories that ended where action or force is not a finite number; all were rejected
     cut_in_warm_up: bool = False  # interrupted before the first measured draw: what was drawn since isn't equilibrated
-    trials: tuple[Trial, ...] = field(default=(), repr=False)  # what warm-up tried, in order
+    starts_agree: bool = True  # whether chains from unlike starts agreed before the first measured draw
+    trials: tuple[Trial, ...] | tuple[FieldTrial, ...] = field(default=(), repr=False)  # what warm-up tried, in order
 
     @property
     def draws(self) -> int:
@@ -90,40 +93,42 @@ def run_chains(
         warm_up = WarmUp(program, p, points, jnp.asarray(seed_key(request.seed, WARM)), state, interrupted)
         recipe = tune(warm_up, recipe)
         warm_up.run(recipe, THERMALISATION)
-        chain = Chain(
-            program,
-            recipe,
-            Ledger(program.chains, program.observables.count),
-            Ledger(program.chains, _curve_columns(program), block=BLOCK, limit=CURVE_ENTRIES),
-            warm_up.blocks * BLOCK,
-            sectors=SectorCount(edges),
-            trials=tuple(warm_up.trials),
-            cut_in_warm_up=interrupted(),
-            warm_up_seconds=time.monotonic() - began,
-        )
-        _draw(
-            chain, warm_up.state, jnp.asarray(seed_key(request.seed, MAIN)), p, request, began, interrupted, satisfied
-        )
+        chain = empty_chain(program, recipe, warm_up.blocks * BLOCK, edges)
+        chain.trials = tuple(warm_up.trials)
+        chain.cut_in_warm_up = interrupted()
+        chain.warm_up_seconds = time.monotonic() - began
+        draw(chain, warm_up.state, jnp.asarray(seed_key(request.seed, MAIN)), p, request, began, interrupted, satisfied)
     chain.seconds = time.monotonic() - began
     return chain
 
 
-def _curve_columns(program: Program) -> int:
-    observables = program.observables
-    return observables.count + len(observables.free) * observables.steps
+def empty_chain(
+    program: Program | FieldProgram, recipe: Recipe | FieldRecipe, warm_up: int, edges: tuple[Floats, ...]
+) -> Chain:
+    """A chain before its first measured draw."""
+    count = program.observables.count
+    return Chain(
+        program,
+        recipe,
+        Ledger(program.chains, count),
+        Ledger(program.chains, count + program.curve_points, block=program.block, limit=CURVE_ENTRIES),
+        warm_up,
+        sectors=SectorCount(edges),
+    )
 
 
-def _draw(
+def draw(
     chain: Chain,
-    state: PathState,
+    state: Any,
     key: Array,
-    p: Parameters,
+    p: Any,
     request: Request,
     began: float,
     interrupted: Callable[[], bool],
     satisfied: Callable[[Chain], bool],
 ) -> None:
-    tuning = chain.recipe.tuning()
+    """Blocks of draws until the first of the reasons to stop; state and parameters are those of the program."""
+    tuning: Any = chain.recipe.tuning()
     accepted: list[Floats] = []
     changes: list[Floats] = []
     checked = time.monotonic()

@@ -55,6 +55,16 @@ class Program:
     def __post_init__(self) -> None:
         self._advance = jax.jit(self._block)
 
+    @property
+    def block(self) -> int:
+        """Draws in one call of the compiled program."""
+        return BLOCK
+
+    @property
+    def curve_points(self) -> int:
+        """Numbers of all curves of one chain."""
+        return len(self.observables.free) * self.observables.steps
+
     def advance(
         self, state: PathState, key: Array, first: int, p: Parameters, tuning: Tuning
     ) -> tuple[PathState, BlockOutput]:

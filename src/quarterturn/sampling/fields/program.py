@@ -1,36 +1,37 @@
-"""One compiled program: a block of sweeps over all chains of fields, with everything measured inside the loop.
+"""One compiled program of fields: a block of sweeps over all chains, with everything measured inside the loop.
 
-Compiled once for an action, a lattice size, a set of measurements and a number of chains; couplings, spacings, sources
-and tuning are traced. The key of a sweep comes from the run's key and the sweep's number alone.
+As for paths, a program is compiled once for an action, a lattice, a set of measurements and a number of chains;
+couplings, spacings and tuning are traced, and the key of a sweep depends on the run's key and the sweep's number alone.
 """
 
 from __future__ import annotations
 
 from collections import OrderedDict
 from dataclasses import dataclass, field
-from typing import NamedTuple, Protocol
+from typing import Protocol
 
 import jax
 import jax.numpy as jnp
 import numpy as np
 from jax import Array
 
-from quarterturn.compiled.field_observables import FieldObservables
 from quarterturn.compiled.field_target import FieldParameters, FieldState, FieldTarget
+from quarterturn.compiled.field_observables import FieldObservables, longest
 from quarterturn.compiled.precision import double
 from quarterturn.sampling.fields.sign_flip import FieldSignFlip
 from quarterturn.sampling.fields.trajectory import FieldTrajectory, FieldTuning
 from quarterturn.sampling.moves.base import MoveInfo
+from quarterturn.sampling.program import BLOCK, BlockOutput
 from quarterturn.sampling.random import child
 
-BLOCK = 8  # draws in one call of the compiled program
 KEPT_PROGRAMS = 16
-NUMBERS_AT_ONCE = 2**17  # of all chains: what fits the caches
 MOST_CHAINS, FEWEST_CHAINS = 32, 8
+NUMBERS_AT_ONCE = 65536  # of all chains; more leave the nearest caches
+BLOCK_NUMBERS = 1 << 22  # of all draws of a block; longer blocks answer to nobody for too long
 
 
 class FieldMove(Protocol):
-    """A Markov kernel that leaves the weight invariant."""
+    """A Markov kernel that leaves the weight invariant. Frozen and hashable."""
 
     @property
     def name(self) -> str: ...
@@ -38,18 +39,6 @@ class FieldMove(Protocol):
     def step(
         self, key: Array, state: FieldState, p: FieldParameters, tuning: FieldTuning
     ) -> tuple[FieldState, MoveInfo]: ...
-
-
-class FieldBlock(NamedTuple):
-    """What one block of draws leaves behind."""
-
-    numbers: Array  # (BLOCK, chains, count)
-    curves: Array  # (chains, curves, steps), means over the block
-    means: Array  # (BLOCK, chains, C), lattice means of the variables
-    action: Array  # (BLOCK, chains)
-    accepted: Array  # (moves,), means over draws and chains
-    exp_change: Array  # (chains,), exp(-dH) of the trajectories, means over the block
-    nonfinite: Array  # (), trajectories whose end has no finite energy
 
 
 @dataclass
@@ -60,24 +49,46 @@ class FieldProgram:
     observables: FieldObservables
     chains: int
     moves: tuple[FieldMove, ...]
-    compilations: int = 0  # how often the block has been traced
+    compilations: int = 0  # how often the block has been traced; one, unless shapes changed
     _advance: object = field(default=None, repr=False)
 
     def __post_init__(self) -> None:
         self._advance = jax.jit(self._block)
 
+    @property
+    def block(self) -> int:
+        """Draws in one call of the compiled program."""
+        numbers = self.target.components * self.target.sites * self.chains
+        return max(1, min(BLOCK, BLOCK_NUMBERS // numbers))
+
+    @property
+    def curve_points(self) -> int:
+        """Numbers of all curves of one chain."""
+        return self.observables.points
+
     def advance(
         self, state: FieldState, key: Array, first: int, p: FieldParameters, tuning: FieldTuning
-    ) -> tuple[FieldState, FieldBlock]:
-        """BLOCK sweeps, numbered from `first`. Call inside `double()`."""
+    ) -> tuple[FieldState, BlockOutput]:
+        """A block of sweeps, numbered from `first`. Call inside `double()`."""
         return self._advance(state, key, np.uint32(first), p, tuning)  # type: ignore[operator]
+
+    def probes(self, state: FieldState) -> Array:
+        """Slow things to tune by, (chains, 4 C): mean, its square, mean square, and the power of the longest wave."""
+        target = self.target
+        mean = target.means(state.phi)
+        direction = longest(target.extents)[0]
+        n = target.extents[direction]
+        wave = np.cos(2 * np.pi * np.indices(target.extents)[direction].ravel() / n) / target.sites
+        lowest = jnp.stack([jnp.asarray(wave) @ f for f in state.phi], axis=-1)
+        square = jnp.stack([jnp.mean(f * f, axis=0) for f in state.phi], axis=-1)
+        return jnp.concatenate([mean, mean**2, square, lowest**2], axis=-1)
 
     def _block(
         self, state: FieldState, key: Array, first: Array, p: FieldParameters, tuning: FieldTuning
-    ) -> tuple[FieldState, FieldBlock]:
+    ) -> tuple[FieldState, BlockOutput]:
         self.compilations += 1  # runs only while tracing
 
-        def sweep(carry: tuple[FieldState, Array], number: Array) -> tuple[tuple[FieldState, Array], tuple]:
+        def sweep(carry: tuple[FieldState, tuple[Array, ...]], number: Array) -> tuple[tuple, tuple]:
             state, spectra = carry
             keys = child(child(key, number), jnp.arange(len(self.moves), dtype=jnp.uint32))
             infos: list[MoveInfo] = []
@@ -86,26 +97,33 @@ class FieldProgram:
                 infos.append(info)
             out = (
                 self.observables.numbers(state, p),
-                self.target.means(state.phi),
-                state.action,
+                self.probes(state),
                 jnp.stack([jnp.mean(info.accepted) for info in infos]),
                 infos[0].energy_change,
             )
-            return (state, spectra + self.observables.spectra(state, p)), out
+            more = self.observables.spectra(state, p)
+            return (state, tuple(a + b for a, b in zip(spectra, more, strict=True))), out
 
-        zero = jnp.zeros((self.chains, len(self.observables.free), self.observables.steps))
-        numbers = first + jnp.arange(BLOCK, dtype=jnp.uint32)
-        (state, spectra), out = jax.lax.scan(sweep, (state, zero), numbers)
-        measured, means, action, accepted, change = out
-        return state, FieldBlock(
+        numbers = first + jnp.arange(self.block, dtype=jnp.uint32)
+        start = (state, self.observables.nothing(self.chains))
+        (state, spectra), (measured, probes, accepted, change) = jax.lax.scan(sweep, start, numbers)
+        return state, BlockOutput(
             measured,
-            self.observables.curves(spectra / BLOCK),
-            means,
-            action,
+            self.observables.curves([s / self.block for s in spectra], self.chains),
+            probes,
             jnp.mean(accepted, axis=0),
             jnp.mean(jnp.exp(-change), axis=0),
             jnp.sum(~jnp.isfinite(change)),
+            jnp.zeros((self.block, self.chains, self.target.components)),
         )
+
+
+def field_moves(target: FieldTarget) -> tuple[FieldMove, ...]:
+    """The moves of one sweep, the trajectory first."""
+    moves: list[FieldMove] = [FieldTrajectory(target)]
+    if target.lattice.symmetries:
+        moves.append(FieldSignFlip(target))
+    return tuple(moves)
 
 
 def default_field_chains(sites: int, components: int) -> int:
@@ -122,16 +140,13 @@ def field_program_for(target: FieldTarget, observables: FieldObservables, chains
     lattice = target.lattice
     key = (
         lattice.euclidean.digest, lattice.euclidean.variables, lattice.extents, lattice.edges, target.names,
-        observables.fixed, observables.free, observables.offsets, chains,
+        observables.fixed, observables.free, observables.places, chains,
     )  # fmt: skip
     if key in _programs:
         _programs.move_to_end(key)
         return _programs[key]
-    moves: list[FieldMove] = [FieldTrajectory(target)]
-    if lattice.euclidean.symmetries:
-        moves.append(FieldSignFlip(target))
     with double():
-        program = FieldProgram(target, observables, chains, tuple(moves))
+        program = FieldProgram(target, observables, chains, field_moves(target))
     _programs[key] = program
     while len(_programs) > KEPT_PROGRAMS:
         _programs.popitem(last=False)

@@ -10,12 +10,12 @@ from jax import Array
 from quarterturn.compiled.field_target import FieldParameters, FieldState, FieldTarget
 from quarterturn.sampling.fields.trajectory import FieldTuning
 from quarterturn.sampling.moves.base import MoveInfo
-from quarterturn.sampling.random import uniforms
+from quarterturn.sampling.random import coins_and_uniforms
 
 
 @dataclass(frozen=True)
 class FieldSignFlip:
-    """Applies one of the symmetries, or none, to each chain. Leaves the weight invariant: S(sigma phi) = S(phi)."""
+    """Applies one of the symmetries, or none, to each chain. Leaves exp(-Re S) invariant when S(sigma phi) = S(phi)."""
 
     target: FieldTarget
     name: str = "global sign flip"
@@ -23,8 +23,9 @@ class FieldSignFlip:
     def step(
         self, key: Array, state: FieldState, p: FieldParameters, tuning: FieldTuning
     ) -> tuple[FieldState, MoveInfo]:
-        chains = state.phi.shape[0]
-        signs = jnp.asarray(((1,) * self.target.components, *self.target.lattice.euclidean.symmetries), jnp.float64)
-        chosen = (uniforms(key, (chains,)) * len(signs)).astype(jnp.int32)
-        flipped = FieldState(state.phi * signs[chosen][..., None], state.action)
-        return flipped, MoveInfo(jnp.ones(chains), jnp.zeros(chains))
+        chains = state.action.shape[0]
+        flip, chance = coins_and_uniforms(key, (chains,))
+        signs = jnp.asarray(self.target.lattice.symmetries, jnp.float64)
+        sigma = jnp.where(flip[:, None], signs[(chance * len(signs)).astype(jnp.int32)], 1.0)  # (chains, C)
+        phi = tuple(sigma[:, c] * f for c, f in enumerate(state.phi))
+        return FieldState(phi, state.action), MoveInfo(jnp.ones(chains), jnp.zeros(chains))

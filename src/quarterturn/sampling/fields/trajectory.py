@@ -1,6 +1,7 @@
 """Hamiltonian Monte Carlo of fields in real space: minimum-norm steps, geodesic ones on spheres.
 
-H = 1/2 sum m_c v^2 + S with one mass per component. Steps alternate drifts and kicks in the minimum-norm pattern
+H = 1/2 sum p^2 + S, each variable measured in its natural scale s, so that it drifts by s p and is kicked by s dS/dphi and
+one step size serves variables of unlike stiffness. Steps alternate drifts and kicks in the minimum-norm pattern
 (Omelyan, Mryglod and Folk, Comput. Phys. Commun. 151 (2003) 272, eq. (31)), which begins and ends with a drift. A unit
 vector drifts along its great circle and is kicked within its tangent plane (Byrne and Girolami, Scand. J. Stat. 40
 (2013) 825), so that it stays on its sphere to rounding. Number and size of the steps are drawn anew for each
@@ -9,7 +10,6 @@ trajectory, independently of the state, so that no mode is in resonance (Mackenz
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass
 from typing import NamedTuple
 
@@ -17,23 +17,24 @@ import jax
 import jax.numpy as jnp
 from jax import Array
 
-from quarterturn.compiled.field_target import FieldParameters, FieldState, FieldTarget
+from quarterturn.compiled.field_target import FieldParameters, Fields, FieldState, FieldTarget
 from quarterturn.compiled.functions import sine_cosine
 from quarterturn.sampling.integrators.minimum_norm import LAMBDA
 from quarterturn.sampling.moves.base import MoveInfo
-from quarterturn.sampling.random import complex_normals, uniforms
+from quarterturn.sampling.random import complex_normals, log, uniforms
 
-WAVES, CHANCES = 0, 1  # streams of random numbers
-JITTER = 0.1  # of the size of the steps
-SPREAD = 0.5  # of their number: uniform between (1 - SPREAD) and (1 + SPREAD) times the tuned one
+CHANCES = 1 << 20  # stream of random numbers; those below are the momenta of the variables
+JITTER = 0.1  # of the size of the steps, chain by chain
 
 
 class FieldTuning(NamedTuple):
     """What warm-up finds and then freezes; traced."""
 
-    step: Array  # (), in units in which a mass-weighted field has frequencies of order 1
-    steps: Array  # (), mean number of steps, as a float
-    masses: Array  # (C,)
+    scale: Array  # (C,), natural size of a change of each variable; equal for the components of a unit vector
+    step: Array  # (), in units of that scale
+    fewest: Array  # (), int32, and
+    most: Array  # (), int32: steps of a trajectory, every number between them equally likely
+    clusters: Array  # (), how many cluster flips of each symmetry a sweep makes, int32
 
 
 @dataclass(frozen=True)
@@ -44,98 +45,101 @@ class FieldTrajectory:
     name: str = "Hamiltonian trajectory"
 
     # --- the geometry of the variables ----------------------------------------------------------------------
-    def tangent(self, phi: Array, v: Array) -> Array:
-        """v without its part along the unit vectors."""
+    def tangent(self, phi: Fields, p: Fields) -> Fields:
+        """p without its part along the unit vectors."""
+        flat = list(p)
+        for ball in self.target.euclidean.spheres:
+            along = _dot(phi, p, ball)
+            for c in ball:
+                flat[c] = p[c] - along * phi[c]
+        return tuple(flat)
 
-        def flat(n: Array, w: Array) -> Array:
-            return w - jnp.sum(n * w, axis=1, keepdims=True) * n
-
-        return self.by_sphere(flat, lambda n, w: w, phi, v)
-
-    def by_sphere(self, on_sphere: Callable, elsewhere: Callable, phi: Array, v: Array) -> Array:
-        """Two arrays of all variables combined, those of each unit vector together, the others as they are."""
-        spheres = {group[0]: group for group in self.target.lattice.euclidean.spheres}
-        parts, c = [], 0
-        while c < self.target.components:
-            rows = slice(c, c + len(spheres.get(c, (c,))))
-            combine = on_sphere if c in spheres else elsewhere
-            parts.append(combine(phi[:, rows], v[:, rows]))
-            c = rows.stop
-        return parts[0] if len(parts) == 1 else jnp.concatenate(parts, axis=1)
-
-    def drift(self, phi: Array, v: Array, time: Array) -> tuple[Array, Array]:
-        """Free motion: straight, or along great circles."""
-        if not self.target.lattice.euclidean.spheres:
-            return phi + time * v, v
-
-        def turned(n: Array, w: Array) -> tuple[Array, Array]:
-            rate = jnp.sqrt(jnp.sum(w * w, axis=1, keepdims=True))
-            sine, cosine = sine_cosine(rate * time)
+    def drift(self, phi: Fields, p: Fields, time: Array, scale: Array) -> tuple[Fields, Fields]:
+        """Free motion for a time (chains,): straight, or along great circles."""
+        spheres = self.target.euclidean.spheres
+        curved = {c for ball in spheres for c in ball}
+        moved = [f if c in curved else f + (time * scale[c]) * v for c, (f, v) in enumerate(zip(phi, p, strict=True))]
+        turned = list(p)
+        for ball in spheres:
+            rate = jnp.sqrt(_dot(p, p, ball))
+            sine, cosine = sine_cosine(rate * (time * scale[ball[0]]))
             shape = sine / jnp.where(rate > 0, rate, 1.0)  # 0 where nothing moves
-            return n * cosine + w * shape, w * cosine - n * rate * sine
+            for c in ball:
+                moved[c], turned[c] = phi[c] * cosine + p[c] * shape, p[c] * cosine - phi[c] * (rate * sine)
+        return tuple(moved), tuple(turned)
 
-        moved = self.by_sphere(lambda n, w: turned(n, w)[0], lambda n, w: n + time * w, phi, v)
-        return moved, self.by_sphere(lambda n, w: turned(n, w)[1], lambda n, w: w, phi, v)
+    def kick(self, phi: Fields, p: Fields, time: Array, scale: Array, parameters: FieldParameters) -> Fields:
+        """p changed by the force of a time (chains,)."""
+        force = self.target.force(phi, parameters)
+        push = self.tangent(phi, tuple((time * s) * f for s, f in zip(scale, force, strict=True)))
+        return tuple(v - f for v, f in zip(p, push, strict=True))
 
-    def tidied(self, phi: Array) -> Array:
-        """Unit vectors brought back to length 1, against rounding; angles shifted by whole periods to about zero."""
-        lattice = self.target.lattice
-        if lattice.euclidean.spheres:
-            phi = self.by_sphere(
-                lambda n, _: n / jnp.sqrt(jnp.sum(n * n, axis=1, keepdims=True)), lambda n, _: n, phi, phi
-            )
-        if any(p is not None for p in lattice.euclidean.periods):
-            periods = jnp.asarray(self.target.periods)[:, None]
-            safe = jnp.where(periods > 0, periods, 1.0)
-            turns = jnp.round(jnp.mean(phi, axis=-1, keepdims=True) / safe) * safe
-            phi = phi - jnp.where(periods > 0, turns, 0.0)
-        return phi
+    def tidied(self, phi: Fields) -> Fields:
+        """Unit vectors brought back to length 1, against rounding; angles to within half a period of zero."""
+        found = list(phi)
+        for c, period in enumerate(self.target.periods):
+            if period > 0:
+                found[c] = phi[c] - float(period) * jnp.round(phi[c] / float(period))
+        for ball in self.target.euclidean.spheres:
+            length = jnp.sqrt(_dot(phi, phi, ball))
+            for c in ball:
+                found[c] = phi[c] / length
+        return tuple(found)
 
     # --- the trajectory -------------------------------------------------------------------------------------
-    def velocities(self, key: Array, phi: Array, tuning: FieldTuning) -> Array:
-        """v with variance 1/m, tangent to the spheres, (chains, C, sites)."""
-        chains, components, sites = phi.shape
-        count = components * sites
-        waves = complex_normals(key, (chains, (count + 1) // 2), WAVES)
-        normals = jnp.concatenate([jnp.real(waves), jnp.imag(waves)], axis=-1)[:, :count]
-        v = normals.reshape(phi.shape) / jnp.sqrt(tuning.masses)[:, None]
-        return self.tangent(phi, v)
+    def momenta(self, key: Array, phi: Fields) -> Fields:
+        """Standard normal, tangent to the spheres."""
+        sites, chains = phi[0].shape
+        half = (sites + 1) // 2
+        waves = [complex_normals(key, (half, chains), c) for c in range(len(phi))]
+        return self.tangent(phi, tuple(jnp.concatenate([jnp.real(z), jnp.imag(z)])[:sites] for z in waves))
 
-    def kinetic(self, v: Array, tuning: FieldTuning) -> Array:
-        return 0.5 * jnp.sum(jnp.sum(v * v, axis=-1) * tuning.masses, axis=-1)
+    def kinetic(self, p: Fields) -> Array:
+        """1/2 sum p^2, (chains,)."""
+        return 0.5 * jnp.sum(_dot(p, p, range(len(p))), axis=0)
 
     def flow(
-        self, phi: Array, v: Array, step: Array, steps: Array, p: FieldParameters, tuning: FieldTuning
-    ) -> tuple[Array, Array]:
-        """`steps` minimum-norm steps of size `step`. Reversible: negate v and run again. Preserves volume."""
+        self, phi: Fields, p: Fields, step: Array, steps: Array, parameters: FieldParameters, scale: Array
+    ) -> tuple[Fields, Fields]:
+        """`steps` minimum-norm steps of sizes `step` (chains,). Reversible: negate p and run again. Keeps volume."""
 
-        def kick(phi: Array, v: Array) -> Array:
-            push = self.target.force(phi, p) / tuning.masses[:, None]
-            return v - 0.5 * step * self.tangent(phi, push)
+        def one(_: Array, carry: tuple[Fields, Fields]) -> tuple[Fields, Fields]:
+            phi, p = carry
+            phi, p = self.drift(phi, self.kick(phi, p, 0.5 * step, scale, parameters), (1 - 2 * LAMBDA) * step, scale)
+            return self.drift(phi, self.kick(phi, p, 0.5 * step, scale, parameters), 2 * LAMBDA * step, scale)
 
-        def one(_: Array, carry: tuple[Array, Array]) -> tuple[Array, Array]:
-            phi, v = carry
-            phi, v = self.drift(phi, kick(phi, v), (1 - 2 * LAMBDA) * step)
-            return self.drift(phi, kick(phi, v), 2 * LAMBDA * step)
-
-        phi, v = self.drift(phi, v, LAMBDA * step)
-        phi, v = jax.lax.fori_loop(0, steps, one, (phi, v))
-        return self.drift(phi, v, -LAMBDA * step)
+        phi, p = self.drift(phi, p, LAMBDA * step, scale)
+        phi, p = jax.lax.fori_loop(0, steps, one, (phi, p))
+        return self.drift(phi, p, -LAMBDA * step, scale)
 
     def step(
         self, key: Array, state: FieldState, p: FieldParameters, tuning: FieldTuning
     ) -> tuple[FieldState, MoveInfo]:
-        chains = state.phi.shape[0]
-        chance = uniforms(key, (chains + 2,), CHANCES)
+        chains = state.action.shape[0]
+        chance = uniforms(key, (3, chains), CHANCES)
+        span = (tuning.most - tuning.fewest + 1).astype(jnp.float64)
+        steps = tuning.fewest + (chance[2, 0] * span).astype(jnp.int32)
         step = tuning.step * (1 + JITTER * (2 * chance[0] - 1))
-        count = jnp.round(tuning.steps * (1 + SPREAD * (2 * chance[1] - 1)))
-        steps = jnp.maximum(count, 1.0).astype(jnp.int32)
-        v = self.velocities(key, state.phi, tuning)
-        phi, final = self.flow(state.phi, v, step, steps, p, tuning)
-        phi = self.tidied(phi)
-        proposal = self.target.state(phi, p)
-        change = proposal.action - state.action + self.kinetic(final, tuning) - self.kinetic(v, tuning)
-        accepted = jnp.log(chance[2:]) < -change  # nan compares false: such a trajectory is rejected
-        phi = jnp.where(accepted[:, None, None], proposal.phi, state.phi)
-        action = jnp.where(accepted, proposal.action, state.action)
-        return FieldState(phi, action), MoveInfo(accepted.astype(jnp.float64), change)
+        momenta = self.momenta(key, state.phi)
+        phi, final = self.flow(state.phi, momenta, step, steps, p, tuning.scale)
+        proposal = self.target.state(self.tidied(phi), p)
+        change = proposal.action - state.action + self.kinetic(final) - self.kinetic(momenta)
+        return metropolis(chance[1], change, proposal, state)
+
+
+def metropolis(chance: Array, change: Array, proposal: FieldState, state: FieldState) -> tuple[FieldState, MoveInfo]:
+    """The proposal with probability min(1, exp(-change)), chain by chain; never where `change` isn't a number."""
+    change = jnp.where(jnp.isfinite(change), change, jnp.inf)
+    accept = log(chance) < -change
+    phi = tuple(jnp.where(accept, new, old) for new, old in zip(proposal.phi, state.phi, strict=True))
+    return FieldState(phi, jnp.where(accept, proposal.action, state.action)), MoveInfo(
+        accept.astype(jnp.float64), change
+    )
+
+
+def _dot(a: Fields, b: Fields, components: tuple[int, ...] | range) -> Array:
+    first, *rest = components
+    total = a[first] * b[first]
+    for c in rest:
+        total = total + a[c] * b[c]
+    return total

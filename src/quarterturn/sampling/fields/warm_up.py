@@ -1,140 +1,226 @@
-"""Warm-up of fields: starts that differ, steps tuned to an acceptance, trajectories as long as the slowest mode wants.
+"""Warm-up of fields: equilibrate from unlike starts, find scale, step and length of a trajectory by trial, then freeze.
 
-One third of the chains begins cold (all fields zero), one hot (random), one displaced (a constant field drawn anew for
-each chain). After tuning, sweeps go on until the mean actions of the three groups agree, which is looked for and not
-assumed; what does not agree in time shows later as chains that disagree.
+The natural scale of a variable is 1/sqrt(<(dS/dphi)^2>), since <(dS/dphi)^2> = <d^2 S/dphi^2> in equilibrium (by parts).
+As for paths every decision follows from sampled data alone, never from a clock. A candidate is scored by how far its
+slowest probe moves in a draw: near a critical point no trial is long enough to see an autocorrelation die out, but the
+mean square of a jump is seen at once (Pasarica and Gelman, Statist. Sinica 20 (2010) 343).
 """
 
 from __future__ import annotations
 
-import math
-from collections.abc import Callable
-from dataclasses import dataclass
+from collections.abc import Callable, Iterable
+from dataclasses import dataclass, replace
 
+import jax
 import jax.numpy as jnp
 import numpy as np
 from jax import Array
 from numpy.typing import NDArray
 
-from quarterturn.compiled.field_target import FieldParameters, FieldState, FieldTarget
-from quarterturn.errors import RequestError
-from quarterturn.sampling.fields.program import BLOCK, FieldBlock, FieldProgram
+from quarterturn.compiled.field_target import FieldParameters, FieldState
+from quarterturn.sampling.fields.program import FieldProgram
 from quarterturn.sampling.fields.trajectory import FieldTuning
+from quarterturn.sampling.program import BlockOutput
+from quarterturn.sampling.tuning import FEWEST_ACCEPTED, STUCK
 
 Floats = NDArray[np.float64]
-ACCEPTANCE = 0.85  # wanted; minimum-norm integrators are cheapest about there
-GAIN = 1.5  # of the logarithm of the step per unit of missing acceptance, falling with the number of blocks
-ROUNDS, BLOCKS = 5, 6  # of tuning: lengths are set between rounds, steps after every block
-MOST_STEPS = 60.0
-QUARTER = 0.8 * math.pi / 2  # angle of the slowest mode in one trajectory, on average
-SETTLING, MOST_SETTLING = 6, 60  # blocks in one look at whether the starts agree; looks
-AGREE = 3.0  # standard errors
+FIXED_COST = 4.0  # of a draw without kicks, in kicks: momenta, the action, what is measured
+WANTED = (0.8, 0.93)  # acceptance at which the step is left as it is
+SETTLING_ROUNDS = 40
+SETTLED_ROUNDS = 6  # at the least
+TRIAL_DRAWS = 64  # of each chain
+LONGEST = 200  # steps of a trajectory on average
+STEPS_LENGTHS = (0.6, 1.0, 1.6, 2.5, 4.0, 6.4, 10.0)  # trial lengths, in the natural scale
+AGREEMENT = 1.1  # ratio of the spread of all draws to that within chains at which starts are forgotten
+LONGEST_WAIT = 12  # rounds of 64 draws until starts must be forgotten
 
 
 @dataclass(frozen=True)
 class FieldRecipe:
-    """The tuned numbers, as plain values."""
+    """The tuned parameters, as plain numbers: what a record keeps."""
 
+    scale: tuple[float, ...]
     step: float
-    steps: float
-    masses: tuple[float, ...]
+    steps: int  # of a trajectory, on average
+    clusters: int = 0  # cluster flips of each symmetry in a sweep
 
     def tuning(self) -> FieldTuning:
-        return FieldTuning(jnp.asarray(self.step), jnp.asarray(self.steps), jnp.asarray(self.masses))
+        """As traced arguments. Call inside `double()`."""
+        fewest = max(1, (self.steps + 1) // 2)
+        return FieldTuning(
+            jnp.asarray(np.array(self.scale)),
+            jnp.asarray(self.step),
+            jnp.asarray(fewest, jnp.int32),
+            jnp.asarray(2 * self.steps - fewest, jnp.int32),
+            jnp.asarray(self.clusters, jnp.int32),
+        )
+
+    @property
+    def kicks(self) -> int:
+        """In a trajectory, on average."""
+        return 2 * self.steps
+
+    @property
+    def length(self) -> float:
+        """Of a trajectory, on average, in the natural scale."""
+        return self.step * self.steps
+
+    @property
+    def cost(self) -> float:
+        return FIXED_COST + self.kicks
+
+    def of_length(self, length: float) -> FieldRecipe:
+        """The same step and another length."""
+        return replace(self, steps=int(min(LONGEST, max(1, round(length / self.step)))))
+
+    def stepping(self, factor: float) -> FieldRecipe:
+        """The same length in steps `factor` times as long."""
+        return replace(self, step=self.step * factor).of_length(self.length)
 
 
-@dataclass
+@dataclass(frozen=True)
+class FieldTrial:
+    """One candidate of the warm-up, its acceptance, and the effective samples it gave per draw."""
+
+    recipe: FieldRecipe
+    acceptance: float
+    efficiency: float
+
+    @property
+    def score(self) -> float:
+        return min(1.0, self.acceptance / FEWEST_ACCEPTED) ** 8 * self.efficiency / self.recipe.cost
+
+
 class FieldWarmUp:
-    """Chains on their way to equilibrium."""
+    """Carries the chains through warm-up. `draws` counts the draws used; `interrupted` stops between blocks."""
 
-    program: FieldProgram
-    p: FieldParameters
-    key: Array
-    state: FieldState
-    interrupted: Callable[[], bool]
-    blocks: int = 0
+    def __init__(
+        self,
+        program: FieldProgram,
+        p: FieldParameters,
+        key: Array,
+        state: FieldState,
+        interrupted: Callable[[], bool],
+    ) -> None:
+        self.program, self.p, self.key, self.state = program, p, key, state
+        self.interrupted = interrupted
+        self.draws = 0
+        self.trials: list[FieldTrial] = []
+        self._squares = jax.jit(lambda phi, p: jnp.stack([jnp.mean(f * f) for f in program.target.force(phi, p)]))
 
-    def run(self, recipe: FieldRecipe) -> FieldBlock:
-        self.state, out = self.program.advance(self.state, self.key, self.blocks * BLOCK, self.p, recipe.tuning())
-        self.blocks += 1
-        return out
+    def run(self, recipe: FieldRecipe, draws: int) -> list[BlockOutput]:
+        """Advance all chains by `draws` draws or a little more; fewer when interrupted."""
+        outputs = []
+        tuning = recipe.tuning()
+        for _ in range(-(-draws // self.program.block)):
+            if self.interrupted():
+                break
+            self.state, out = self.program.advance(self.state, self.key, self.draws, self.p, tuning)
+            self.draws += self.program.block
+            outputs.append(jax.device_get(out))
+        return outputs
+
+    def rescaled(self, recipe: FieldRecipe) -> FieldRecipe:
+        """Natural scales from the forces at hand; those of a unit vector are one."""
+        squares = np.array(self._squares(self.state.phi, self.p))
+        for ball in self.program.target.euclidean.spheres:
+            squares[list(ball)] = squares[list(ball)].mean()
+        usable = np.isfinite(squares) & (squares > 0)
+        scale = np.where(usable, 1 / np.sqrt(np.where(usable, squares, 1.0)), recipe.scale)
+        return replace(recipe, scale=tuple(float(s) for s in scale))
+
+    def settle(self, recipe: FieldRecipe) -> FieldRecipe:
+        """Equilibrate with scales that follow the force, and a step that follows the acceptance."""
+        low, high = WANTED
+        for round_ in range(SETTLING_ROUNDS):
+            if round_ < 2 * SETTLED_ROUNDS:
+                recipe = self.rescaled(recipe)
+            out = self.run(recipe, 8)
+            if not out:
+                break
+            accepted = float(np.mean([o.accepted[0] for o in out]))
+            stuck = bool(np.any(np.mean([o.exp_change for o in out], axis=0) < STUCK))
+            if low <= accepted <= high and not stuck and round_ >= SETTLED_ROUNDS:
+                break
+            if accepted < low:
+                recipe = recipe.stepping(0.5 if accepted < low / 3 else 0.8)
+            elif stuck:
+                self.run(replace(recipe, step=recipe.step / 8), 8)
+            elif accepted > high:
+                recipe = recipe.stepping(1.2)
+        return recipe
+
+    def try_all(self, candidates: Iterable[FieldRecipe], best: FieldTrial | None) -> FieldTrial | None:
+        """The best of the candidates and of `best`, each from the same configurations and random numbers.
+
+        A candidate whose cost alone rules it out is not tried. The chains go on from those of the best one.
+        """
+        start, first = self.state, self.draws
+        kept, used = start, first
+        for candidate in dict.fromkeys(candidates):
+            if best is not None and 1 / candidate.cost <= best.score:
+                continue
+            self.state, self.draws = start, first
+            outputs = self.run(candidate, TRIAL_DRAWS)
+            if sum(len(o.probes) for o in outputs) < TRIAL_DRAWS:
+                break
+            series = np.concatenate([o.probes for o in outputs])
+            series = np.concatenate([series, np.concatenate([o.numbers for o in outputs])], axis=-1)
+            trial = FieldTrial(candidate, float(np.mean([o.accepted[0] for o in outputs])), mobility(series))
+            self.trials.append(trial)
+            used = max(used, self.draws)
+            if best is None or trial.score > best.score:
+                best, kept = trial, self.state
+        self.state, self.draws = kept, max(used, self.draws)
+        return best
+
+    def forget(self, recipe: FieldRecipe) -> bool:
+        """Draw until chains from unlike starts agree in every probe; whether they do."""
+        for _ in range(LONGEST_WAIT):
+            outputs = self.run(recipe, TRIAL_DRAWS)
+            if not outputs:
+                return False
+            series = np.concatenate([o.probes for o in outputs])
+            if spread_of_chains(series) < AGREEMENT:
+                return True
+        return False
 
 
-def start_fields(target: FieldTarget, p: FieldParameters, chains: int, seed: int) -> FieldState:
-    """Cold, hot and displaced starts in turn, (chains, C, sites). Raises RequestError where no start has an action."""
-    rng = np.random.default_rng([seed & (2**64 - 1), chains, target.sites])
-    shape = (chains, target.components, target.sites)
-    phi = np.zeros(shape)
-    phi[1::3] = 0.5 * rng.standard_normal(phi[1::3].shape)
-    phi[2::3] = rng.standard_normal((*phi[2::3].shape[:2], 1))
-    for i, period in enumerate(target.lattice.euclidean.periods):
-        if period is not None:
-            phi[1::3, i] = float(period.evaluate({}, np)) * rng.uniform(size=phi[1::3, i].shape)
-    for group in target.lattice.euclidean.spheres:
-        rows = list(group)
-        phi[0::3, rows[-1]] = 1.0
-        phi[:, rows] += 1e-12 * rng.standard_normal(phi[:, rows].shape)
-        phi[:, rows] /= np.linalg.norm(phi[:, rows], axis=1, keepdims=True)
-    for _ in range(12):
-        state = target.state(jnp.asarray(phi), p)
-        lost = ~np.isfinite(np.asarray(state.action))
-        if not lost.any():
-            return state
-        phi[lost] *= 0.5
-    raise RequestError("no field with a finite action was found: is the potential defined about zero fields?")
+def mobility(series: Floats) -> float:
+    """Effective samples per draw, (1 - rho)/(1 + rho) with rho the correlation of neighbouring draws, at most 1.
+
+    Of the slowest column of (draws, chains, columns): exact for an autoregressive column of first order.
+    """
+    centred = series - series.mean(axis=(0, 1))
+    variance = (centred**2).mean(axis=(0, 1))
+    moving = variance > 1e-24 * (1 + series.mean(axis=(0, 1)) ** 2)
+    if not moving.any():
+        return 0.0
+    jump = (np.diff(series, axis=0) ** 2).mean(axis=(0, 1))[moving] / (2 * variance[moving])
+    return float(np.min(np.minimum(1.0, jump / np.maximum(2 - jump, 1e-12))))
 
 
-def first_field_recipe(target: FieldTarget, p: FieldParameters, state: FieldState) -> FieldRecipe:
-    """Masses from the curvature of the action at the starts, so that the fastest frequencies are of order 1."""
-    phi, width = state.phi, 1e-4
-    curvature = np.zeros(target.components)
-    checkers = jnp.asarray((-1.0) ** np.arange(target.sites))
-    for c in range(target.components):
-        bent = jnp.zeros_like(phi).at[:, c].set(width * checkers)
-        change = (target.force(phi + bent, p) - target.force(phi - bent, p))[:, c] * checkers / (2 * width)
-        curvature[c] = float(jnp.median(jnp.mean(jnp.where(jnp.isfinite(change), change, 0.0), axis=-1)))
-    pull = np.asarray(jnp.sqrt(jnp.nanmean(target.force(phi[1::3], p) ** 2, axis=(0, 2))))
-    masses = np.maximum(curvature, 1e-3 * max(1.0, float(np.max(np.abs(curvature)))))
-    for group in target.lattice.euclidean.spheres:
-        masses[list(group)] = max(float(np.max(pull[list(group)])), 1e-3)
-    return FieldRecipe(0.4, 4.0, tuple(float(m) for m in masses))
+def spread_of_chains(series: Floats) -> float:
+    """sqrt of the variance of all draws over that within chains, of the worst column of (draws, chains, columns).
+
+    Source: Gelman and Rubin, Statist. Sci. 7 (1992) 457.
+    """
+    within = series.var(axis=0, ddof=1).mean(axis=0)
+    between = series.mean(axis=0).var(axis=0, ddof=1)
+    moving = within > 1e-24 * (1 + series.mean(axis=(0, 1)) ** 2)
+    if not moving.any():
+        return 1.0
+    return float(np.sqrt(1 + np.max(between[moving] / within[moving])))
 
 
-def tune_fields(warm_up: FieldWarmUp, recipe: FieldRecipe) -> FieldRecipe:
-    """Steps to the wanted acceptance, lengths to the slowest lattice mean; then settling until the starts agree."""
-    for round_ in range(ROUNDS):
-        means = []
-        for block in range(BLOCKS):
-            out = warm_up.run(recipe)
-            means.append(np.asarray(out.means))
-            missing = float(out.accepted[0]) - ACCEPTANCE
-            gain = GAIN / math.sqrt(1 + round_ * BLOCKS + block)
-            recipe = FieldRecipe(min(recipe.step * math.exp(gain * missing), 2.0), recipe.steps, recipe.masses)
-            if warm_up.interrupted():
-                return recipe
-        recipe = _longer(warm_up.program.target, recipe, np.concatenate(means[BLOCKS // 2 :]))
-    _settle(warm_up, recipe)
-    return recipe
-
-
-def _longer(target: FieldTarget, recipe: FieldRecipe, means: Floats) -> FieldRecipe:
-    """As many steps as turn the slowest lattice mean by about a quarter; `means` (draws, chains, C)."""
-    square = np.maximum(np.mean((means - means.mean(axis=0)) ** 2, axis=(0, 1)), 1e-300)
-    masses = np.asarray(recipe.masses)
-    frequency = 1 / np.sqrt(square * target.sites * masses)
-    wanted = float(QUARTER / np.min(frequency))
-    steps = min(max(wanted, 1.0) / recipe.step, MOST_STEPS)
-    return FieldRecipe(recipe.step, max(0.5 * (recipe.steps + steps), 1.0), recipe.masses)
-
-
-def _settle(warm_up: FieldWarmUp, recipe: FieldRecipe) -> None:
-    agreed = 0
-    for _ in range(MOST_SETTLING):
-        found = np.concatenate([np.asarray(warm_up.run(recipe).action) for _ in range(SETTLING)]).mean(axis=0)
-        groups = [found[k::3] for k in range(3)]
-        errors = [g.std(ddof=1) ** 2 / len(g) if len(g) > 1 else np.inf for g in groups]
-        pairs = [(0, 1), (0, 2), (1, 2)]
-        apart = [abs(groups[a].mean() - groups[b].mean()) > AGREE * math.sqrt(errors[a] + errors[b]) for a, b in pairs]
-        agreed = 0 if any(apart) else agreed + 1
-        if agreed == 2 or warm_up.interrupted():
-            return
+def tune_field(warm_up: FieldWarmUp, first: FieldRecipe) -> FieldRecipe:
+    """The whole warm-up; returns the recipe to freeze."""
+    recipe = warm_up.rescaled(warm_up.settle(first))
+    best = warm_up.try_all([recipe.of_length(length) for length in STEPS_LENGTHS], None)
+    if best is None:  # interrupted
+        return recipe
+    recipe = best.recipe
+    others = [recipe.stepping(factor) for factor in (1.2, 0.85)]
+    others += [recipe.of_length(recipe.length * factor) for factor in (1.3, 0.8)]
+    best = warm_up.try_all(others, best) or best
+    return best.recipe
