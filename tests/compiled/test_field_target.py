@@ -11,13 +11,19 @@ from quarterturn.compiled.field_target import Fields, FieldTarget
 from quarterturn.compiled.precision import double
 from quarterturn.lattice.field import put_on_lattice
 
-PHI4 = "phi(t, x)\nLE = K/2 (d_t phi)^2 + G/2 (d_x phi)^2 + 1/2 m2 phi^2 + lam phi^4 + h phi\nK = 1.3, G = 0.7, m2 = -0.5, lam = 1, h = 0.2\n"
+PHI4 = (
+    "phi(t, x)\nLE = K/2 (d_t phi)^2 + G/2 (d_x phi)^2 + 1/2 m2 phi^2 + lam phi^4 + h phi\n"
+    "K = 1.3, G = 0.7, m2 = -0.5, lam = 1, h = 0.2\n"
+)
 EVEN = PHI4.replace("+ h phi", "").replace(", h = 0.2", "")  # has a sign to change
 LATTICE = "SE = -2 kappa sum_mu phi phi(+mu) + phi^2 + lam (phi^2 - 1)^2\nkappa = 0.2, lam = 0.5\n"
 XY = "theta(t, x) mod 2 pi\nSE = -beta_c sum_mu cos(theta(+mu) - theta)\nbeta_c = 0.9\n"
 ANGLE = "theta(t, x) mod 2 pi\nLE = K/2 (d_t theta)^2 + K/2 (d_x theta)^2 + g cos(theta)\nK = 0.8, g = 0.3\n"
 SPHERE = "n[3](t, x), n.n = 1\nLE = 1/(2 g2) d_mu n . d_mu n\ng2 = 0.7\n"
-PAIR = "u(t, x), v(t, x)\nLE = 1/2 (d_t u)^2 + 1/2 (d_x u)^2 + 1/2 (d_t v)^2 + 1/2 (d_x v)^2 + c/2 (d_t u)(d_t v) + u^2 v^2\nc = 0.4\n"
+PAIR = (
+    "u(t, x), v(t, x)\nLE = 1/2 (d_t u)^2 + 1/2 (d_x u)^2 + 1/2 (d_t v)^2 + 1/2 (d_x v)^2 + c/2 (d_t u)(d_t v) "
+    "+ u^2 v^2\nc = 0.4\n"
+)
 CUBE = "phi(t, x, y)\nLE = 1/2 (d_t phi)^2 + 1/2 (d_x phi)^2 + 1/2 (d_y phi)^2 + lam phi^4 + exp(-phi^2)\nlam = 1\n"
 
 

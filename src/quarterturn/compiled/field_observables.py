@@ -31,7 +31,7 @@ Place = int | str | None  # whole lattice steps, SUMMED or AVERAGED, None where 
 
 @dataclass(frozen=True)
 class FieldObservables:
-    """The primary observables of a run. `places` has, per bracket (fixed, then free) and group, one `Place` a direction."""
+    """The primary observables of a run; `places` has per bracket (fixed, then free) and group a `Place` each way."""
 
     target: FieldTarget
     fixed: tuple[Bracket, ...]
@@ -204,5 +204,7 @@ def _steps(bracket: Bracket, place: Fraction, name: str, spacing: float, sites: 
             f"its neighbours are {below:g} and {above:g}"
         )
     if abs(nearest) >= sites:
-        raise RequestError(f"{bracket.label}: {name} = {float(place):g} is beyond the lattice, {sites * spacing:g} long")
+        raise RequestError(
+            f"{bracket.label}: {name} = {float(place):g} is beyond the lattice, {sites * spacing:g} long"
+        )
     return nearest

@@ -229,10 +229,10 @@ class SiteValues:
             groups.setdefault(scalar, []).append((local, float(coefficient)))
         total: Any = 0.0
         for scalar, terms in groups.items():
-            common = abs(terms[0][1])
+            common: Any = abs(terms[0][1])
             inner: Any = 0.0
-            for local, coefficient in terms:
-                inner = _plus(inner, coefficient / common, self._product(local))
+            for local, size in terms:
+                inner = _plus(inner, size / common, self._product(local))
             for atom, power in scalar:
                 common = common * self(atom) ** power
             total = total + common * inner

@@ -121,7 +121,9 @@ class FieldLattice:
                 if any(angles):
                     total = total + form[i][j] * self._wrapped(i, mu)
                 else:
-                    across = Expression.of(v) * Expression.of(w.moved(mu)) + Expression.of(v.moved(mu)) * Expression.of(w)
+                    across = Expression.of(v) * Expression.of(w.moved(mu)) + Expression.of(v.moved(mu)) * Expression.of(
+                        w
+                    )
                     total = total - form[i][j] * across
         return total * HALF * Expression.of(CELL) * Expression.of(spacing_symbol(mu), -2)
 

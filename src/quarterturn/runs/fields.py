@@ -6,7 +6,7 @@ import math
 import os
 import threading
 import time as clock
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Any
 
@@ -23,7 +23,7 @@ from quarterturn.lattice.field import put_on_lattice
 from quarterturn.runs import doubts
 from quarterturn.runs.evaluation import Evaluator
 from quarterturn.runs.exact import ExactColumn
-from quarterturn.runs.functional import functionals
+from quarterturn.runs.functional import WORK, functionals, measured, node_draws
 from quarterturn.runs.interruption import stoppable
 from quarterturn.runs.layout import Layout, lay_out
 from quarterturn.runs.progress import Watcher
@@ -35,6 +35,7 @@ from quarterturn.runs.unit_words import facts as unit_facts
 from quarterturn.sampling.driver import Chain, Request
 from quarterturn.sampling.fields.driver import run_fields
 from quarterturn.sampling.fields.program import default_field_chains, field_program_for
+from quarterturn.sampling.fields.warm_up import FieldRecipe
 
 Floats = NDArray[np.float64]
 MOST_CHAINS = 4096
@@ -140,6 +141,7 @@ def sample_fields(
             program, settings.couplings, settings.spacings, Request(seed, wanted.draws, wanted.seconds),
             session.basin_edges(), event.is_set, session.satisfied,
         )  # fmt: skip
+        session.functionals = _functionals(session, target, chain, seed, event.is_set)
     return session.finish(chain, seed)
 
 
@@ -149,6 +151,25 @@ def _observables(layout: Layout, target: FieldTarget, spacings: tuple[float, ...
         field_places(b, lattice.euclidean.coordinates, spacings, lattice.extents) for b in (*layout.fixed, *layout.free)
     )
     return FieldObservables(target, layout.fixed, layout.free, places)
+
+
+def _functionals(
+    session: FieldSession, target: FieldTarget, chain: Chain, seed: int, interrupted: Callable[[], bool]
+) -> dict[str, Estimate]:
+    """log Z[J], sampled on a ladder of source strengths after the run itself."""
+    wanted = functionals(session.action)
+    if not wanted or chain.cut_in_warm_up:
+        return {}
+    session.say("climbing the ladder of source strengths", chain)
+    here = ((0,) * target.dimension,)
+    program = field_program_for(target, FieldObservables(target, (WORK,), (), (here,)), chain.program.chains)
+    settings, edges = session.settings, session.basin_edges()
+
+    def drawn(request: Request) -> Chain:
+        return run_fields(program, settings.couplings, settings.spacings, request, edges, interrupted)
+
+    e = measured(drawn, Request(seed, node_draws(chain.draws)))
+    return {m.label: e for m in wanted}
 
 
 def _chain_count(asked: int | None, target: FieldTarget) -> int:
@@ -182,8 +203,6 @@ def _refuse_unavailable(action: Action, layout: Layout, edges: tuple[Edge, ...])
                 f"{apart[0].label}: functions of several points are averaged over translations, which these boundaries "
                 "break; measure at one point, or make the lattice periodic"
             )
-    if functionals(action):
-        raise RequestError("log Z[J] is available for paths; of fields on space measure <phi> in the presence of J")
     energy = Symbol("observable", "energy")
     if any(energy in f.atoms() for b in layout.fixed for _, f in b.groups):
         raise RequestError("energy is available for paths; of fields on space measure a gap or <V(phi)>")
@@ -229,6 +248,8 @@ class FieldSession(Session):
 
     def facts(self, chain: Chain) -> tuple[tuple[str, str], ...]:
         """The method, line by line."""
+        recipe = chain.recipe
+        assert isinstance(recipe, FieldRecipe)
         moves = ", ".join(f"{name} {rate:.0%}" for name, rate in (chain.acceptance or {}).items())
         mean, error = chain.exp_change
         edges = self.action.geometry.edges if self.action.geometry else ()
@@ -238,7 +259,7 @@ class FieldSession(Session):
         return (
             ("lattice", f"{extents} sites, a = {spacings}, {kinds}"),
             ("chains", f"{chain.program.chains} chains of {chain.draws} draws after {chain.warm_up} of warm-up"),
-            ("trajectory", f"minimum norm, {chain.recipe.steps} steps of {chain.recipe.step:.3g} on average"),
+            ("trajectory", f"minimum norm, {recipe.steps} steps of {recipe.step:.3g} on average"),
             ("moves accepted", moves),
             ("<exp(-dH)>", f"{mean:.5f} ± {error:.5f}"),
             ("stopped", f"{REASONS[chain.stop]}, {chain.seconds:.1f} s"),

@@ -8,21 +8,18 @@ QUADPACK). For a source linear in the action the second derivative in s at 0 is 
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
 
 from quarterturn.actions.expression import Expression, Symbol
 from quarterturn.actions.model import Action, Bracket, Measurement
-from quarterturn.compiled.observables import Observables
-from quarterturn.compiled.target import Target
 from quarterturn.errors import EstimateError
 from quarterturn.estimates.estimate import GOOD, UNRESOLVED, Estimate, withheld
 from quarterturn.estimates.gamma import estimate
 from quarterturn.estimates.series import Samples
-from quarterturn.sampling.driver import Request, run_chains
-from quarterturn.sampling.program import Program, program_for
+from quarterturn.sampling.driver import Chain, Request
 
 HALF_NODES = (0.960491268708020283423507092629080, 0.774596669241483377035853079956480,
               0.434243749346802558002071502844628)  # fmt: skip
@@ -75,29 +72,18 @@ def node_draws(draws: int) -> int:
     return max(FEWEST_DRAWS, draws // SHARE)
 
 
-def climb(
-    action: Action,
-    couplings: Mapping[str, float],
-    spacing: float,
-    main: Program,
-    request: Request,
-    edges: Sequence[np.ndarray],
-    interrupted: Callable[[], bool],
-) -> Ladder | None:
-    """Sample every node of the ladder, with one program. None where it was interrupted.
+def climb(drawn: Callable[[Request], Chain], request: Request) -> Ladder | None:
+    """Sample `WORK` at every node of the ladder. None where it was interrupted.
 
     Raises EstimateError where the samples of a node do not support a mean.
     """
-    target: Target = main.target
-    program = program_for(target, Observables(target, (WORK,), (), ((0,),)), main.chains)
     found = []
     for i, s in enumerate(NODES):
-        asked = Request(request.seed + 7919 * (i + 1), request.draws, None, float(s))
-        chain = run_chains(program, couplings, spacing, asked, tuple(edges), interrupted)
+        chain = drawn(Request(request.seed + 7919 * (i + 1), request.draws, None, float(s)))
         if chain.stop == "interrupted" or chain.cut_in_warm_up:
             return None
         numbers = Samples(chain.numbers.values(), chain.numbers.block, chain.numbers.variance(), (WORK.label,))
-        e = estimate(numbers, int(program.observables.is_complex))
+        e = estimate(numbers, int(chain.program.observables.is_complex))
         scale = 1 / float(s)
         found.append(
             Estimate(e.value * scale, None if e.error is None else e.error * scale, tau=e.tau, state=e.state,
@@ -121,17 +107,9 @@ def log_z(ladder: Ladder | None, reason: str = "") -> Estimate:
     return Estimate(ladder.value, ladder.error)
 
 
-def measured(
-    action: Action,
-    couplings: Mapping[str, float],
-    spacing: float,
-    main: Program,
-    request: Request,
-    edges: Sequence[np.ndarray],
-    interrupted: Callable[[], bool],
-) -> Estimate:
-    """log Z[J] of one action, with all its sources scaled together."""
+def measured(drawn: Callable[[Request], Chain], request: Request) -> Estimate:
+    """log Z[J], with all sources scaled together; `drawn` samples `WORK` at the strength of a request."""
     try:
-        return log_z(climb(action, couplings, spacing, main, request, edges, interrupted))
+        return log_z(climb(drawn, request))
     except EstimateError as reason:
         return log_z(None, reason.message)

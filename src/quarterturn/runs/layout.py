@@ -57,7 +57,9 @@ class Layout:
 
     @property
     def curve_names(self) -> tuple[str, ...]:
-        steps = [f"{b.label} at step {n}" for b, count in zip(self.free, self.points, strict=True) for n in range(count)]
+        steps = [
+            f"{b.label} at step {n}" for b, count in zip(self.free, self.points, strict=True) for n in range(count)
+        ]
         return (*self.number_names, *steps)
 
 

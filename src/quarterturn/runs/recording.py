@@ -14,6 +14,8 @@ from quarterturn.notation.symbols import COORDINATES
 from quarterturn.records.schema import SCHEMA, environment, validate
 from quarterturn.runs.settings import Settings
 from quarterturn.sampling.driver import Chain
+from quarterturn.sampling.fields.warm_up import FieldRecipe
+from quarterturn.sampling.tuning import Recipe
 from quarterturn.units.constants import release
 from quarterturn.units.quantity import Quantity
 
@@ -94,14 +96,16 @@ def field_record(
     warnings: tuple[str, ...],
 ) -> dict[str, Any]:
     """The record of a Monte Carlo run of fields."""
+    recipe = chain.recipe
+    assert isinstance(recipe, FieldRecipe)
     method = {
         "sampler": "Hamiltonian Monte Carlo in real space",
         "moves": dict(chain.acceptance or {}),
         "integrator": "minimum norm",
-        "step": chain.recipe.step,
-        "steps": chain.recipe.steps,
-        "scale": list(chain.recipe.scale),
-        "clusters": chain.recipe.clusters,
+        "step": recipe.step,
+        "steps": recipe.steps,
+        "scale": list(recipe.scale),
+        "clusters": recipe.clusters,
         "exp_minus_dH": list(chain.exp_change),
     }
     return _with_results(base_record("sample", action, settings), chain, method, seed, numbers, curves, warnings)
@@ -118,6 +122,7 @@ def sample_record(
 ) -> dict[str, Any]:
     """The record of a Monte Carlo run."""
     recipe = chain.recipe
+    assert isinstance(recipe, Recipe)
     method = {
         "sampler": "Hamiltonian Monte Carlo, reference form evolved exactly",
         "moves": dict(chain.acceptance or {}),

@@ -11,13 +11,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from quarterturn.actions.model import Action
+from quarterturn.compiled.observables import Observables
 from quarterturn.compiled.target import Target
 from quarterturn.errors import RequestError
 from quarterturn.estimates.estimate import Estimate
 from quarterturn.lattice.path import discretise
 from quarterturn.runs.exact import ENERGY, ExactColumn
 from quarterturn.runs.fields import needs_fields, sample_fields
-from quarterturn.runs.functional import functionals, measured, node_draws
+from quarterturn.runs.functional import WORK, functionals, measured, node_draws
 from quarterturn.runs.interruption import stoppable
 from quarterturn.runs.layout import lay_out, observables
 from quarterturn.runs.progress import Watcher
@@ -102,24 +103,30 @@ def sample(
             settings.couplings,
             settings.spacing,
             Request(int(seed), wanted.draws, wanted.seconds),
-            session.edges(program),
+            session.edges(),
             event.is_set,
             session.satisfied,
         )
-        session.functionals = _functionals(session, chain, int(seed), event.is_set)
+        session.functionals = _functionals(session, target, chain, int(seed), event.is_set)
     return session.finish(chain, int(seed))
 
 
-def _functionals(session: Session, chain: Chain, seed: int, interrupted: Callable[[], bool]) -> dict[str, Estimate]:
+def _functionals(
+    session: Session, target: Target, chain: Chain, seed: int, interrupted: Callable[[], bool]
+) -> dict[str, Estimate]:
     """log Z[J], sampled on a ladder of source strengths after the run itself."""
     wanted = functionals(session.action)
     if not wanted or chain.cut_in_warm_up:
         return {}
     session.say("climbing the ladder of source strengths", chain)
     settings = session.settings
-    asked = Request(seed, node_draws(chain.draws))
-    edges = session.edges(chain.program)
-    e = measured(session.action, settings.couplings, settings.spacing, chain.program, asked, edges, interrupted)
+    program = program_for(target, Observables(target, (WORK,), (), ((0,),)), chain.program.chains)
+    edges = session.edges()
+
+    def drawn(request: Request) -> Chain:
+        return run_chains(program, settings.couplings, settings.spacing, request, edges, interrupted)
+
+    e = measured(drawn, Request(seed, node_draws(chain.draws)))
     return {m.label: e.with_exact(session.exact.functional()) for m in wanted}
 
 

@@ -30,7 +30,7 @@ from quarterturn.runs.settings import Goal, Settings
 from quarterturn.runs.unit_words import facts as unit_facts
 from quarterturn.runs.unit_words import step
 from quarterturn.sampling.driver import Chain
-from quarterturn.sampling.program import Program
+from quarterturn.sampling.tuning import Recipe
 
 Floats = NDArray[np.float64]
 FEWEST_DRAWS = 64  # per chain, before a precision can count as met
@@ -75,7 +75,7 @@ class Session:
             if label and measurement_label(label) not in labels:
                 raise RequestError(f"no number is measured under {label!r}; there is {', '.join(labels)}")
 
-    def edges(self, program: Program) -> tuple[Floats, ...]:
+    def edges(self) -> tuple[Floats, ...]:
         """Values of the whitened variables that part sectors."""
         euclidean = self.action.euclidean
         self.basins = doubts.find_basins(euclidean, self.settings.couplings, self.exact.transfer)
@@ -285,6 +285,7 @@ class Session:
     def facts(self, chain: Chain) -> tuple[tuple[str, str], ...]:
         """The method, line by line."""
         recipe = chain.recipe
+        assert isinstance(recipe, Recipe)
         moves = ", ".join(f"{name} {rate:.0%}" for name, rate in (chain.acceptance or {}).items())
         omega = ", ".join(f"{np.sqrt(w2):.4g}" for w2 in recipe.frequency_squared)
         mean, error = chain.exp_change

@@ -165,8 +165,8 @@ def _enter(chain: Chain, out: BlockOutput) -> None:
 
 
 def _summarise(chain: Chain, accepted: list[Floats], changes: list[Floats]) -> None:
-    rates = np.mean(accepted, axis=0)
-    chain.acceptance = {move.name: float(r) for move, r in zip(chain.program.moves, rates, strict=True)}
+    rates, names = np.mean(accepted, axis=0), [move.name for move in chain.program.moves]
+    chain.acceptance = {name: float(r) for name, r in zip(names, rates, strict=True)}
     values = np.mean(changes, axis=0)  # a mean for each chain: its draws may be correlated through a slow mode
     spread = float(np.std(values, ddof=1) / np.sqrt(len(values)))
     chain.exp_change = (float(np.mean(values)), spread)

@@ -15,8 +15,8 @@ import jax.numpy as jnp
 import numpy as np
 from jax import Array
 
-from quarterturn.compiled.field_target import FieldParameters, FieldState, FieldTarget
 from quarterturn.compiled.field_observables import FieldObservables, longest
+from quarterturn.compiled.field_target import FieldParameters, FieldState, FieldTarget
 from quarterturn.compiled.precision import double
 from quarterturn.sampling.fields.sign_flip import FieldSignFlip
 from quarterturn.sampling.fields.trajectory import FieldTrajectory, FieldTuning

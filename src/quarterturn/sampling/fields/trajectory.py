@@ -1,6 +1,6 @@
 """Hamiltonian Monte Carlo of fields in real space: minimum-norm steps, geodesic ones on spheres.
 
-H = 1/2 sum p^2 + S, each variable measured in its natural scale s, so that it drifts by s p and is kicked by s dS/dphi and
+H = 1/2 sum p^2 + S, each variable measured in its natural scale s: it drifts by s p and is kicked by s dS/dphi, so that
 one step size serves variables of unlike stiffness. Steps alternate drifts and kicks in the minimum-norm pattern
 (Omelyan, Mryglod and Folk, Comput. Phys. Commun. 151 (2003) 272, eq. (31)), which begins and ends with a drift. A unit
 vector drifts along its great circle and is kicked within its tangent plane (Byrne and Girolami, Scand. J. Stat. 40

@@ -1,6 +1,6 @@
 """Warm-up of fields: equilibrate from unlike starts, find scale, step and length of a trajectory by trial, then freeze.
 
-The natural scale of a variable is 1/sqrt(<(dS/dphi)^2>), since <(dS/dphi)^2> = <d^2 S/dphi^2> in equilibrium (by parts).
+The natural scale of a variable is 1/sqrt(<(dS/dphi)^2>), since by parts <(dS/dphi)^2> = <d^2 S/dphi^2> in equilibrium.
 As for paths every decision follows from sampled data alone, never from a clock. A candidate is scored by how far its
 slowest probe moves in a draw: near a critical point no trial is long enough to see an autocorrelation die out, but the
 mean square of a jump is seen at once (Pasarica and Gelman, Statist. Sinica 20 (2010) 343).
