@@ -6,7 +6,6 @@ The couplings are numbers here: the answer belongs to one choice of them and is 
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
 from functools import lru_cache
 from typing import TYPE_CHECKING
 
@@ -19,8 +18,11 @@ from quarterturn.actions.asymptotics import (
     directions,
     lowest_on_sphere,
 )
-from quarterturn.actions.expression import Atom, Expression, PathAtom, Symbol
+from quarterturn.actions.confinement import Confinement, Degrees, by_degree, form_at, is_polynomial, named, value_at
+from quarterturn.actions.expression import Expression, PathAtom, Symbol
+from quarterturn.actions.leading_form import decided_exactly
 from quarterturn.actions.printing import notation
+from quarterturn.actions.stability import radial
 
 if TYPE_CHECKING:
     import numpy as np
@@ -29,15 +31,6 @@ if TYPE_CHECKING:
 SPHERES = 5
 ZERO_FORM = 1e-9  # of the sum of its coefficients: a leading form below it counts as zero
 ZERO_BELOW = 1e-5  # the same for lower degrees, which feel the error of the direction, up to the root of ZERO_FORM
-Degrees = dict[int, list[tuple[dict[PathAtom, int], Expression, float]]]
-
-
-@dataclass(frozen=True)
-class Confinement:
-    """verdict: confined | unbounded | singular | flat | undecided | meaningless; `words` say where and how decided."""
-
-    verdict: str
-    words: str = ""
 
 
 def confinement(
@@ -65,47 +58,6 @@ def _confinement(
     return _far_out(Landscape(potential, lines, circles, couplings))
 
 
-def is_polynomial(potential: Expression) -> bool:
-    """A polynomial in the paths."""
-    return all(
-        (isinstance(atom, PathAtom) and power > 0) or not Expression.of(atom).paths
-        for monomial, _ in potential.terms
-        for atom, power in monomial
-    )
-
-
-def value_at(expression: Expression, couplings: Mapping[str, float]) -> float:
-    """The number that an expression without paths is at these couplings; nan or inf where it is none."""
-    import numpy as np
-
-    lookup: dict[Atom, object] = {Symbol("coupling", n): np.float64(v) for n, v in couplings.items()}
-    with np.errstate(all="ignore"):
-        try:
-            value = complex(expression.evaluate(lookup, np))
-        except OverflowError:  # a coefficient beyond the range of floating-point numbers
-            return float("inf")
-    return value.real if value.imag == 0 else float("nan")
-
-
-def by_degree(potential: Expression, couplings: Mapping[str, float]) -> Degrees:
-    """Terms with equal powers of the paths collected, with their numerical coefficients, by total degree."""
-    collected: dict[tuple[tuple[PathAtom, int], ...], Expression] = {}
-    for monomial, coefficient in potential.terms:
-        powers = tuple((a, p) for a, p in monomial if isinstance(a, PathAtom))
-        rest = Expression(((tuple((a, p) for a, p in monomial if not isinstance(a, PathAtom)), coefficient),))
-        collected[powers] = collected[powers] + rest if powers in collected else rest
-    result: Degrees = {}
-    for powers, expression in collected.items():
-        value = value_at(expression, couplings)
-        if value != 0:
-            result.setdefault(sum(p for _, p in powers), []).append((dict(powers), expression, value))
-    return result
-
-
-def _named(lines: tuple[PathAtom, ...], u: NDArray[np.float64]) -> str:
-    return ", ".join(f"{notation(Expression.of(v))}: {x + 0.0:.2g}" for v, x in zip(lines, u, strict=True))
-
-
 # --- polynomials ------------------------------------------------------------------------------------------------
 def _polynomial(potential: Expression, lines: tuple[PathAtom, ...], couplings: Mapping[str, float]) -> Confinement:
     import math
@@ -119,14 +71,38 @@ def _polynomial(potential: Expression, lines: tuple[PathAtom, ...], couplings: M
     degrees.pop(0, None)
     if not lines:
         return Confinement("confined")
+    if len(lines) > 1:
+        potential, lines, radii = _by_radius(potential, lines)
+        degrees = by_degree(potential, couplings)
+        degrees.pop(0, None)
+    else:
+        radii = {}
     if len(lines) == 1:
-        return _one_variable(degrees, lines[0], couplings)
+        return _one_variable(degrees, lines[0], couplings, radii.get(lines[0]))
     free = [v for v in lines if not any(v in powers for terms in degrees.values() for powers, _, _ in terms)]
     if free:
         return Confinement(
             "flat", f"nothing confines {notation(Expression.of(free[0]))}: the potential does not depend on it"
         )
-    return _many_variables(degrees, lines)
+    return decided_exactly(degrees, lines, couplings) or _many_variables(degrees, lines)
+
+
+def _by_radius(
+    potential: Expression, lines: tuple[PathAtom, ...]
+) -> tuple[Expression, tuple[PathAtom, ...], dict[PathAtom, str]]:
+    """Vectors and complex fields that enter through their length only, replaced by their first component."""
+    kept: list[PathAtom] = []
+    radii: dict[PathAtom, str] = {}
+    for name in dict.fromkeys(v.name for v in lines):
+        group = [v for v in lines if v.name == name]
+        reduced = radial(potential, group) if len(group) > 1 else None
+        if reduced is None:
+            kept += group
+            continue
+        potential = reduced
+        kept.append(group[0])
+        radii[group[0]] = f"|{name}|"
+    return potential, tuple(kept), radii
 
 
 def _term(powers: dict[PathAtom, int], coefficient: Expression) -> Expression:
@@ -135,18 +111,22 @@ def _term(powers: dict[PathAtom, int], coefficient: Expression) -> Expression:
     return coefficient
 
 
-def _one_variable(degrees: Degrees, line: PathAtom, couplings: Mapping[str, float]) -> Confinement:
-    name = notation(Expression.of(line))
+def _one_variable(
+    degrees: Degrees, line: PathAtom, couplings: Mapping[str, float], radius: str | None = None
+) -> Confinement:
+    name = radius or notation(Expression.of(line))
     if not degrees:
         return Confinement("flat", f"nothing confines {name}: the potential is flat, and the path drifts without end")
     top = max(degrees)
     _, expression, value = degrees[top][0]
-    term = notation(expression * Expression.of(line, top))
+    term = f"{notation(expression)} {name}^{top}" if radius else notation(expression * Expression.of(line, top))
     mentioned = sorted(s.name for s in expression.symbols if s.kind == "coupling")
     if top % 2:
         side = "-infinity" if value > 0 else "+infinity"
         return Confinement(
-            "unbounded", f"the potential falls without limit along {name} -> {side} (leading term {term}, of odd power)"
+            "unbounded",
+            f"the potential falls without limit along {name} -> {side} (leading term {term}, of odd power)",
+            top,
         )
     if value < 0:
         where = ", ".join(f"{n} = {couplings[n]:g}" for n in mentioned)
@@ -157,7 +137,7 @@ def _one_variable(degrees: Degrees, line: PathAtom, couplings: Mapping[str, floa
             if power % 2:
                 good = "> 0" if expression.terms[0][1] > 0 else "< 0"
                 words += f"; stable for {mentioned[0]} {good}"
-        return Confinement("unbounded", words)
+        return Confinement("unbounded", words, top)
     return Confinement("confined")
 
 
@@ -171,7 +151,7 @@ def _many_variables(degrees: Degrees, lines: tuple[PathAtom, ...]) -> Confinemen
     if top == 2:
         u, lowest = _lowest_of_quadratic(degrees[2], lines)
     else:
-        u, lowest = lowest_on_sphere(lambda x: _form(degrees[top], lines, x), directions(len(lines)), 1.0)
+        u, lowest = lowest_on_sphere(lambda x: form_at(degrees[top], lines, x), directions(len(lines)), 1.0)
     if lowest.min() < -ZERO_FORM * scale[top]:
         return _falling(lines, u[lowest.argmin()], top)
     zeros = u[lowest <= ZERO_FORM * scale[top]]
@@ -181,7 +161,7 @@ def _many_variables(degrees: Degrees, lines: tuple[PathAtom, ...]) -> Confinemen
     zeros = zeros[sharp] if sharp.any() else zeros
     zeros = np.concatenate([zeros, -zeros])
     for d in ladder[1:]:
-        values = _form(degrees[d], lines, zeros)
+        values = form_at(degrees[d], lines, zeros)
         if (values < -ZERO_BELOW * scale[d]).any():
             return _falling(lines, zeros[values.argmin()], d)
         zeros = zeros[values <= ZERO_BELOW * scale[d]]
@@ -190,7 +170,7 @@ def _many_variables(degrees: Degrees, lines: tuple[PathAtom, ...]) -> Confinemen
     if len(zeros):
         return Confinement(
             "flat",
-            f"the potential is flat along the direction ({_named(lines, zeros[0])}): nothing confines the path there",
+            f"the potential is flat along the direction ({named(lines, zeros[0])}): nothing confines the path there",
         )
     return Confinement("confined") if top == 2 else _valley(degrees, lines, scale)
 
@@ -198,8 +178,9 @@ def _many_variables(degrees: Degrees, lines: tuple[PathAtom, ...]) -> Confinemen
 def _falling(lines: tuple[PathAtom, ...], u: NDArray[np.float64], degree: int) -> Confinement:
     return Confinement(
         "unbounded",
-        f"the potential falls without limit along the direction ({_named(lines, u)}); decided on its terms of degree "
-        f"{degree}, over many directions",
+        f"the potential falls without limit along the direction ({named(lines, u)}); decided numerically on its terms "
+        f"of degree {degree}, over many directions",
+        degree,
     )
 
 
@@ -214,18 +195,6 @@ def _lowest_of_quadratic(terms: list, lines: tuple[PathAtom, ...]) -> tuple[NDAr
         matrix[places[1], places[0]] += value / 2
     values, vectors = np.linalg.eigh(matrix)
     return vectors.T, values
-
-
-def _form(terms: list, lines: tuple[PathAtom, ...], u: NDArray[np.float64]) -> NDArray[np.float64]:
-    import numpy as np
-
-    total = np.zeros(len(u))
-    for powers, _, value in terms:
-        term = np.full(len(u), value)
-        for v, p in powers.items():
-            term = term * u[:, lines.index(v)] ** p
-        total += term
-    return total
 
 
 def _valley(degrees: Degrees, lines: tuple[PathAtom, ...], scale: Mapping[int, float]) -> Confinement:
@@ -243,16 +212,16 @@ def _valley(degrees: Degrees, lines: tuple[PathAtom, ...], scale: Mapping[int, f
     sizes = {d: [(powers, expression, abs(value)) for powers, expression, value in degrees[d]] for d in degrees}
 
     def height(x: NDArray[np.float64]) -> NDArray[np.float64]:
-        return np.asarray(sum(_form(terms, lines, x) for terms in degrees.values()))
+        return np.asarray(sum(form_at(terms, lines, x) for terms in degrees.values()))
 
     def rounding(x: NDArray[np.float64]) -> NDArray[np.float64]:
-        return np.asarray(ROUNDING * sum(_form(terms, lines, np.abs(x)) for terms in sizes.values()))
+        return np.asarray(ROUNDING * sum(form_at(terms, lines, np.abs(x)) for terms in sizes.values()))
 
     return _judged(*along_valleys(height, rounding, len(lines), radii), lines, f"{radii[-1]:.2g}")
 
 
 def _judged(course: str, u: NDArray[np.float64], lines: tuple[PathAtom, ...], distance: str) -> Confinement:
-    how = f"decided numerically, along a curved valley that passes the direction ({_named(lines, u)}) at a distance of"
+    how = f"decided numerically, along a curved valley that passes the direction ({named(lines, u)}) at a distance of"
     match course:
         case "falls":
             return Confinement("unbounded", f"the potential falls without limit; {how} {distance}")
@@ -275,7 +244,7 @@ def _far_out(land: Landscape) -> Confinement:
     words = "decided numerically, up to a distance of 1e6"
     for u, course in outwards:
         if course == "falls":
-            along = _named(land.lines, u)
+            along = named(land.lines, u)
             return Confinement("unbounded", f"the potential falls without limit along ({along}); {words}")
     if all(course == "unknown" for _, course in outwards):
         return Confinement("meaningless", "it is no real number in any direction")
@@ -283,15 +252,15 @@ def _far_out(land: Landscape) -> Confinement:
         if course == "falls":
             return Confinement(
                 "singular",
-                f"the potential falls without limit towards the origin along ({_named(land.lines, u)}); decided "
+                f"the potential falls without limit towards the origin along ({named(land.lines, u)}); decided "
                 "numerically, down to a distance of 1e-6",
             )
     for u, course in outwards:
         if course == "levels":
-            return Confinement("flat", f"the potential levels off along ({_named(land.lines, u)}); {words}")
+            return Confinement("flat", f"the potential levels off along ({named(land.lines, u)}); {words}")
     for u, course in outwards:
         if course == "unknown":
-            return Confinement("undecided", f"the potential is not a number along ({_named(land.lines, u)})")
+            return Confinement("undecided", f"the potential is not a number along ({named(land.lines, u)})")
     if 1 < len(land.lines) <= MOST_SEARCHED:
         radii = 2.0 ** np.linspace(4, 12, SPHERES)
         found = along_valleys(land.lowest, land.rounding, len(land.lines), radii)

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import TYPE_CHECKING
 
-from quarterturn.actions.boundedness import value_at
+from quarterturn.actions.confinement import value_at
 from quarterturn.actions.expression import PI, Atom, Expression, PathAtom, Symbol
 
 if TYPE_CHECKING:

@@ -9,11 +9,11 @@ from __future__ import annotations
 
 import itertools
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from quarterturn.actions.canonical import canonical_text, digest, on_spheres, typeset
-from quarterturn.actions.circles import phase_of
 from quarterturn.actions.couplings import Assigned, assigned
+from quarterturn.actions.default_measurements import default_items
 from quarterturn.actions.degrees import degrees
 from quarterturn.actions.dimensions import Dimensions, dimensions
 from quarterturn.actions.effort import limited
@@ -42,7 +42,8 @@ from quarterturn.actions.model import (
     Source,
     UnitSystem,
 )
-from quarterturn.actions.printing import notation
+from quarterturn.actions.places import Places
+from quarterturn.actions.remarks import contradicting_terms, without_length
 from quarterturn.actions.scope import Scope
 from quarterturn.actions.turn import (
     Turned,
@@ -53,22 +54,19 @@ from quarterturn.actions.turn import (
     turn_lagrangian,
 )
 from quarterturn.errors import ActionError, NotationError, QuarterturnError, Span
-from quarterturn.notation.parse import read_formula
 from quarterturn.notation.statements import parse
 from quarterturn.notation.symbols import GEOMETRY
-from quarterturn.notation.tokens import Source as Written
 from quarterturn.notation.tree import (
     Assignment,
     Constraint,
     Dynamics,
     LatticeStatement,
     Measure,
-    MeasureItem,
     Metric,
     PathStatement,
     Statement,
+    Sum,
 )
-from quarterturn.notation.vocabulary import Names
 from quarterturn.units.system import System
 
 MOST_SYMMETRIC = 6  # variables up to which all sign vectors are tried
@@ -179,9 +177,15 @@ class _Declaration:
         measurements, used = self.measurements(scope, paths, geometry, dynamics, _defaults(given.couplings))
         known = _dimensions(bare, paths, system)
         couplings, bare = counted(given.couplings, known), through_the_seam(bare, system)
-        found = (*check(bare, _defaults(couplings)), *phase_finding(bare))
+        places = self.places(dynamics, scope, paths)
+        found = (
+            *check(bare, _defaults(couplings), places),
+            *phase_finding(bare, places),
+            *contradicting_terms(whole_action(bare), bare, paths, system, places),
+        )
         findings = tuple(Finding(f.severity, f.topic, f.message, f.span or dynamics.span) for f in found)
-        notes = self.notes(scope, bare.findings, given, sources, used)
+        dropped = (*bare.findings, *without_length(written, paths))
+        notes = self.notes(scope, dropped, given, sources, used)
         euclidean = _completed(bare, paths, sources, (*findings, *notes))
         form = dynamics.form if dynamics.form in ("LE", "SE") else "L"
         canonical = canonical_text(paths, coordinates, form, lagrangian, sources, system.names)
@@ -189,8 +193,16 @@ class _Declaration:
             self.name, self.text, counted_paths(paths, known), metric, form, lagrangian, couplings, geometry,
             counted_measurements(measurements, known), euclidean, digest(canonical), canonical,
             typeset(form, lagrangian, len(coordinates)), UnitSystem(system.names) if system.names else None,
-            scope.files,
+            scope.files, places=places,
         )  # fmt: skip
+
+    def places(self, dynamics: Dynamics, scope: Scope, paths: Mapping[str, Path]) -> Places:
+        """Each term of the action as it was written, with the sign that it has in L_E, and where it stands."""
+        body = dynamics.body
+        terms = body.terms if isinstance(body, Sum) else (body,)
+        quiet = replace(scope, notes=[], used=set())
+        sign = -1 if dynamics.form == "L" else 1
+        return tuple((on_spheres(quiet.number(t), paths).scaled(sign), t.span) for t in terms)
 
     def real(self, written: Expression, dynamics: Dynamics) -> Expression:
         """An action is real in real time; i is there to write complex fields."""
@@ -244,7 +256,7 @@ class _Declaration:
             coordinates=scope.coordinates, signs=scope.signs, tensors=scope.tensors, sources=scope.sources,
             on_lattice=True, files=scope.files, geometry_of_lattice=geometry, defaults=defaults,
         )  # fmt: skip
-        items = [item for s in self.of(Measure) for item in s.items] or _default_items(paths, dynamics)
+        items = [item for s in self.of(Measure) for item in s.items] or default_items(paths, dynamics)
         found: dict[str, Measurement] = {}
         for item in items:
             m = measurement_of(item, measuring)
@@ -287,26 +299,6 @@ def _momenta(paths: Mapping[str, Path]) -> dict[str, tuple[PathAtom, ...]]:
 
 def _defaults(couplings: Mapping[str, Coupling]) -> dict[str, float]:
     return {n: c.default for n, c in couplings.items()}
-
-
-def _default_items(paths: Mapping[str, Path], dynamics: Dynamics) -> list[MeasureItem]:
-    """Without a measure statement: the mean and the mean square of each path, or the cosine of an angle."""
-    items = []
-    for path in paths.values():
-        if path.period is not None:
-            texts = [f"<cos({notation(phase_of(path.atoms[0], path.period))})>"]
-        elif path.kind == "unit":
-            texts = [f"<{path.name}[{n}]^2>" for n in range(1, path.components + 1)]
-        elif path.kind == "complex":
-            texts = [f"<|{path.name}|^2>"]
-        elif path.components:
-            texts = [f"<{path.name}.{path.name}>"]
-        else:
-            texts = [f"<{path.name}>", f"<{path.name}^2>"]
-        for text in texts:
-            body = read_formula(Written(text), 0, len(text), Names({path.name: () for path in paths.values()}))
-            items.append(MeasureItem("", text, body, dynamics.span))
-    return items
 
 
 def _euclidean(

@@ -17,6 +17,7 @@ from quarterturn.actions.model import Bracket, Measurement
 from quarterturn.actions.points import SUMMED
 from quarterturn.units.system import Dimension, System, natural
 
+Term = tuple[Monomial, Fraction]
 SAME_KIND = ("abs", "mean")  # functions that leave the dimension of their argument
 
 
@@ -250,6 +251,33 @@ def dimensions(
     else:
         found = solve(rows)
     return Dimensions(system, coordinates, found or {}, pure)
+
+
+def contradiction(
+    lagrangian: Expression, coordinates: int = 1, pure: frozenset[str] = frozenset()
+) -> tuple[Term, Term] | None:
+    """Two terms that can't have one dimension, whatever the dimensions of fields and couplings; None if there are none.
+
+    Natural units. The kinetic terms come first, so that the second of the pair is the odd one.
+    """
+    system = natural()
+    each = times(system.energy, coordinates)
+    terms = sorted(lagrangian.terms, key=lambda t: -sum(a.order for a, _ in t[0] if isinstance(a, PathAtom)))
+
+    def agrees(chosen: list[Term]) -> bool:
+        equations = Equations(system, pure)
+        equations.say(Expression(tuple(chosen)), each)
+        return solve(equations.rows) is not None
+
+    if agrees(terms):
+        return None
+    for count in range(1, len(terms) + 1):
+        if agrees(terms[:count]):
+            continue
+        odd = terms[count - 1]
+        partner = next((t for t in reversed(terms[: count - 1]) if agrees([s for s in terms[:count] if s != t])), None)
+        return (partner or terms[0], odd)
+    return None
 
 
 def _lengths(equations: Equations, rows: list[Form]) -> list[Form]:

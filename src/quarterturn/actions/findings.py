@@ -2,36 +2,74 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 
-from quarterturn.actions.boundedness import Confinement, confinement, value_at
+from quarterturn.actions.boundedness import confinement
 from quarterturn.actions.circles import changed_by_a_turn
+from quarterturn.actions.confinement import Confinement, by_degree, is_polynomial
 from quarterturn.actions.expression import ONE, ZERO, Atom, Expression, PathAtom, Symbol
+from quarterturn.actions.kinetic import kinetic_findings
 from quarterturn.actions.model import EuclideanAction, Finding
+from quarterturn.actions.places import Places, is_no_polynomial, place
 from quarterturn.actions.printing import notation
-from quarterturn.actions.turn import velocity
+from quarterturn.errors import Span
 
 
-def check(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> tuple[Finding, ...]:
+def check(euclidean: EuclideanAction, couplings: Mapping[str, float], places: Places = ()) -> tuple[Finding, ...]:
     """Findings that depend on the values of the couplings: kinetic form, boundedness, confinement.
 
     severity "fatal": the path integral diverges; "unconfined": it diverges on a periodic lattice, though levels below
-    the continuum may exist; "note": worth knowing.
+    the continuum may exist; "note": worth knowing. `places` are the terms as they were written, turned, with their
+    spans in the cell: each finding gets that of the term which causes it.
     """
-    found = [*_kinetic(euclidean, couplings), *_single_valued(euclidean, couplings)]
+    found = [*kinetic_findings(euclidean, couplings, places), *_single_valued(euclidean, couplings)]
     verdict = _confined(euclidean, couplings)
+    span = _cause(verdict, euclidean, couplings, places)
     if verdict.verdict == "unbounded":
-        found.append(Finding("fatal", "bounded", f"not bounded below: {verdict.words}"))
+        found.append(Finding("fatal", "bounded", f"not bounded below: {verdict.words}", span))
     elif verdict.verdict == "meaningless":
-        found.append(Finding("fatal", "bounded", f"the potential has no value: {verdict.words}"))
+        found.append(Finding("fatal", "bounded", f"the potential has no value: {verdict.words}", span))
     elif verdict.verdict == "singular":
         words = f"not bounded below: {verdict.words}; exp(-a V) can't be integrated there, at no spacing a"
-        found.append(Finding("unconfined", "bounded", words))
+        found.append(Finding("unconfined", "bounded", words, span))
     elif verdict.verdict == "flat":
         found.append(Finding("unconfined", "bounded", f"not confining: {verdict.words}"))
     elif verdict.verdict == "undecided":
         found.append(Finding("note", "bounded", f"boundedness is undecided: {verdict.words}"))
     return tuple(found)
+
+
+def _cause(
+    verdict: Confinement, euclidean: EuclideanAction, couplings: Mapping[str, float], places: Places
+) -> Span | None:
+    """The term that drags the potential down: of the degree that decided, with a negative sign; else a function."""
+    if verdict.verdict == "confined":
+        return None
+    if verdict.degree is None:
+        return place(places, is_no_polynomial)
+
+    def falls(term: Expression) -> bool:
+        part = without_derivatives(term)
+        leading = by_degree(part, couplings).get(verdict.degree or 0, []) if is_polynomial(part) else []
+        return any(value < 0 or verdict.degree % 2 for _, _, value in leading)  # type: ignore[operator]
+
+    return place(places, falls)
+
+
+def _linear_in_time(variables: list[PathAtom]) -> Callable[[Expression], bool]:
+    """Whether a term is linear in the velocity of one of these variables."""
+    wanted = {v.derivative() for v in variables}
+    return lambda term: any(
+        sum(p for a, p in m if isinstance(a, PathAtom) and a.order) == 1 and any(a in wanted for a, _ in m)
+        for m, _ in term.terms
+    )
+
+
+def without_derivatives(term: Expression) -> Expression:
+    """The part of a term that stands in the potential."""
+    return Expression(
+        tuple((m, c) for m, c in term.terms if not any(p.order or p.neighbour for p in Expression(((m, c),)).paths))
+    )
 
 
 def _confined(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> Confinement:
@@ -71,43 +109,6 @@ def without_sources(expression: Expression) -> Expression:
     return expression.substitute(lambda a: ZERO if isinstance(a, Symbol) and a.kind == "source" else None)
 
 
-def _kinetic(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> list[Finding]:
-    import numpy as np
-
-    if euclidean.links:
-        return []
-    mass = np.array([[value_at(k, couplings) for k in row] for row in euclidean.mass])
-    found = []
-    if not np.isfinite(mass).all():
-        return [Finding("fatal", "kinetic", "the mass in the kinetic term is not a finite number at these couplings")]
-    for i, variable in enumerate(euclidean.variables):
-        name = notation(Expression.of(variable))
-        if mass[i, i] == 0:
-            found.append(
-                Finding("fatal", "kinetic", f"{name} has no kinetic term: L needs a term such as 1/2 {name}'^2")
-            )
-        elif mass[i, i] < 0:
-            term = notation(Expression.number(1) * euclidean.mass[i][i] * Expression.of(velocity(variable), 2))
-            found.append(
-                Finding(
-                    "fatal",
-                    "kinetic",
-                    f"kinetic form not positive: after the turn {name} has the kinetic term 1/2 ({term}), which is "
-                    f"negative, so that exp(-S_E) grows with every wiggle of the path; L is kinetic minus potential "
-                    f"energy, + 1/2 {name}'^2, and a change of the overall sign would mend it",
-                )
-            )
-    if not found and np.linalg.eigvalsh(mass).min() <= 0:
-        found.append(
-            Finding(
-                "fatal",
-                "kinetic",
-                "kinetic form not positive: a combination of the velocities has no, or a negative, mass",
-            )
-        )
-    return found
-
-
 def _single_valued(euclidean: EuclideanAction, couplings: Mapping[str, float]) -> list[Finding]:
     periods = dict(zip(euclidean.variables, euclidean.periods, strict=True))
     potential = without_sources(euclidean.potential)
@@ -124,8 +125,9 @@ def _single_valued(euclidean: EuclideanAction, couplings: Mapping[str, float]) -
     return []
 
 
-def phase_finding(euclidean: EuclideanAction) -> tuple[Finding, ...]:
+def phase_finding(euclidean: EuclideanAction, places: Places = ()) -> tuple[Finding, ...]:
     """The imaginary part of the action, where there is one."""
+    moving = [v for v, a in zip(euclidean.variables, euclidean.drift, strict=True) if a.terms]
     phase = euclidean.phase
     if phase is None:
         return ()
@@ -135,5 +137,6 @@ def phase_finding(euclidean: EuclideanAction) -> tuple[Finding, ...]:
             "phase",
             f"the weight is complex: L_E has the imaginary term i ({notation(phase)}); averages are taken by "
             "reweighting with the phase, whose average is measured first",
+            place(places, _linear_in_time(moving)),
         ),
     )

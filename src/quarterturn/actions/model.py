@@ -176,6 +176,7 @@ class Action:
     latex: str = ""  # the action as written in real time, typeset, without dollar signs
     units: UnitSystem | None = None  # None: natural, hbar = c = 1
     files: Mapping[str, str] = field(default_factory=dict)  # SHA-256 of each file that a table was read from
+    places: tuple[tuple[Expression, Span], ...] = field(default=(), compare=False, repr=False)  # see actions.places
 
     @property
     def findings(self) -> tuple[Finding, ...]:

@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from quarterturn.actions.boundedness import value_at
+from quarterturn.actions.confinement import value_at
 from quarterturn.actions.expression import PathAtom
 from quarterturn.actions.model import Action
 from quarterturn.errors import SaddleError

@@ -141,10 +141,11 @@ NO_SPECTRUM = ("fatal",)  # in the continuum, where bound states may lie below a
 
 def examined(action: Action, couplings: Mapping[str, float], stops: tuple[str, ...] = DIVERGES) -> tuple[Finding, ...]:
     """The findings at these couplings. Raises ActionError at a finding whose severity is among `stops`."""
-    findings = check(action.euclidean, couplings)
+    findings = check(action.euclidean, couplings, action.places)
     fatal = [f for f in findings if f.severity in stops]
     if fatal:
-        place = next((f.span for f in action.findings if f.topic == fatal[0].topic and f.span), None)
+        known = (f.span for f in action.findings if f.topic == fatal[0].topic and f.span)
+        place = fatal[0].span or next(known, None)
         raise ActionError(fatal[0].message, span=place, text=action.text if place else None)
     return findings
 
